@@ -3,6 +3,8 @@
 //! Axes are world axes and units SI unless a name says otherwise. Where six numbers stand
 //! together, the linear part comes first.
 
+pub mod polygon;
+
 use nalgebra::{Matrix3, Matrix6, SVector, Vector3};
 
 /// A vector in three dimensions.
