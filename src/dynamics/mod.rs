@@ -1,1 +1,3 @@
-//! Placeholder; see DEVELOPERS.md.
+//! Rigid-body dynamics.
+
+pub mod axes;

@@ -1,1 +1,3 @@
-//! Placeholder; see DEVELOPERS.md.
+//! One function: from a question to its answer.
+
+pub mod answer;
