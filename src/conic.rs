@@ -197,3 +197,23 @@ pub struct Hierarchy {
     /// Columns whose non-uniqueness does not count (vertex forces): excluded from `free` reports.
     pub auxiliary: Vec<usize>,
 }
+
+/// What proves that one final point x is optimal for one priority, given everything above it.
+///
+/// With `r = A x - b` the level's residuals, W its weights, t its soft slacks, stationarity reads
+/// `2 A'W r + system' z + soft' z_soft = 0`, with z and z_soft in the dual cones, complementary to
+/// the slacks, and `2 w t - e'z_soft - z_t = 0`, `z_t >= 0`, `z_t t = 0` for every soft slack.
+#[derive(Debug, Clone, PartialEq, Default)]
+pub struct LevelProof {
+    /// Priority.
+    pub priority: u32,
+    /// Everything the level had to obey, over x alone: hard rows, rows and faces frozen by earlier
+    /// levels, soft limits of earlier levels relaxed by the excess they were granted.
+    pub system: ConicRows,
+    /// One multiplier z per row of `system`.
+    pub multipliers: Vec<f64>,
+    /// The excess t of each of the level's own soft limits.
+    pub soft_slack: Vec<f64>,
+    /// One multiplier per row of the level's own soft limits.
+    pub soft_multipliers: Vec<f64>,
+}
