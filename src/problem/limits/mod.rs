@@ -5,6 +5,8 @@ mod joints;
 mod torque;
 mod wrench;
 
+pub use wrench::{cone_form, friction_group};
+
 use super::layout::Layout;
 use super::question::{LimitKind, Question, Treatment};
 use super::rows::PhysicalRow;
