@@ -85,7 +85,15 @@ fn place_inertia(here: &mut BodyState, body: &Body) {
     let r = &here.pose.rotation;
     here.mass = body.inertia.mass;
     here.center = here.pose.point(&body.inertia.center);
-    here.inertia = r * body.inertia.about_center * r.transpose();
+    // R I R', each pair of mirrored entries computed once, so that M is symmetric to the last bit.
+    let turned = r * body.inertia.about_center;
+    let entry = |i: usize, j: usize| turned.row(i).dot(&r.row(j));
+    let (xy, xz, yz) = (entry(0, 1), entry(0, 2), entry(1, 2));
+    here.inertia = Mat3::new(
+        entry(0, 0), xy, xz,
+        xy, entry(1, 1), yz,
+        xz, yz, entry(2, 2),
+    );
 }
 
 /// Rotation by `angle` about a unit axis (Rodrigues): `cos I + sin [a]x + (1 - cos) a a'`.
