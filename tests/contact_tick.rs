@@ -169,6 +169,7 @@ fn rigid_rows() {
         assert_eq!(map.right_side, Vec6::zeros());
         assert_eq!(map.now, Wrench::zero());
     }
+    assert_eq!(resolve(&patch(&sole, &ground), &motion), Ok(motion.pose));
     ground.measured = Some(load());
     let map = map_of(&sole, &ground, &motion, TickRule::BackwardEuler);
     assert!(map.now_known);
@@ -397,6 +398,10 @@ fn touchdown_keeps_position_and_yaw_and_lies_on_the_plane() {
     let ground = Ground { rest: Rest::Touchdown { pose: upside_down, plane_point }, ..ground };
     let refusal = resolve(&patch(&sole, &ground), &motion);
     assert!(matches!(refusal, Err(ContactError::TouchdownTilt { .. })), "{refusal:?}");
+    // A point foot may come down at any angle.
+    let point = resolve(&patch(&SoleShape::Point, &ground), &motion).expect("a rest pose");
+    assert_eq!(point.rotation, upside_down.rotation);
+    assert_eq!(point.translation, rest.translation);
 }
 
 #[test]
