@@ -281,8 +281,14 @@ fn yaw_friction_is_taken_about_the_centroid() {
     let force = normal * 300.0 + Vec3::new(50.0, 20.0, -10.0);
     let moment = (rotation * centroid).cross(&force) - normal * 7.0;
     let terms = WrenchSetTerms { mu: 0.6, mu_z: Some(0.06), form: ConeForm::Exact };
-    let got = margins(&sole, &rotation, &normal, &terms, &Wrench { force, moment });
-    close(got.yaw.expect("asked for"), 0.06 * normal.dot(&force) - 7.0, 1e-12, "yaw margin");
+    let wrench = Wrench { force, moment };
+    let got = margins(&sole, &rotation, &normal, &terms, &wrench);
+    let bound = 0.06 * normal.dot(&force);
+    close(got.yaw.expect("asked for"), bound - 7.0, 1e-12, "yaw margin");
+    let set = wrench_set(&sole, &rotation, &normal, &terms, 300.0).expect("a set");
+    let rows = set.blocks[2].values(&wrench.to_vec6().into());
+    close(rows[0], bound + 7.0, 1e-12, "upper yaw row");
+    close(rows[1], bound - 7.0, 1e-12, "lower yaw row");
 }
 
 #[test]

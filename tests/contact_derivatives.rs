@@ -126,6 +126,35 @@ fn drift_is_the_law_at_the_advanced_state() {
     }
 }
 
+/// With a measured wrench the prediction is that wrench plus the change of the law.
+#[test]
+fn a_measured_wrench_shifts_drift_and_prediction_alike() {
+    for (i, s) in situations().enumerate() {
+        let mut dice = Dice::new(2000 + i as u64);
+        let modelled = s.ground();
+        let mut measured = modelled;
+        let (tick, rule, a) = (0.006, TickRule::BackwardEuler, dice.six(20.0, 100.0));
+        let map = |ground| tick_map(&patch(&s.shape, ground), &s.motion, rule, tick, 40.0).expect("a map");
+        let at = |ground, a: &Vec6| {
+            wrench_at(&patch(&s.shape, ground), &s.motion, a, tick, rule).expect("a wrench").to_vec6()
+        };
+        let before = map(&modelled);
+        let shift = dice.six(50.0, 2.0);
+        let seen = underfoot::spatial::Wrench::from_vec6(&(before.now.to_vec6() + shift));
+        measured.measured = Some(seen);
+        let after = map(&measured);
+        assert_eq!(after.now, seen);
+        let size = before.drift.amax() + before.now.to_vec6().amax() + at(&modelled, &a).amax();
+        for change in [
+            after.drift - before.drift,
+            at(&measured, &a) - at(&modelled, &a),
+            at(&measured, &Vec6::zeros()) - before.drift,
+        ] {
+            assert!((change - shift).amax() < 1e-13 * size);
+        }
+    }
+}
+
 #[test]
 fn closed_form_agrees_with_quadrature() {
     for s in situations() {

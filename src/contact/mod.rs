@@ -99,7 +99,7 @@ pub struct SoleMotion {
     pub twist: Twist,
 }
 
-/// The affine map from sole acceleration to wrench over one tick, DESIGN in short:
+/// The affine map from sole acceleration to wrench over one tick:
 /// `w_plus = drift - gain * a`, `a` the acceleration of the sole frame (classical, origin; angular).
 #[derive(Debug, Clone, PartialEq)]
 pub struct TickMap {

@@ -17,6 +17,7 @@ use super::law::bonded::{self, blocks};
 use super::moments::{SoleMoments, cross_sum, material_matrices};
 use super::relative::{Relative, exp_minus_identity};
 use super::{ContactError, Law, Material, Patch, Rest, SoleMotion};
+use crate::spatial::polygon::SoleShape;
 use crate::spatial::{
     Mat3, Mat6, Pose, Twist, Vec3, Vec6, Wrench, exp_so3, head, log_so3, skew, tail,
 };
@@ -39,7 +40,8 @@ const CARRIED_SHARE: f64 = 1e-10;
 ///
 /// - `Pose`: as given.
 /// - `Touchdown`: the sole frame at touchdown, moved along the normal onto the plane and tilted onto it by
-///   the smallest rotation, so that neither tangential position nor yaw about the normal changes.
+///   the smallest rotation, so that neither tangential position nor yaw about the normal changes. A point sole
+///   keeps its orientation. On moving ground pose and plane are those the ground has carried along until now.
 /// - `Carries`: solved for as told at the top of this file; the equilibrium with the smaller turn.
 /// - `Measured`: as `Carries` with the measured wrench. Where the material cannot carry it (k_t = 0 with a
 ///   tangential force, a moment on a point sole, too large a turn), the pose that carries as much of
@@ -56,7 +58,7 @@ pub fn resolve(patch: &Patch, motion: &SoleMotion) -> Result<Pose, ContactError>
     match patch.ground.rest {
         Rest::Pose(pose) => Ok(pose),
         Rest::Touchdown { pose, plane_point } => {
-            touchdown_rest(&pose, &plane_point, &patch.ground.normal)
+            touchdown_rest(patch.shape, &pose, &plane_point, &patch.ground.normal)
         }
         Rest::Carries(_) | Rest::Measured => {
             Ok(resolve_relative(patch, motion)?.rest_pose(&motion.pose))
@@ -73,16 +75,16 @@ pub(super) fn resolve_relative(
     let at_offset = |offset: &Vec3, turn: &Vec3| {
         Relative::from_offset(&ground.normal, offset, turn, &ground.rest_twist, motion)
     };
-    let (target, exact) = match ground.rest {
-        Rest::Pose(_) | Rest::Touchdown { .. } => {
+    let (material, target, exact) = match (ground.rest, ground.law) {
+        (Rest::Pose(_) | Rest::Touchdown { .. }, _) => {
             let rest = resolve(patch, motion)?;
             return Ok(Relative::between(&ground.normal, &rest, &ground.rest_twist, motion));
         }
-        Rest::Carries(wrench) => (wrench, true),
-        Rest::Measured => (ground.measured.ok_or(ContactError::MissingMeasurement)?, false),
-    };
-    let Law::Bonded(material) = ground.law else {
-        return Ok(at_offset(&Vec3::zeros(), &Vec3::zeros()));
+        (_, Law::Rigid { .. }) => return Ok(at_offset(&Vec3::zeros(), &Vec3::zeros())),
+        (Rest::Carries(wrench), Law::Bonded(material)) => (material, wrench, true),
+        (Rest::Measured, Law::Bonded(material)) => {
+            (material, ground.measured.ok_or(ContactError::MissingMeasurement)?, false)
+        }
     };
     let sole = SoleMoments::of(patch.shape);
     let search = search(&sole, &material, &ground.normal, &motion.pose.rotation, &target);
@@ -104,7 +106,16 @@ pub(super) fn resolve_relative(
 }
 
 /// The rest pose after a touchdown, see [`resolve`].
-fn touchdown_rest(pose: &Pose, plane_point: &Vec3, normal: &Vec3) -> Result<Pose, ContactError> {
+fn touchdown_rest(
+    shape: &SoleShape,
+    pose: &Pose,
+    plane_point: &Vec3,
+    normal: &Vec3,
+) -> Result<Pose, ContactError> {
+    let translation = pose.translation - normal * normal.dot(&(pose.translation - plane_point));
+    if *shape == SoleShape::Point {
+        return Ok(Pose { rotation: pose.rotation, translation });
+    }
     let up: Vec3 = pose.rotation.column(2).into();
     let cosine = up.dot(normal);
     if cosine.is_nan() || cosine <= 0.0 {
@@ -113,10 +124,7 @@ fn touchdown_rest(pose: &Pose, plane_point: &Vec3, normal: &Vec3) -> Result<Pose
     // The smallest rotation that takes `up` to the normal (Rodrigues, with axis up x n).
     let axis = skew(&up.cross(normal));
     let upright = Mat3::identity() + axis + axis * axis / (1.0 + cosine);
-    Ok(Pose {
-        rotation: upright * pose.rotation,
-        translation: pose.translation - normal * normal.dot(&(pose.translation - plane_point)),
-    })
+    Ok(Pose { rotation: upright * pose.rotation, translation })
 }
 
 /// Where the search for a carrying rest pose ended.

@@ -155,7 +155,7 @@ pub(super) fn force_cone(
 
 /// Sine and cosine of `2 pi j / N`, exact at quarter turns so that four facets have no cross terms.
 fn facet_direction(j: usize, facets: usize) -> (f64, f64) {
-    if 4 * j % facets == 0 {
+    if (4 * j).is_multiple_of(facets) {
         match 4 * j / facets {
             0 => (0.0, 1.0),
             1 => (1.0, 0.0),
