@@ -77,10 +77,15 @@ fn limits(random: &mut Random, n: usize, equalities: usize, planes: usize, cones
 }
 
 fn random_hierarchy(seed: u64) -> Hierarchy {
+    shaped_hierarchy(seed, -1.0)
+}
+
+/// `tight` from -1 (no half-plane through the known inner point) to 1 (all of them: a vertex of many).
+fn shaped_hierarchy(seed: u64, tight: f64) -> Hierarchy {
     let mut random = Random::new(seed);
     let n = 3 + random.below(8);
     let (equalities, planes, cones) = (random.below(3), random.below(9), random.below(3));
-    let hard = limits(&mut random, n, equalities, planes, cones, -1.0);
+    let hard = limits(&mut random, n, equalities, planes, cones, tight);
     let mut levels = Vec::new();
     for priority in 1..=1 + random.below(3) as u32 {
         let rows = random.below(4);
@@ -175,7 +180,7 @@ fn big_weights_tend_to_the_lexicographic_answer() {
             let joined = Hierarchy { levels: vec![one], ..problem.clone() };
             answer(&joined)
         };
-        let (a, b) = (at(1e3), at(1e4));
+        let (a, b) = (at(1e4), at(1e5));
         if a.status != Status::Solved || b.status != Status::Solved {
             continue;
         }
@@ -494,5 +499,60 @@ fn malformed_hierarchies_are_errors() {
     for bad in cases {
         let found = solve(&bad, &Options::default(), None);
         assert!(matches!(found, Err(SolveError::Dimension { .. } | SolveError::Number { .. })), "{found:?}");
+    }
+}
+
+/// Many half-planes through one point, so that active sets are degenerate and interiors thin or missing.
+fn tight_breaches(seeds: std::ops::Range<u64>) -> Vec<(u64, Status, f64)> {
+    let mut bad = Vec::new();
+    for seed in seeds {
+        let problem = shaped_hierarchy(seed, 1.0);
+        let found = answer(&problem);
+        let breach = if found.levels.len() == problem.levels.len() { breach_of_all(&problem, &found) } else { f64::NAN };
+        if found.status != Status::Solved || breach > 1e-9 || breach.is_nan() {
+            bad.push((seed, found.status, breach));
+        }
+    }
+    bad
+}
+
+#[test]
+fn degenerate_vertices_are_solved() {
+    let bad = tight_breaches(0..300);
+    assert!(bad.is_empty(), "{bad:?}");
+}
+
+/// The long campaign: `cargo test --test solve_random -- --ignored`.
+#[test]
+#[ignore = "minutes, not seconds"]
+fn campaign() {
+    let mut bad = Vec::new();
+    for seed in 1_000..21_000 {
+        let problem = random_hierarchy(seed);
+        let warm = answer(&problem);
+        let cold = solve(&problem, &Options { warm: false, ..Options::default() }, None).expect("well formed");
+        let off = warm.x.iter().zip(&cold.x).fold(0.0f64, |m, (a, b)| m.max((a - b).abs() / (1.0 + b.abs())));
+        let breach = if warm.levels.len() == problem.levels.len() { breach_of_all(&problem, &warm) } else { f64::NAN };
+        let good = warm.status == Status::Solved && cold.status == Status::Solved && off < 1e-8 && breach < 1e-9;
+        if !good || warm.free.dimension != cold.free.dimension {
+            bad.push((seed, warm.status, cold.status, off, breach, warm.free.dimension, cold.free.dimension));
+        }
+    }
+    let tight = tight_breaches(1_000..21_000);
+    println!("{} bad: {bad:?}\n{} tight bad: {tight:?}", bad.len(), tight.len());
+    assert!(bad.is_empty() && tight.is_empty());
+}
+
+#[test]
+#[ignore]
+fn look() {
+    for seed in [1190, 4453, 2353, 16492, 1370, 3083, 7046, 10466, 20900] {
+        let p = random_hierarchy(seed);
+        let f = answer(&p);
+        println!("seed {seed} {:?} x {:?} bound {:e} hard faces {:?} cert {:?}\n   {:?} {:?}", f.status, f.x, f.bound, f.hard_faces, f.infeasibility, p.hard.cones, p.levels.iter().map(|l| l.soft.cones.clone()).collect::<Vec<_>>());
+        for (l, o) in p.levels.iter().zip(&f.levels) {
+            println!("  refined {} breach {:e} opt {:?} bound {:e} it {} maxmult {:e} cost {}", o.refined, breach(l, o, &f.x), o.optimality, o.bound, o.iterations, o.multipliers.iter().fold(0.0f64, |m, v| m.max(v.abs())), o.cost);
+            println!("     {:?} {:?}", o.rank, o.faces);
+        }
     }
 }

@@ -15,7 +15,7 @@ use std::sync::Arc;
 use std::sync::atomic::{AtomicBool, Ordering};
 
 /// A multiplier below this part of the problem's size exposes nothing; the interior test decides instead.
-const EXPOSING: f64 = 1e-7;
+const EXPOSING: f64 = 1e-10;
 /// The same where the point is the engine's own.
 const EXPOSING_UNREFINED: f64 = 1e-5;
 /// A multiplier this close to the boundary of the dual cone (relative) lies on it.
@@ -402,7 +402,7 @@ impl Cascade<'_> {
     /// Appends the soft limits relaxed by their slacks, and lists the faces the level's multipliers expose.
     fn expose(&mut self, index: usize, data: &LevelData, solved: &Solved) -> Vec<(usize, FaceDecision)> {
         let (tolerance, boundary) = if solved.refined {
-            (EXPOSING * solved.problem.size, ON_BOUNDARY)
+            (EXPOSING.max(1e3 * solved.optimality.worst()) * solved.problem.size, ON_BOUNDARY)
         } else {
             (EXPOSING_UNREFINED * solved.problem.size, ON_BOUNDARY_UNREFINED)
         };

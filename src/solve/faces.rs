@@ -174,9 +174,8 @@ fn direction_inside(sets: &Reduced, near: &[ReducedBlock]) -> bool {
         let radius = norm(&s[1..]);
         if block.kind == Kind::SecondOrder && radius > NEAR {
             let mut gradient = sets.row(block.first).to_vec();
-            let mut longest = norm(&gradient);
+            let longest = largest(&sets.length[block.first..block.first + block.len]);
             for k in 1..block.len {
-                longest = longest.max(norm(sets.row(block.first + k)));
                 axpy(-s[k] / radius, sets.row(block.first + k), &mut gradient);
             }
             rows.extend_from_slice(&gradient);
@@ -187,7 +186,7 @@ fn direction_inside(sets: &Reduced, near: &[ReducedBlock]) -> bool {
                 let row = sets.row(block.first + k);
                 rows.extend_from_slice(row);
                 wanted.push(if k == 0 { -norm(row) } else { 0.0 });
-                lengths.push(norm(row));
+                lengths.push(sets.length[block.first + k]);
             }
         }
     }

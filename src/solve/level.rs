@@ -114,6 +114,8 @@ pub(super) struct LevelProblem {
     pub residual: Vec<f64>,
     /// `sqrt(2 w) (a x0 - b)`.
     pub residual_at: Vec<f64>,
+    /// `sqrt(2 w) |a|`.
+    pub residual_length: Vec<f64>,
     /// Largest `2 w |a|^2`, the natural size of a cost gradient; 1 where there are no residuals.
     pub size: f64,
 }
@@ -132,6 +134,7 @@ pub(super) fn reduce(system: &System, sets: Reduced, data: &LevelData) -> LevelP
         out.iter_mut().for_each(|v| *v *= root);
         problem.residual_at.push(root * (residuals.matrix.row_dot(i, &system.x) - residuals.rhs[i]));
         let length: f64 = residuals.matrix.row(i).map(|(_, v)| v * v).sum();
+        problem.residual_length.push(root * length.sqrt());
         problem.size = problem.size.max(2.0 * residuals.weight[i] * length);
     }
     if let Some((soft, weights)) = data.soft {
@@ -144,6 +147,7 @@ pub(super) fn reduce(system: &System, sets: Reduced, data: &LevelData) -> LevelP
                 system.space.project(Entries::new(&soft.matrix, row), &mut sets.gamma[start..]);
                 sets.at.push(soft.rhs[row] - soft.matrix.row_dot(row, &system.x));
                 let length: f64 = soft.matrix.row(row).map(|(_, v)| v * v).sum();
+                sets.length.push(length.sqrt());
                 problem.size = problem.size.max(2.0 * weights[index] * length);
             }
             sets.blocks.push(ReducedBlock { block: index, first: at, len, kind, soft: Some(weights[index]) });

@@ -27,7 +27,7 @@ const DEPENDENT_COST: f64 = 1e-9;
 /// Slack below minus this takes a row into the active set.
 const VIOLATED: f64 = 1e-11;
 /// Multiplier below minus this part of the problem's size takes a row out.
-const NEGATIVE: f64 = 1e-12;
+const NEGATIVE: f64 = 1e-14;
 /// Nothing is gained below this.
 const ROUNDING: f64 = 4e-16;
 /// A second-order block this close to its apex has no usable direction.
@@ -79,8 +79,10 @@ struct Linear {
     /// Soft cost rows and values.
     soft: Vec<f64>,
     soft_at: Vec<f64>,
+    soft_length: Vec<f64>,
     /// C by rows.
     curvature: Vec<f64>,
+    curvature_length: Vec<f64>,
 }
 
 /// Reads the active set off an interior point: whichever of slack and multiplier is the larger.
@@ -110,7 +112,7 @@ pub(super) fn classify(problem: &LevelProblem, u: Vec<f64>, z: Vec<f64>) -> Poin
 pub(super) fn optimality(problem: &LevelProblem, u: &[f64], z: &[f64]) -> Optimality {
     let mut gradient = cost_gradient(problem, u);
     let slack = problem.sets.slack(u);
-    let size = problem.size.max(largest(&gradient));
+    let size = problem.size.max(largest(&gradient)).max(largest(z));
     let mut found = Optimality::default();
     for block in &problem.sets.blocks {
         let range = block.first..block.first + block.len;
@@ -200,7 +202,7 @@ fn newton(problem: &LevelProblem, point: &mut Point) -> Option<(Optimality, Pivo
 /// Optimality as far as the held active set is concerned: other blocks may still be violated.
 fn held_optimality(problem: &LevelProblem, point: &Point, linear: &Linear) -> Optimality {
     let mut gradient = cost_gradient(problem, &point.u);
-    let size = problem.size.max(largest(&gradient));
+    let size = problem.size.max(largest(&gradient)).max(largest(&point.z));
     for (block, mode) in problem.sets.blocks.iter().zip(&point.modes) {
         if *mode != Mode::Off {
             for i in block.first..block.first + block.len {
@@ -221,7 +223,9 @@ fn linearise(problem: &LevelProblem, point: &Point) -> Option<Linear> {
         first: Vec::with_capacity(sets.blocks.len()),
         soft: Vec::new(),
         soft_at: Vec::new(),
+        soft_length: Vec::new(),
         curvature: Vec::new(),
+        curvature_length: Vec::new(),
     };
     for (block, mode) in sets.blocks.iter().zip(&point.modes) {
         linear.first.push(linear.target.len());
@@ -241,13 +245,14 @@ fn flat(problem: &LevelProblem, block: &ReducedBlock, soft: Option<f64>, slack: 
         let root = (2.0 * weight).sqrt();
         linear.soft.extend(problem.sets.row(begin).iter().map(|v| root * v));
         linear.soft_at.push(-root * slack[begin]);
+        linear.soft_length.push(root * problem.sets.length[begin]);
         begin += 1;
     }
     for i in begin..block.first + block.len {
         let row = problem.sets.row(i);
         linear.equations.extend_from_slice(row);
         linear.target.push(slack[i]);
-        linear.lengths.push(norm(row));
+        linear.lengths.push(problem.sets.length[i]);
     }
 }
 
@@ -267,10 +272,9 @@ fn smooth(
     }
     let value = radius - s[0];
     let mut gradient = sets.row(block.first).to_vec();
-    let mut longest = norm(&gradient);
+    let longest = largest(&sets.length[block.first..block.first + block.len]);
     for k in 1..block.len {
         let row = sets.row(block.first + k);
-        longest = longest.max(norm(row));
         axpy(-s[k] / radius, row, &mut gradient);
     }
     let multiplier = match soft {
@@ -278,6 +282,7 @@ fn smooth(
             let root = (2.0 * weight).sqrt();
             linear.soft.extend(gradient.iter().map(|v| root * v));
             linear.soft_at.push(root * value);
+            linear.soft_length.push(root * longest);
             2.0 * weight * value
         }
         None => {
@@ -298,6 +303,7 @@ fn smooth(
             let start = linear.curvature.len();
             linear.curvature.extend(sets.row(block.first + k).iter().map(|v| root * v));
             axpy(-root * s[k] / radius, &along, &mut linear.curvature[start..]);
+            linear.curvature_length.push(root * longest);
         }
     }
     Some(())
@@ -383,22 +389,22 @@ fn step(problem: &LevelProblem, point: &Point, linear: &Linear, factor: &Factor)
     let mut columns = Vec::new();
     let mut value = Vec::new();
     let mut lengths = Vec::new();
-    let mut add = |row: &[f64], at: f64| {
+    let mut add = |row: &[f64], at: f64, length: f64| {
         let mut turned = row.to_vec();
         factor.apply_transpose(&mut turned);
-        lengths.push(norm(row));
+        lengths.push(length);
         value.push(at + dot(&turned[..rank], &local[..rank]));
         columns.extend_from_slice(&turned[rank..]);
     };
     for (i, at) in problem.residual_at.iter().enumerate() {
         let row = problem.residual_row(i);
-        add(row, at + dot(row, &point.u));
+        add(row, at + dot(row, &point.u), problem.residual_length[i]);
     }
     for (i, &at) in linear.soft_at.iter().enumerate() {
-        add(&linear.soft[i * d..(i + 1) * d], at);
+        add(&linear.soft[i * d..(i + 1) * d], at, linear.soft_length[i]);
     }
     if d > 0 {
-        linear.curvature.chunks_exact(d).for_each(|row| add(row, 0.0));
+        linear.curvature.chunks_exact(d).zip(&linear.curvature_length).for_each(|(row, &length)| add(row, 0.0, length));
     }
     let (y, cost_pivot) = shortest_least_squares(columns, q, &lengths, &value);
     local[rank..].copy_from_slice(&y);
@@ -451,7 +457,7 @@ enum Revision {
 fn revise(problem: &LevelProblem, point: &mut Point) -> Revision {
     let slack = problem.sets.slack(&point.u);
     let gradient = largest(&cost_gradient(problem, &point.u));
-    let negative = NEGATIVE * problem.size.max(gradient);
+    let negative = NEGATIVE * problem.size.max(gradient).max(largest(&point.z));
     let mut revision = Revision::Settled;
     for (index, block) in problem.sets.blocks.iter().enumerate() {
         let range = block.first..block.first + block.len;

@@ -68,6 +68,8 @@ pub(super) struct Reduced {
     /// Rows by rows, d entries each.
     pub gamma: Vec<f64>,
     pub at: Vec<f64>,
+    /// Length of each row over x, against which its part in u is small or not.
+    pub length: Vec<f64>,
 }
 
 /// One live block.
@@ -200,7 +202,9 @@ impl System {
                 let row = block.first + k;
                 let out = &mut reduced.gamma[start + k * d..start + (k + 1) * d];
                 self.space.project(Entries::new(&self.matrix, row), out);
-                moves |= norm(out) > DEPENDENT * self.row_length(row).max(1e-3);
+                let length = self.row_length(row);
+                moves |= norm(out) > DEPENDENT * length.max(1e-3);
+                reduced.length.push(length);
                 reduced.at.push(self.rhs[row] - self.matrix.row_dot(row, &self.x));
             }
             if !moves {
@@ -211,6 +215,7 @@ impl System {
                 self.blocks[index].part = Part::Settled;
                 reduced.gamma.truncate(start);
                 reduced.at.truncate(first);
+                reduced.length.truncate(first);
                 continue;
             }
             reduced.blocks.push(ReducedBlock { block: index, first, len: block.len, kind: block.kind, soft: None });

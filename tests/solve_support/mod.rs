@@ -69,7 +69,8 @@ fn outside(cone: &Cone, v: &[f64], dual: bool) -> f64 {
     }
 }
 
-/// The largest breach of the optimality conditions of one level at x, with the multipliers its outcome states.
+/// The largest breach of the optimality conditions of one level at x, with the multipliers its outcome states,
+/// per unit of the largest multiplier (a slack is known to rounding, its product with a multiplier to as much times that).
 pub fn breach(level: &Level, outcome: &LevelOutcome, x: &[f64]) -> f64 {
     let mut worst = 0.0f64;
     let mut gradient = vec![0.0; x.len()];
@@ -112,7 +113,8 @@ pub fn breach(level: &Level, outcome: &LevelOutcome, x: &[f64]) -> f64 {
             }
         }
     }
-    gradient.iter().fold(worst, |m, v| m.max(v.abs()))
+    let size = outcome.multipliers.iter().chain(&outcome.soft_multipliers).fold(1.0f64, |m, v| m.max(v.abs()));
+    gradient.iter().fold(worst, |m, v| m.max(v.abs())) / size
 }
 
 /// The largest breach over all levels, at the final x.
