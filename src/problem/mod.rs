@@ -4,6 +4,7 @@
 pub mod assemble;
 pub mod layout;
 pub mod limits;
+pub mod mobility;
 mod physics;
 pub mod question;
 pub mod rows;

@@ -2,13 +2,17 @@
 //!
 //! - `M nu_dot - S' tau - sum J' w_bar = external - h - friction`, `w_bar = (1 - theta) now + theta w_plus`;
 //! - `acceleration_part (J nu_dot + J_dot nu) + wrench_part w_plus = right_side` for each sole;
+//! - under the rule `held`, w_bar of a soft sole is an unknown, and the soles' equality is coupled (`contact::held`);
 //! - `w_plus = sum X_i f_i` where a friction set speaks of vertex forces.
 
-use super::layout::{Layout, force_unit, velocity_names};
+use nalgebra::DMatrix;
+
+use super::layout::{ContactColumns, Layout, force_unit, velocity_names};
 use super::question::Question;
 use super::rows::{Entries, PhysicalRow, Scaler};
 use super::scene::{Scene, SoleScene};
 use crate::conic::{Cone, ConicRows};
+use crate::contact::held::CoupledMap;
 use crate::spatial::{Vec3, skew};
 
 const PARTS: [&str; 6] = ["x", "y", "z", "rx", "ry", "rz"];
@@ -16,8 +20,11 @@ const PARTS: [&str; 6] = ["x", "y", "z", "rx", "ry", "rz"];
 /// Adds every physics row.
 pub fn push(question: &Question, scene: &Scene, layout: &Layout, scaler: &Scaler, out: &mut ConicRows) {
     push_dynamics(question, scene, layout, scaler, out);
-    for (sole, columns) in scene.soles.iter().zip(&layout.contacts) {
+    for (sole, columns) in scene.soles.iter().zip(&layout.contacts).filter(|(_, columns)| columns.mean.is_none()) {
         push_contact(sole, columns, layout, scaler, out);
+    }
+    if let Some(map) = &scene.coupled {
+        push_coupled(map, scene, layout, scaler, out);
     }
     for (index, contact) in question.contacts.iter().enumerate() {
         push_vertex_sum(question, contact.sole, &scene.soles[index], &layout.contacts[index], layout, scaler, out);
@@ -35,11 +42,11 @@ fn push_dynamics(question: &Question, scene: &Scene, layout: &Layout, scaler: &S
         }
         let mut rhs = scene.external[i] - ws.bias[i] - ws.friction[i];
         for (sole, columns) in scene.soles.iter().zip(&layout.contacts) {
-            let theta = sole.map.theta;
+            let (acting, theta) = columns.mean.map_or((columns.wrench, sole.map.theta), |mean| (mean, 1.0));
             let now = sole.map.now.to_vec6();
             for k in 0..columns.dimension {
                 let lever = sole.jacobian[(k, i)];
-                entries.push((columns.wrench + k, -theta * lever));
+                entries.push((acting + k, -theta * lever));
                 rhs += (1.0 - theta) * lever * now[k];
             }
         }
@@ -71,6 +78,39 @@ fn push_contact(
         let (unit, scale) = if k < 3 { ("m/s^2", 9.80665) } else { ("rad/s^2", 9.80665 / columns.radius) };
         let row = PhysicalRow { entries, rhs: map.right_side[k] - drift, part: PARTS[k].into(), unit };
         scaler.push_cone(out, Cone::Zero(1), &group, true, scale, &[row]);
+    }
+}
+
+/// Mean and end rows of every soft sole under the rule `held`, see `contact::held`.
+fn push_coupled(map: &CoupledMap, scene: &Scene, layout: &Layout, scaler: &Scaler, out: &mut ConicRows) {
+    let coordinates: Vec<(&SoleScene, &ContactColumns, usize)> = scene
+        .soles
+        .iter()
+        .zip(&layout.contacts)
+        .filter(|(_, columns)| columns.mean.is_some())
+        .flat_map(|(sole, columns)| (0..columns.dimension).map(move |k| (sole, columns, k)))
+        .collect();
+    for (i, (sole, columns, k)) in coordinates.iter().enumerate() {
+        let group = format!("contact:{}", sole.name);
+        let (unit, scale) = if *k < 3 { ("m/s^2", 9.80665) } else { ("rad/s^2", 9.80665 / columns.radius) };
+        let mut push = |part: String, acceleration: &DMatrix<f64>, mean: &DMatrix<f64>, end: Option<&DMatrix<f64>>, right: f64| {
+            let mut entries: Entries = (0..layout.velocities)
+                .map(|j| {
+                    let along = |(l, (s, _, m)): (usize, &(&SoleScene, _, usize))| acceleration[(i, l)] * s.jacobian[(*m, j)];
+                    (j, coordinates.iter().enumerate().map(along).sum())
+                })
+                .collect();
+            let mut rhs = right;
+            for (l, (s, c, m)) in coordinates.iter().enumerate() {
+                rhs -= acceleration[(i, l)] * s.bias_acceleration[*m];
+                entries.extend(c.mean.map(|first| (first + m, mean[(i, l)])));
+                entries.extend(end.map(|end| (c.wrench + m, end[(i, l)])));
+            }
+            let row = PhysicalRow { entries, rhs, part, unit };
+            scaler.push_cone(out, Cone::Zero(1), &group, true, scale, &[row]);
+        };
+        push(format!("mean {}", PARTS[*k]), &map.mean_acceleration, &map.mean_mean, None, map.mean_right[i]);
+        push(format!("end {}", PARTS[*k]), &map.end_acceleration, &map.end_mean, Some(&map.end_end), map.end_right[i]);
     }
 }
 

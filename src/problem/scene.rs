@@ -2,8 +2,11 @@
 
 use nalgebra::DMatrix;
 
+use super::mobility::mobility;
 use super::question::Question;
-use crate::contact::{ContactError, Patch, SoleMotion, TickMap, tick};
+use crate::contact::held::{CoupledMap, HeldSole, coupled_map};
+use crate::contact::{ContactError, Patch, SoleMotion, TickMap, TickRule, tick};
+use crate::spatial::polygon::SoleShape;
 use crate::dynamics::{self, Workspace};
 use crate::spatial::{Vec3, Vec6, Wrench};
 
@@ -33,6 +36,9 @@ pub struct Scene {
     pub external: nalgebra::DVector<f64>,
     /// External wrenches in the world: point, its velocity, load about the point.
     pub loads: Vec<PlacedLoad>,
+    /// Under the rule `held`, the contact equality of all soft soles together (stacked in contact order); it takes the place
+    /// of theirs in [`SoleScene::map`]. None under other rules, and where no sole is soft.
+    pub coupled: Option<CoupledMap>,
 }
 
 /// An external wrench in the world.
@@ -59,6 +65,12 @@ pub enum SceneError {
         /// What is wrong.
         source: ContactError,
     },
+    /// The soft soles together, under the rule `held`.
+    #[error("soft soles coupled by the rule held: {0}")]
+    Coupled(ContactError),
+    /// The mass matrix is not positive definite, so that accelerations do not follow from wrenches.
+    #[error("soft soles coupled by the rule held: the mass matrix is not positive definite")]
+    NoMobility,
 }
 
 impl Scene {
@@ -100,7 +112,21 @@ impl Scene {
             dynamics::external_generalised_force(model, &ws, frame.body, &point, &load.wrench, &mut external);
             loads.push(PlacedLoad { point, velocity, wrench: load.wrench });
         }
-        Ok(Scene { dynamics: ws, soles, external, loads })
+        let coupled = coupled(question, &ws, &soles)?;
+        Ok(Scene { dynamics: ws, soles, external, loads, coupled })
+    }
+
+    /// For each contact, where its rows start in [`Scene::coupled`]; none on rigid ground or without coupling.
+    pub fn coupled_starts(&self) -> Vec<Option<usize>> {
+        let mut next = 0;
+        self.soles
+            .iter()
+            .map(|sole| {
+                let own = (self.coupled.is_some() && !sole.map.rigid).then_some(next);
+                next += own.map_or(0, |_| sole.map.dimension);
+                own
+            })
+            .collect()
     }
 
     /// Rate of momentum under the present wrenches (N; N m about the centre of mass): `sum X w + m g`.
@@ -118,5 +144,31 @@ impl Scene {
             add(&load.point, &load.wrench);
         }
         rate
+    }
+}
+
+fn coupled(question: &Question, ws: &Workspace, soles: &[SoleScene]) -> Result<Option<CoupledMap>, SceneError> {
+    if question.tick.rule != TickRule::Held || soles.iter().all(|s| s.map.rigid) {
+        return Ok(None);
+    }
+    let mobility = mobility(&ws.mass_matrix, soles).ok_or(SceneError::NoMobility)?;
+    let held: Vec<HeldSole> = question
+        .contacts
+        .iter()
+        .zip(soles)
+        .filter(|(_, sole)| !sole.map.rigid)
+        .map(|(contact, sole)| HeldSole { map: &sole.map, radius: radius(&question.model.soles[contact.sole].shape) })
+        .collect();
+    coupled_map(&held, &mobility, question.tick.length, ws.mass).map(Some).map_err(SceneError::Coupled)
+}
+
+/// Polar radius of gyration of a sole about its origin (m); 1 under a point.
+pub fn radius(shape: &SoleShape) -> f64 {
+    match shape {
+        SoleShape::Point => 1.0,
+        SoleShape::Polygon(polygon) => {
+            let m = polygon.moments();
+            ((m.second[0] + m.second[1]) / m.area).sqrt()
+        }
     }
 }
