@@ -2,9 +2,9 @@
 //! task and limit, assembly.
 
 pub mod assemble;
+pub mod coupled;
 pub mod layout;
 pub mod limits;
-pub mod mobility;
 mod physics;
 pub mod question;
 pub mod rows;

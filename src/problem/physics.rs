@@ -7,12 +7,12 @@
 
 use nalgebra::DMatrix;
 
-use super::layout::{ContactColumns, Layout, force_unit, velocity_names};
+use super::coupled::CoupledRows;
+use super::layout::{Layout, force_unit, velocity_names};
 use super::question::Question;
 use super::rows::{Entries, PhysicalRow, Scaler};
 use super::scene::{Scene, SoleScene};
 use crate::conic::{Cone, ConicRows};
-use crate::contact::held::CoupledMap;
 use crate::spatial::{Vec3, skew};
 
 const PARTS: [&str; 6] = ["x", "y", "z", "rx", "ry", "rz"];
@@ -50,6 +50,9 @@ fn push_dynamics(question: &Question, scene: &Scene, layout: &Layout, scaler: &S
                 rhs += (1.0 - theta) * lever * now[k];
             }
         }
+        if let Some(rows) = &scene.coupled {
+            push_friction(i, rows, layout, &mut entries, &mut rhs);
+        }
         let row = PhysicalRow { entries, rhs, part: name, unit: force_unit(model, i) };
         scaler.push_cone(out, Cone::Zero(1), "dynamics", true, layout.dynamics_scale[i], &[row]);
     }
@@ -82,36 +85,42 @@ fn push_contact(
 }
 
 /// Mean and end rows of every soft sole under the rule `held`, see `contact::held`.
-fn push_coupled(map: &CoupledMap, scene: &Scene, layout: &Layout, scaler: &Scaler, out: &mut ConicRows) {
-    let coordinates: Vec<(&SoleScene, &ContactColumns, usize)> = scene
-        .soles
-        .iter()
-        .zip(&layout.contacts)
-        .filter(|(_, columns)| columns.mean.is_some())
-        .flat_map(|(sole, columns)| (0..columns.dimension).map(move |k| (sole, columns, k)))
-        .collect();
-    for (i, (sole, columns, k)) in coordinates.iter().enumerate() {
-        let group = format!("contact:{}", sole.name);
-        let (unit, scale) = if *k < 3 { ("m/s^2", 9.80665) } else { ("rad/s^2", 9.80665 / columns.radius) };
-        let mut push = |part: String, acceleration: &DMatrix<f64>, mean: &DMatrix<f64>, end: Option<&DMatrix<f64>>, right: f64| {
-            let mut entries: Entries = (0..layout.velocities)
-                .map(|j| {
-                    let along = |(l, (s, _, m)): (usize, &(&SoleScene, _, usize))| acceleration[(i, l)] * s.jacobian[(*m, j)];
-                    (j, coordinates.iter().enumerate().map(along).sum())
-                })
-                .collect();
-            let mut rhs = right;
-            for (l, (s, c, m)) in coordinates.iter().enumerate() {
-                rhs -= acceleration[(i, l)] * s.bias_acceleration[*m];
-                entries.extend(c.mean.map(|first| (first + m, mean[(i, l)])));
-                entries.extend(end.map(|end| (c.wrench + m, end[(i, l)])));
-            }
+fn push_coupled(rows: &CoupledRows, scene: &Scene, layout: &Layout, scaler: &Scaler, out: &mut ConicRows) {
+    let coordinates = soft_coordinates(layout);
+    for (i, &(contact, _, _, k)) in coordinates.iter().enumerate() {
+        let group = format!("contact:{}", scene.soles[contact].name);
+        let radius = layout.contacts[contact].radius;
+        let (unit, scale) = if k < 3 { ("m/s^2", 9.80665) } else { ("rad/s^2", 9.80665 / radius) };
+        let mut push = |part: String, entries: Entries, rhs: f64| {
             let row = PhysicalRow { entries, rhs, part, unit };
             scaler.push_cone(out, Cone::Zero(1), &group, true, scale, &[row]);
         };
-        push(format!("mean {}", PARTS[*k]), &map.mean_acceleration, &map.mean_mean, None, map.mean_right[i]);
-        push(format!("end {}", PARTS[*k]), &map.end_acceleration, &map.end_mean, Some(&map.end_end), map.end_right[i]);
+        let on_acceleration = |m: &DMatrix<f64>| (0..layout.velocities).map(|j| (j, m[(i, j)])).collect::<Entries>();
+        let mut entries = on_acceleration(&rows.mean_acceleration);
+        entries.extend(coordinates.iter().enumerate().map(|(l, c)| (c.1, rows.mean_mean[(i, l)])));
+        push(format!("mean {}", PARTS[k]), entries, rows.mean_right[i]);
+        let mut entries = on_acceleration(&rows.end_acceleration);
+        entries.extend(coordinates.iter().enumerate().map(|(l, c)| (c.1, rows.end_mean[(i, l)])));
+        entries.extend(coordinates.iter().enumerate().map(|(l, c)| (c.2, rows.end_end[(i, l)])));
+        push(format!("end {}", PARTS[k]), entries, rows.end_right[i]);
     }
+}
+
+/// For each coordinate of the coupled rows: its contact, its average-wrench column, its end-wrench column, its part.
+fn soft_coordinates(layout: &Layout) -> Vec<(usize, usize, usize, usize)> {
+    let contacts = layout.contacts.iter().enumerate();
+    contacts
+        .filter_map(|(i, columns)| columns.mean.map(|mean| (i, mean, columns)))
+        .flat_map(|(i, mean, columns)| (0..columns.dimension).map(move |k| (i, mean + k, columns.wrench + k, k)))
+        .collect()
+}
+
+/// What the change of friction over the tick adds to row i of the dynamics, and to its right side.
+fn push_friction(i: usize, rows: &CoupledRows, layout: &Layout, entries: &mut Entries, rhs: &mut f64) {
+    let Some(f) = rows.damped.iter().position(|&row| row == i) else { return };
+    entries.extend((0..layout.velocities).map(|j| (j, -rows.friction_acceleration[(f, j)])));
+    entries.extend(soft_coordinates(layout).iter().enumerate().map(|(l, c)| (c.1, -rows.friction_mean[(f, l)])));
+    *rhs += rows.friction_right[f];
 }
 
 fn push_vertex_sum(

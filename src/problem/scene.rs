@@ -2,11 +2,9 @@
 
 use nalgebra::DMatrix;
 
-use super::mobility::mobility;
+use super::coupled::CoupledRows;
 use super::question::Question;
-use crate::contact::held::{CoupledMap, HeldSole, coupled_map};
 use crate::contact::{ContactError, Patch, SoleMotion, TickMap, TickRule, tick};
-use crate::spatial::polygon::SoleShape;
 use crate::dynamics::{self, Workspace};
 use crate::spatial::{Vec3, Vec6, Wrench};
 
@@ -36,9 +34,9 @@ pub struct Scene {
     pub external: nalgebra::DVector<f64>,
     /// External wrenches in the world: point, its velocity, load about the point.
     pub loads: Vec<PlacedLoad>,
-    /// Under the rule `held`, the contact equality of all soft soles together (stacked in contact order); it takes the place
-    /// of theirs in [`SoleScene::map`]. None under other rules, and where no sole is soft.
-    pub coupled: Option<CoupledMap>,
+    /// Under the rule `held`, the contact equality of all soft soles together; it takes the place of theirs in [`SoleScene::map`].
+    /// None under other rules, and where there is neither a soft sole nor a damped joint.
+    pub coupled: Option<CoupledRows>,
 }
 
 /// An external wrench in the world.
@@ -112,7 +110,8 @@ impl Scene {
             dynamics::external_generalised_force(model, &ws, frame.body, &point, &load.wrench, &mut external);
             loads.push(PlacedLoad { point, velocity, wrench: load.wrench });
         }
-        let coupled = coupled(question, &ws, &soles)?;
+        let held = question.tick.rule == TickRule::Held;
+        let coupled = if held { CoupledRows::new(question, &ws, &soles)? } else { None };
         Ok(Scene { dynamics: ws, soles, external, loads, coupled })
     }
 
@@ -144,31 +143,5 @@ impl Scene {
             add(&load.point, &load.wrench);
         }
         rate
-    }
-}
-
-fn coupled(question: &Question, ws: &Workspace, soles: &[SoleScene]) -> Result<Option<CoupledMap>, SceneError> {
-    if question.tick.rule != TickRule::Held || soles.iter().all(|s| s.map.rigid) {
-        return Ok(None);
-    }
-    let mobility = mobility(&ws.mass_matrix, soles).ok_or(SceneError::NoMobility)?;
-    let held: Vec<HeldSole> = question
-        .contacts
-        .iter()
-        .zip(soles)
-        .filter(|(_, sole)| !sole.map.rigid)
-        .map(|(contact, sole)| HeldSole { map: &sole.map, radius: radius(&question.model.soles[contact.sole].shape) })
-        .collect();
-    coupled_map(&held, &mobility, question.tick.length, ws.mass).map(Some).map_err(SceneError::Coupled)
-}
-
-/// Polar radius of gyration of a sole about its origin (m); 1 under a point.
-pub fn radius(shape: &SoleShape) -> f64 {
-    match shape {
-        SoleShape::Point => 1.0,
-        SoleShape::Polygon(polygon) => {
-            let m = polygon.moments();
-            ((m.second[0] + m.second[1]) / m.area).sqrt()
-        }
     }
 }

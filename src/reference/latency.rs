@@ -8,11 +8,11 @@
 use nalgebra::{DMatrix, DVector};
 
 use super::Trouble;
-use crate::contact::held::CoupledMap;
 use crate::contact::{Law, Patch, Rest, TickRule, rest, tick};
 use crate::dynamics;
+use crate::problem::coupled::CoupledRows;
 use crate::problem::question::{Latency, Question};
-use crate::problem::scene::{Scene, SoleScene};
+use crate::problem::scene::Scene;
 use crate::spatial::{Vec6, Wrench};
 
 /// Longest substep (s).
@@ -107,7 +107,7 @@ pub fn response(question: &Question, scene: &Scene, torques: &[f64]) -> Result<R
     // Wrenches count in body weights, so that forces and accelerations are of one size.
     let unit = ws.mass * 10.0;
     let mut at = nv;
-    let mut soft: Vec<(&SoleScene, usize, usize)> = Vec::with_capacity(mean_size);
+    let mut ends: Vec<usize> = Vec::with_capacity(mean_size);
     for (sole, start) in scene.soles.iter().zip(&starts) {
         let (d, map) = (sole.map.dimension, &sole.map);
         let (acting, theta) = start.map_or((at, map.theta), |start| (nv + end_size + start, 1.0));
@@ -120,7 +120,7 @@ pub fn response(question: &Question, scene: &Scene, torques: &[f64]) -> Result<R
             }
         }
         if start.is_some() {
-            soft.extend((0..d).map(|k| (sole, k, at + k)));
+            ends.extend(at..at + d);
             at += d;
             continue;
         }
@@ -137,7 +137,7 @@ pub fn response(question: &Question, scene: &Scene, torques: &[f64]) -> Result<R
         at += d;
     }
     if let Some(map) = &scene.coupled {
-        coupled_rows(map, &soft, (nv, nv + end_size, unit), &mut matrix, &mut right);
+        coupled_rows(map, &ends, (nv, nv + end_size, unit), &mut matrix, &mut right);
     }
     let solution = matrix.lu().solve(&right).filter(|x| x.iter().all(|v| v.is_finite())).ok_or(Trouble::Latency)?;
     let (mut wrenches, mut over_tick) = (Vec::with_capacity(scene.soles.len()), Vec::with_capacity(scene.soles.len()));
@@ -153,30 +153,36 @@ pub fn response(question: &Question, scene: &Scene, torques: &[f64]) -> Result<R
     Ok(Response { acceleration: solution.rows(0, nv).into_owned(), wrenches, over_tick })
 }
 
-/// Rows of the coupled equality. `soft`: per coordinate, its sole, its part and its end column; `places`: number of accelerations, first
+/// Rows of the rule `held`. `ends`: the end-wrench column (and row) of each soft coordinate; `places`: number of accelerations, first
 /// average-wrench column (and row), unit of wrenches.
 fn coupled_rows(
-    map: &CoupledMap,
-    soft: &[(&SoleScene, usize, usize)],
+    rows: &CoupledRows,
+    ends: &[usize],
     places: (usize, usize, f64),
     matrix: &mut DMatrix<f64>,
     right: &mut DVector<f64>,
 ) {
     let (nv, mean, unit) = places;
-    for (i, (_, _, end_row)) in soft.iter().enumerate() {
-        let (mut mean_right, mut end_right) = (map.mean_right[i], map.end_right[i]);
-        for (l, (sole, k, end)) in soft.iter().enumerate() {
-            for j in 0..nv {
-                matrix[(mean + i, j)] += map.mean_acceleration[(i, l)] * sole.jacobian[(*k, j)];
-                matrix[(*end_row, j)] += map.end_acceleration[(i, l)] * sole.jacobian[(*k, j)];
-            }
-            mean_right -= map.mean_acceleration[(i, l)] * sole.bias_acceleration[*k];
-            end_right -= map.end_acceleration[(i, l)] * sole.bias_acceleration[*k];
-            matrix[(mean + i, mean + l)] = map.mean_mean[(i, l)] * unit;
-            matrix[(*end_row, mean + l)] = map.end_mean[(i, l)] * unit;
-            matrix[(*end_row, *end)] = map.end_end[(i, l)] * unit;
+    for (i, &end_row) in ends.iter().enumerate() {
+        for j in 0..nv {
+            matrix[(mean + i, j)] = rows.mean_acceleration[(i, j)];
+            matrix[(end_row, j)] = rows.end_acceleration[(i, j)];
         }
-        right[mean + i] = mean_right;
-        right[*end_row] = end_right;
+        for (l, &end) in ends.iter().enumerate() {
+            matrix[(mean + i, mean + l)] = rows.mean_mean[(i, l)] * unit;
+            matrix[(end_row, mean + l)] = rows.end_mean[(i, l)] * unit;
+            matrix[(end_row, end)] = rows.end_end[(i, l)] * unit;
+        }
+        right[mean + i] = rows.mean_right[i];
+        right[end_row] = rows.end_right[i];
+    }
+    for (f, &row) in rows.damped.iter().enumerate() {
+        for j in 0..nv {
+            matrix[(row, j)] -= rows.friction_acceleration[(f, j)];
+        }
+        for l in 0..ends.len() {
+            matrix[(row, mean + l)] -= rows.friction_mean[(f, l)] * unit;
+        }
+        right[row] += rows.friction_right[f];
     }
 }
