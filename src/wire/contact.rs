@@ -190,6 +190,11 @@ pub(super) struct Scene<'a> {
 }
 
 impl ContactBody {
+    /// Name of the sole.
+    pub(super) fn sole(&self) -> &str {
+        &self.sole
+    }
+
     /// The contact; none where something that everything else hangs on is wrong.
     pub(super) fn read(&self, gate: &mut Gate, at: At<'_>, scene: &Scene<'_>) -> Option<Contact> {
         let Some(index) = scene.model.sole(&self.sole) else {

@@ -12,8 +12,19 @@ use super::refusal::{Fault, Refusal};
 /// The deepest nesting of arrays and objects in a request.
 const MAX_DEPTH: usize = 32;
 
+/// Values (of any kind) that are looked at one by one; a larger document is not.
+const MAX_VALUES: usize = 100_000;
+
+/// Why a body gave no value.
+pub(super) enum Failure {
+    /// It is refused.
+    Refused(Refusal),
+    /// It holds more values than are looked at one by one.
+    TooManyValues,
+}
+
 /// The value of a request body.
-pub(super) fn parse(body: &[u8]) -> Result<Value, Refusal> {
+pub(super) fn parse(body: &[u8]) -> Result<Value, Failure> {
     let mut trail = Trail::default();
     let mut json = serde_json::Deserializer::from_slice(body);
     let read = Build(&mut trail).deserialize(&mut json).and_then(|value| {
@@ -21,9 +32,10 @@ pub(super) fn parse(body: &[u8]) -> Result<Value, Refusal> {
         json.end().map(|()| value)
     });
     match read {
-        Err(_) if trail.too_deep => Err(too_deep(&trail)),
-        Err(error) => Err(not_json(&trail, &error)),
-        Ok(_) if !trail.duplicates.is_empty() => Err(duplicates(trail.duplicates)),
+        Err(_) if trail.values > MAX_VALUES => Err(Failure::TooManyValues),
+        Err(_) if trail.too_deep => Err(Failure::Refused(too_deep(&trail))),
+        Err(error) => Err(Failure::Refused(not_json(&trail, &error))),
+        Ok(_) if !trail.duplicates.is_empty() => Err(Failure::Refused(duplicates(trail.duplicates))),
         Ok(value) => Ok(value),
     }
 }
@@ -83,6 +95,7 @@ struct Trail {
     steps: Vec<String>,
     duplicates: Vec<String>,
     too_deep: bool,
+    values: usize,
 }
 
 impl Trail {
@@ -107,6 +120,10 @@ impl<'de> DeserializeSeed<'de> for Build<'_> {
     type Value = Value;
 
     fn deserialize<D: Deserializer<'de>>(self, deserializer: D) -> Result<Value, D::Error> {
+        self.0.values += 1;
+        if self.0.values > MAX_VALUES {
+            return Err(D::Error::custom("too many values"));
+        }
         deserializer.deserialize_any(self)
     }
 }
