@@ -353,3 +353,18 @@ pub struct Include {
     /// Mass matrix, bias, Jacobians.
     pub dynamics: bool,
 }
+
+/// What a dynamics request asks: rigid-body terms in one state.
+#[derive(Debug, Clone)]
+pub struct DynamicsQuestion {
+    /// The robot, carried loads included.
+    pub model: Arc<Model>,
+    /// Its state, base parts in world axes.
+    pub state: State,
+    /// The axes in which the user gives, and gets back, the base part of velocities.
+    pub velocity_axes: VelocityAxes,
+    /// Gravitational acceleration (m/s^2, world).
+    pub gravity: Vec3,
+    /// Frames (indices in `model.frames`) to report besides the soles, each at most once.
+    pub frames: Vec<usize>,
+}
