@@ -2,10 +2,13 @@
 
 use std::sync::Arc;
 use std::sync::atomic::AtomicBool;
-use std::time::Duration;
+use std::time::{Duration, Instant};
 
-use super::stand_in::Refusal;
+use super::models::Models;
+use super::settings::MODELS_KEPT;
+use super::stand_in as reference;
 use crate::reference::answer::Status;
+use crate::wire::{self, ModelSource, Refusal};
 
 /// What is asked for.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -44,21 +47,81 @@ pub trait Work: Send + Sync + 'static {
 }
 
 /// The real work, with the models registered so far.
-#[derive(Debug, Default)]
-pub struct Catalogue {}
+#[derive(Debug)]
+pub struct Catalogue {
+    models: Models,
+}
+
+impl Default for Catalogue {
+    fn default() -> Self {
+        Catalogue { models: Models::new(MODELS_KEPT) }
+    }
+}
 
 impl Work for Catalogue {
-    fn run(&self, _: Errand, _: &[u8], _: &Arc<AtomicBool>) -> Result<Document, Refusal> {
-        Err(Refusal {
-            status: 501,
-            code: "not-merged",
-            title: "not merged".into(),
-            detail: String::new(),
-            faults: Vec::new(),
-        })
+    fn run(&self, errand: Errand, body: &[u8], cancel: &Arc<AtomicBool>) -> Result<Document, Refusal> {
+        match errand {
+            Errand::Register => self.register(body),
+            Errand::Dynamics => self.dynamics(body),
+            Errand::Solve => self.solve(body, cancel),
+        }
     }
 
-    fn model(&self, _: &str) -> Option<Vec<u8>> {
-        None
+    fn model(&self, id: &str) -> Option<Vec<u8>> {
+        self.models.find(id).map(|model| wire::write_model(&model))
+    }
+}
+
+impl Catalogue {
+    fn register(&self, body: &[u8]) -> Result<Document, Refusal> {
+        let mut clock = Clock::start();
+        let model = Arc::new(wire::read_model(body)?);
+        clock.lap("read");
+        self.models.keep(Arc::clone(&model));
+        let body = wire::write_model(&model);
+        clock.lap("write");
+        Ok(Document { body, status: None, model: Some(model.id.clone()), timings: clock.laps })
+    }
+
+    fn dynamics(&self, body: &[u8]) -> Result<Document, Refusal> {
+        let mut clock = Clock::start();
+        let question = wire::read_dynamics(body, &self.models)?;
+        clock.lap("read");
+        let report = reference::dynamics(&question);
+        clock.lap("dynamics");
+        let body = wire::write_dynamics(&question, &report, &wire::fingerprint(body));
+        clock.lap("write");
+        Ok(Document { body, status: None, model: None, timings: clock.laps })
+    }
+
+    fn solve(&self, body: &[u8], cancel: &Arc<AtomicBool>) -> Result<Document, Refusal> {
+        let mut clock = Clock::start();
+        let question = wire::read_solve(body, &self.models)?;
+        clock.lap("read");
+        let answer = reference::solve(&question, cancel).map_err(|trouble| {
+            Refusal::new(422, "no-answer", "The question has no numerical answer", trouble.to_string())
+        })?;
+        clock.lap("solve");
+        let body = wire::write_answer(&question, &answer, &wire::fingerprint(body));
+        clock.lap("write");
+        Ok(Document { body, status: Some(answer.status), model: None, timings: clock.laps })
+    }
+}
+
+/// Named laps of one request.
+struct Clock {
+    last: Instant,
+    laps: Vec<(&'static str, Duration)>,
+}
+
+impl Clock {
+    fn start() -> Self {
+        Clock { last: Instant::now(), laps: Vec::new() }
+    }
+
+    fn lap(&mut self, name: &'static str) {
+        let now = Instant::now();
+        self.laps.push((name, now - self.last));
+        self.last = now;
     }
 }

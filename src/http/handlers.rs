@@ -1,7 +1,7 @@
 //! Thin handlers: bytes in, bytes out.
 
 use std::fmt::Write as _;
-use std::sync::Arc;
+use std::sync::{Arc, LazyLock};
 use std::time::Duration;
 
 use axum::body::Body;
@@ -13,8 +13,10 @@ use super::body::JsonBytes;
 use super::documents::{Document, Errand};
 use super::problem::Problem;
 use super::router::Shared;
+use crate::wire;
 
 const JSON: HeaderValue = HeaderValue::from_static("application/json");
+const SCHEMA_JSON: HeaderValue = HeaderValue::from_static("application/schema+json");
 const SERVER_TIMING: HeaderName = HeaderName::from_static("server-timing");
 
 /// `GET /health`.
@@ -48,6 +50,28 @@ pub async fn show_model(State(shared): State<Arc<Shared>>, Path(id): Path<String
             "no model with this id is kept here; send it again to /v1/models",
         )),
     }
+}
+
+/// `GET /schemas`.
+pub async fn schemas() -> Response {
+    let names: Vec<String> = wire::schema_names().iter().map(|name| format!("\"{name}\"")).collect();
+    json(StatusCode::OK, format!("{{\"schemas\":[{}]}}\n", names.join(",")))
+}
+
+/// `GET /schemas/{name}`.
+pub async fn schema(Path(name): Path<String>) -> Result<Response, Problem> {
+    let text = wire::schema(&name).ok_or_else(|| {
+        Problem::new(StatusCode::NOT_FOUND, "unknown-schema", "No such schema", "/schemas lists every name")
+    })?;
+    let mut response = json(StatusCode::OK, text);
+    response.headers_mut().insert(header::CONTENT_TYPE, SCHEMA_JSON);
+    Ok(response)
+}
+
+/// `GET /openapi.json`.
+pub async fn openapi() -> Response {
+    static TEXT: LazyLock<String> = LazyLock::new(wire::openapi);
+    json(StatusCode::OK, TEXT.as_str())
 }
 
 async fn run(shared: Arc<Shared>, errand: Errand, body: axum::body::Bytes) -> Result<Response, Problem> {

@@ -4,6 +4,7 @@ use std::collections::VecDeque;
 use std::sync::{Arc, Mutex, MutexGuard, PoisonError};
 
 use crate::model::Model;
+use crate::wire::ModelSource;
 
 /// Models by id, most recently used last.
 #[derive(Debug)]
@@ -16,15 +17,6 @@ impl Models {
     /// An empty cache for at most `most` models.
     pub fn new(most: usize) -> Self {
         Models { kept: Mutex::new(VecDeque::new()), most: most.max(1) }
-    }
-
-    /// The model with this id, which thereby becomes the most recently used.
-    pub fn find(&self, id: &str) -> Option<Arc<Model>> {
-        let mut kept = self.lock();
-        let at = kept.iter().position(|model| model.id == id)?;
-        let model = kept.remove(at)?;
-        kept.push_back(Arc::clone(&model));
-        Some(model)
     }
 
     /// Keeps a model; one with the same id has the same content, and only moves up.
@@ -40,6 +32,17 @@ impl Models {
     /// No code panics while it holds the lock; were it to happen, the list is whole all the same.
     fn lock(&self) -> MutexGuard<'_, VecDeque<Arc<Model>>> {
         self.kept.lock().unwrap_or_else(PoisonError::into_inner)
+    }
+}
+
+impl ModelSource for Models {
+    /// The model with this id, which thereby becomes the most recently used.
+    fn find(&self, id: &str) -> Option<Arc<Model>> {
+        let mut kept = self.lock();
+        let at = kept.iter().position(|model| model.id == id)?;
+        let model = kept.remove(at)?;
+        kept.push_back(Arc::clone(&model));
+        Some(model)
     }
 }
 

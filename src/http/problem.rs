@@ -12,7 +12,7 @@ use axum::http::{HeaderName, HeaderValue, Method, StatusCode, Uri, header};
 use axum::middleware::Next;
 use axum::response::{IntoResponse, Response};
 
-use super::stand_in::{Refusal, write_refusal};
+use crate::wire::{Refusal, write_refusal};
 
 /// Seconds after which a refused client may well try again.
 const RETRY_AFTER_SECONDS: u64 = 1;
@@ -34,13 +34,7 @@ impl From<Refusal> for Problem {
 impl Problem {
     /// A problem without offending members.
     pub fn new(status: StatusCode, code: &'static str, title: &str, detail: impl Into<String>) -> Self {
-        Problem::from(Refusal {
-            status: status.as_u16(),
-            code,
-            title: title.to_owned(),
-            detail: detail.into(),
-            faults: Vec::new(),
-        })
+        Problem::from(Refusal::new(status.as_u16(), code, title, detail))
     }
 }
 

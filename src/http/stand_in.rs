@@ -1,38 +1,36 @@
-//! Stand-ins with the signatures of `wire`, until that branch is merged.
+//! Stand-ins with the signatures of `reference`, until that module is there.
 
-/// One offending member.
-#[derive(Debug, Clone, PartialEq)]
-pub struct Fault {
-    /// JSON pointer.
-    pub pointer: String,
-    /// What was expected.
-    pub expected: String,
-    /// What came.
-    pub got: String,
-    /// Line of the description, where there is one.
-    pub line: Option<u32>,
+use std::sync::Arc;
+use std::sync::atomic::AtomicBool;
+
+use crate::problem::question::{DynamicsQuestion, Question};
+use crate::reference::answer::{Answer, DynamicsReport};
+
+/// Why there is no answer at all.
+#[derive(Debug, Clone, PartialEq, thiserror::Error)]
+#[error("not merged yet")]
+pub struct Trouble;
+
+/// From question to answer.
+pub fn solve(_: &Question, _: &Arc<AtomicBool>) -> Result<Answer, Trouble> {
+    Err(Trouble)
 }
 
-/// A request that cannot be served.
-#[derive(Debug, Clone, PartialEq)]
-pub struct Refusal {
-    /// HTTP status.
-    pub status: u16,
-    /// Stable short code.
-    pub code: &'static str,
-    /// Title.
-    pub title: String,
-    /// Detail.
-    pub detail: String,
-    /// Offending members.
-    pub faults: Vec<Fault>,
-}
-
-/// Writes a refusal.
-pub fn write_refusal(refusal: &Refusal, instance: &str) -> Vec<u8> {
-    format!(
-        "{{\"type\":\"about:blank\",\"title\":{:?},\"status\":{},\"detail\":{:?},\"instance\":{:?},\"code\":{:?}}}",
-        refusal.title, refusal.status, refusal.detail, instance, refusal.code
-    )
-    .into_bytes()
+/// Rigid-body terms.
+pub fn dynamics(_: &DynamicsQuestion) -> DynamicsReport {
+    DynamicsReport {
+        mass: 0.0,
+        velocities: vec![],
+        mass_matrix: vec![],
+        bias: vec![],
+        friction: vec![],
+        center_of_mass: Default::default(),
+        center_of_mass_velocity: Default::default(),
+        momentum: Default::default(),
+        momentum_matrix: vec![],
+        momentum_bias: Default::default(),
+        kinetic_energy: 0.0,
+        potential_energy: 0.0,
+        frames: vec![],
+    }
 }

@@ -49,7 +49,7 @@ impl Reply {
         assert_eq!(self.header("content-type"), Some("application/problem+json"));
         let json = self.json();
         assert_eq!(json["status"], status);
-        for member in ["type", "title", "detail", "instance"] {
+        for member in ["title", "detail", "instance"] {
             assert!(json[member].is_string(), "{member} in {json}");
         }
         json["code"].as_str().expect("a code").to_owned()
