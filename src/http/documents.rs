@@ -6,9 +6,9 @@ use std::time::{Duration, Instant};
 
 use super::models::Models;
 use super::settings::MODELS_KEPT;
-use super::stand_in as reference;
 use crate::reference::answer::Status;
-use crate::wire::{self, ModelSource, Refusal};
+use crate::reference::{self, Trouble};
+use crate::wire::{self, Fault, ModelSource, Refusal};
 
 /// What is asked for.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -98,14 +98,34 @@ impl Catalogue {
         let mut clock = Clock::start();
         let question = wire::read_solve(body, &self.models)?;
         clock.lap("read");
-        let answer = reference::solve(&question, cancel).map_err(|trouble| {
-            Refusal::new(422, "no-answer", "The question has no numerical answer", trouble.to_string())
-        })?;
+        let answer = reference::solve(&question, cancel).map_err(|trouble| refusal(&trouble))?;
+        if answer.status == Status::Cancelled {
+            return Err(Refusal::new(504, "time-limit", "Time limit reached", "the work was called off"));
+        }
         clock.lap("solve");
         let body = wire::write_answer(&question, &answer, &wire::fingerprint(body));
         clock.lap("write");
         Ok(Document { body, status: Some(answer.status), model: None, timings: clock.laps })
     }
+}
+
+/// A question that passed the gate and yet leads nowhere: the member at fault is named where there is one.
+fn refusal(trouble: &Trouble) -> Refusal {
+    let pointer = match (trouble, trouble.contact_index()) {
+        (_, Some(contact)) => format!("/contacts/{contact}"),
+        (Trouble::Latency, None) => "/latency".to_owned(),
+        (Trouble::Scene(_), None) => String::new(),
+        (Trouble::Solver(error), None) => {
+            tracing::error!(%error, "the assembled problem was refused");
+            return Refusal::new(500, "defect", "A defect of this service", trouble.to_string());
+        }
+    };
+    Refusal::unusable(vec![Fault {
+        pointer,
+        expected: "a state and ground from which an answer can be computed".to_owned(),
+        got: trouble.to_string(),
+        line: None,
+    }])
 }
 
 /// Named laps of one request.

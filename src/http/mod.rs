@@ -15,7 +15,6 @@ pub mod models;
 pub mod problem;
 pub mod router;
 pub mod settings;
-pub mod stand_in;
 pub mod stream;
 
 pub use background::Running;
