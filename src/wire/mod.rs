@@ -1,7 +1,25 @@
 //! The JSON documents and their conversion into domain types: the only gate for bad input, and
 //! the only module that knows serde.
 
+mod aim;
+mod canonical;
+mod common;
+mod contact;
+mod extras;
+mod friction;
+mod gate;
+mod kinds;
+mod limit;
+mod model;
+mod raw;
 mod refusal;
+mod schema;
+mod second;
+mod solve;
+mod state;
+mod strict;
+mod task;
+mod treatment;
 
 use std::sync::Arc;
 
@@ -9,7 +27,10 @@ use crate::model::Model;
 use crate::problem::question::{DynamicsQuestion, Question};
 use crate::reference::answer::{Answer, DynamicsReport};
 
+pub use canonical::{canonical, fingerprint};
 pub use refusal::{Fault, Refusal};
+pub use schema::{schema, schema_names};
+use second::Document;
 
 /// Where models registered earlier are kept.
 pub trait ModelSource {
@@ -17,19 +38,41 @@ pub trait ModelSource {
     fn find(&self, id: &str) -> Option<Arc<Model>>;
 }
 
+/// The largest request body (bytes).
+pub const MAX_BODY: usize = 4 * 1024 * 1024;
+
 /// Reads the body of `POST /v1/models`.
-pub fn read_model(_body: &[u8]) -> Result<Model, Refusal> {
-    Err(Refusal::new(503, "unavailable", "Not available", "models cannot be read yet"))
+///
+/// # Errors
+/// [`Refusal`] with every fault that was found.
+pub fn read_model(body: &[u8]) -> Result<Model, Refusal> {
+    typed::<model::ModelRequest>(body, Document::Model)?.read()
 }
 
 /// Reads the body of `POST /v1/solve`.
-pub fn read_solve(_body: &[u8], _models: &dyn ModelSource) -> Result<Question, Refusal> {
-    Err(Refusal::new(503, "unavailable", "Not available", "questions cannot be read yet"))
+///
+/// # Errors
+/// [`Refusal`] with every fault that was found; 404 where the model's id is not known.
+pub fn read_solve(body: &[u8], models: &dyn ModelSource) -> Result<Question, Refusal> {
+    typed::<solve::SolveRequest>(body, Document::Solve)?.read(models)
 }
 
 /// Reads the body of `POST /v1/dynamics`.
-pub fn read_dynamics(_body: &[u8], _models: &dyn ModelSource) -> Result<DynamicsQuestion, Refusal> {
-    Err(Refusal::new(503, "unavailable", "Not available", "questions cannot be read yet"))
+///
+/// # Errors
+/// [`Refusal`] with every fault that was found; 404 where the model's id is not known.
+pub fn read_dynamics(body: &[u8], models: &dyn ModelSource) -> Result<DynamicsQuestion, Refusal> {
+    typed::<solve::DynamicsRequest>(body, Document::Dynamics)?.read(models)
+}
+
+/// Typed straight from the bytes; only a body that fails is gone through a second time, for the
+/// sake of every fault's pointer.
+fn typed<T: serde::de::DeserializeOwned>(body: &[u8], document: Document) -> Result<T, Refusal> {
+    if body.len() > MAX_BODY {
+        let detail = format!("a request may have {MAX_BODY} bytes, this one has {}", body.len());
+        return Err(Refusal::new(413, "body-too-large", "The request is too large", detail));
+    }
+    strict::read(body).map_err(|error| second::refusal(document, body, &error))
 }
 
 /// The document that describes a model.
@@ -55,21 +98,6 @@ pub fn write_refusal(refusal: &Refusal, instance: &str) -> Vec<u8> {
         "instance": instance, "code": refusal.code,
     });
     document.to_string().into_bytes()
-}
-
-/// SHA-256 (hexadecimal) of the canonical request (RFC 8785) and the version of this crate.
-pub fn fingerprint(_body: &[u8]) -> String {
-    String::new()
-}
-
-/// The JSON Schema (draft 2020-12) of this name.
-pub fn schema(_name: &str) -> Option<String> {
-    None
-}
-
-/// Names that [`schema`] knows.
-pub fn schema_names() -> &'static [&'static str] {
-    &[]
 }
 
 /// The OpenAPI 3.1 description of the service.
