@@ -129,8 +129,14 @@ class Transport:
 
     @staticmethod
     def _exchange(connection: http.client.HTTPConnection, method: str, path: str, body: bytes | None, headers: dict[str, str]) -> Reply:
-        connection.request(method, path, body=body, headers=headers)
-        response = connection.getresponse()
+        try:
+            connection.request(method, path, body=body, headers=headers)
+        except (BrokenPipeError, ConnectionResetError):
+            # The service may have refused a body it did not want to read to its end: the refusal is worth reading.
+            # Where nothing is there to read, this raises what a stale connection raises.
+            response = connection.getresponse()
+        else:
+            response = connection.getresponse()
         try:
             content = response.read()
         except (OSError, http.client.HTTPException) as error:
