@@ -20,13 +20,15 @@ from dataclasses import dataclass, field
 import numpy as np
 import quadprog
 import qoco
-import scipy.linalg
+import scipy.optimize
 import scipy.sparse as sparse
 
 Array = np.ndarray
 RANK = 1e-9  # relative threshold of the rank decisions; the rows are scaled to order one
 PROXIMAL = 1e-6  # weight of the proximal term that makes a level strictly convex
 SWEEPS = 60  # bound on proximal steps
+ROOM = 1e-11  # by which the active-set solver sees limits relaxed
+FEASIBLE = 1e-8  # by which a limit that cannot move any more may be exceeded
 
 
 @dataclass
@@ -143,20 +145,75 @@ def solve(problem: Problem, method: str) -> Outcome:
     feasibility = np.abs(ea @ x0 - eb).max() if len(eb) else 0.0
     assert feasibility < 1e-9, f"the equalities contradict each other by {feasibility}"
     costs = []
-    x = x0
+    x, worst = x0, 0.0
     for number, (a, b, w) in enumerate(levels):
+        if z.shape[1] == 0:
+            costs.append(float((w * (a @ x - b) ** 2).sum()))
+            continue
         root = np.sqrt(w)[:, None]
         h_a, h_b = root * a @ z, (root[:, 0]) * (b - a @ x0)
-        y, exact = minimise(h_a, h_b, la @ z, lb - la @ x0, [(ba @ z, bb - ba @ x0) for ba, bb in blocks], z.T @ (x - x0), method)
+        inside = la @ z, lb - la @ x0, [(ba @ z, bb - ba @ x0) for ba, bb in blocks]
+        y, residual = minimise(h_a, h_b, *inside, z.T @ (x - x0), method)
+        worst = max(worst, residual)
         x = x0 + z @ y
         costs.append(float((w * (a @ x - b) ** 2).sum()))
         if number + 1 < len(levels):
-            # Freeze the residuals: stay on `a x = a x*`.
-            _, free = null_space(a @ z, np.zeros(len(b)))
+            # Freeze the residuals, and the faces of the limits that the optimum exposes.
+            held, la, lb, blocks = faces(h_a, h_b, inside, y, (la, lb, blocks))
+            frozen = np.vstack([root * a / max(1.0, float(root.max(initial=0.0))), held]) @ z
+            _, free = null_space(frozen, np.zeros(len(frozen)))
             x0, z = x, z @ free
-            if z.shape[1] == 0:
-                break
-    return Outcome(x[: problem.columns], costs, exact)
+    return Outcome(x[: problem.columns], costs, worst)
+
+
+def faces(a: Array, b: Array, inside, y: Array, outside) -> tuple[Array, Array, Array, list]:
+    """What every optimum of a level has in common besides the residuals, from one set of multipliers.
+
+    All optima are complementary to any optimal multiplier: a row with z > 0 is an equality; a cone block with z inside
+    the dual cone is at its apex; with z on its boundary it stays on the ray opposite. Returns the rows that must not
+    change any more, and the limits that remain.
+    """
+    la, lb, blocks = inside
+    rows, edge, apex = touching(la, lb, blocks, y, 1e-8)
+    cost = a.T @ (a @ y - b)
+    least = 1e-7 * max(1.0, float(np.abs(a.T @ b).max(initial=0.0)))
+    smooth = gradients(la, blocks, y, (rows, edge, []))
+    around = [_circle(len(blocks[i][0]) - 1) for i in apex]
+    generators = np.vstack([smooth] + [blocks[i][0][0] + d @ blocks[i][0][1:] for i, d in zip(apex, around)])
+    _, z = distance(generators, cost)
+    ola, olb, oblocks = outside
+    held = [ola[rows[z[: len(rows)] > least]]]
+    keep = np.ones(len(olb), bool)
+    keep[rows[z[: len(rows)] > least]] = False
+    more, remaining = [], list(oblocks)
+    for j, i in enumerate(edge):
+        if z[len(rows) + j] > least:
+            ba, bb = blocks[i]
+            s = bb - ba @ y
+            _ray(held, more, oblocks[i], s[1:] / np.linalg.norm(s[1:]))
+            remaining[i] = None
+    at = len(smooth)
+    for i, d in zip(apex, around):
+        part = z[at : at + len(d)]
+        at += len(d)
+        # Generator rows are -(1, d)' times the slack's gradient: the multiplier is the sum of (1, d).
+        top, side = float(part.sum()), part @ d
+        if top - np.linalg.norm(side) > least:
+            held.append(oblocks[i][0])
+            remaining[i] = None
+        elif top > least:
+            _ray(held, more, oblocks[i], -side / np.linalg.norm(side))
+            remaining[i] = None
+    new_la = np.vstack([ola[keep]] + [m[0][None, :] for m in more])
+    new_lb = np.concatenate([olb[keep], [m[1] for m in more]])
+    return np.vstack(held), new_la, new_lb, [r for r in remaining if r is not None]
+
+
+def _ray(held: list, more: list, block, direction: Array) -> None:
+    """The block's slack stays on the ray (1, direction): the rest is frozen, its length may not turn negative."""
+    ba, bb = block
+    held.append(ba[1:] - np.outer(direction, ba[0]))
+    more.append((ba[0], bb[0]))
 
 
 def minimise(a: Array, b: Array, la: Array, lb: Array, blocks, start: Array, method: str) -> tuple[Array, float]:
@@ -164,56 +221,90 @@ def minimise(a: Array, b: Array, la: Array, lb: Array, blocks, start: Array, met
 
     Where the cost is flat, a proximal term makes it strictly convex; the proximal steps are repeated until y rests.
     """
+    # Rows that what is frozen leaves no say in anything any more.
+    alive = np.abs(la).max(axis=1, initial=0.0) > RANK
+    assert (lb[~alive] > -FEASIBLE).all(), "a frozen limit is violated"
+    la, lb = la[alive], lb[alive]
+    blocks = [(ba, bb) for ba, bb in blocks if np.abs(ba).max(initial=0.0) > RANK]
     h = a.T @ a
     y = start.copy()
     curvature = max(1e-300, np.abs(np.diag(h)).max()) if len(h) else 1.0
+    dual = np.zeros(len(lb) + sum(len(bb) for _, bb in blocks))
     for _ in range(SWEEPS):
         p = h + PROXIMAL * curvature * np.eye(len(y))
         q = -(a.T @ b) - PROXIMAL * curvature * y
         last = y
-        y = quadratic(p, q, la, lb, blocks, method)
+        y, dual = quadratic(p, q, la, lb, blocks, method)
         if np.abs(y - last).max() < 1e-12 * max(1.0, np.abs(y).max()):
             break
-    return polish(a, b, la, lb, blocks, y)
+    return polish(a, b, la, lb, blocks, y, dual / curvature)
 
 
-def quadratic(p: Array, q: Array, la: Array, lb: Array, blocks, method: str) -> Array:
-    """One strictly convex program by the named solver."""
+def quadratic(p: Array, q: Array, la: Array, lb: Array, blocks, method: str) -> tuple[Array, Array]:
+    """One strictly convex program by the named solver: y and the multipliers, inequalities before blocks."""
     if method == "active set":
         assert not blocks, "the active-set solver takes pyramids only"
         if not len(lb):
-            return np.linalg.solve(p, -q)
-        return quadprog.solve_qp(p, -q, -la.T, -lb)[0]
+            return np.linalg.solve(p, -q), np.zeros(0)
+        # A hair of room, so that rounding does not make frozen limits contradict each other; polishing removes it.
+        out = quadprog.solve_qp(p, -q, -la.T, -(lb + ROOM))
+        return out[0], out[4]
     return cone_solver(p, q, la, lb, blocks)
 
 
-def cone_solver(p: Array, q: Array, la: Array, lb: Array, blocks) -> Array:
+def cone_solver(p: Array, q: Array, la: Array, lb: Array, blocks) -> tuple[Array, Array]:
     """The same by an interior-point conic solver."""
     g = np.vstack([la] + [ba for ba, _ in blocks]) if blocks else la
     hh = np.concatenate([lb] + [bb for _, bb in blocks]) if blocks else lb
     if not len(hh):
-        return np.linalg.solve(p, -q)
+        return np.linalg.solve(p, -q), np.zeros(0)
     sizes = np.array([len(bb) for _, bb in blocks], dtype=np.int32)
     solver = qoco.QOCO()
-    solver.setup(len(q), len(hh), 0, sparse.csc_matrix(np.triu(p)), q, None, None, sparse.csc_matrix(g), hh, len(lb), len(sizes), sizes, abstol=1e-10, reltol=1e-10, max_iters=200)
-    return np.array(solver.solve().x)
+    solver.setup(len(q), len(hh), 0, sparse.csc_matrix(np.triu(p)), q, None, None, sparse.csc_matrix(g), hh, len(lb), len(sizes), sizes, abstol=1e-11, reltol=1e-11, max_iters=200)
+    out = solver.solve()
+    return np.array(out.x), np.array(out.z)
 
 
-def polish(a: Array, b: Array, la: Array, lb: Array, blocks, y: Array) -> tuple[Array, float]:
-    """Newton on the optimality conditions of the active set found, kept only where it makes them hold better."""
+def polish(a: Array, b: Array, la: Array, lb: Array, blocks, y: Array, dual: Array) -> tuple[Array, float]:
+    """Newton on the optimality conditions of the active set found, kept only where it makes them hold better.
+
+    The active set is read off slacks and multipliers: whichever of a complementary pair is smaller is taken as zero.
+    For a cone block the pairs are the eigenvalues s0 -+ |s_bar| and z0 +- |z_bar|. Several weights of the comparison
+    are tried, for pairs in which both are small, and the slacks alone.
+    """
     best, score = y, optimality(a, b, la, lb, blocks, y)
-    for threshold in (1e-6, 1e-4, 1e-8):
-        trial = newton(a, b, la, lb, blocks, y, threshold)
+    guesses = [read_off(la, lb, blocks, y, weight * dual) for weight in (1.0, 1e-2, 1e2, 1e-4, 1e4)]
+    guesses += [touching(la, lb, blocks, y, threshold) for threshold in (1e-6, 1e-4, 1e-8)]
+    for guess in guesses:
+        trial = newton(a, b, blocks, y, la, lb, guess)
         if trial is None:
             continue
         trial_score = optimality(a, b, la, lb, blocks, trial)
         if trial_score < score:
             best, score = trial, trial_score
+        if score < 1e-11:
+            break
     return best, score
 
 
-def active(la: Array, lb: Array, blocks, y: Array, threshold: float):
-    """Rows at their bound, cone blocks on their boundary, cone blocks at the apex."""
+def read_off(la: Array, lb: Array, blocks, y: Array, dual: Array):
+    """Active rows, cone blocks on their boundary, cone blocks at the apex, from slacks and multipliers."""
+    rows = np.flatnonzero(lb - la @ y < dual[: len(lb)])
+    edge, apex = [], []
+    at = len(lb)
+    for i, (ba, bb) in enumerate(blocks):
+        s, z = bb - ba @ y, dual[at : at + len(bb)]
+        at += len(bb)
+        s_bar, z_bar = np.linalg.norm(s[1:]), np.linalg.norm(z[1:])
+        if s[0] + s_bar < z[0] - z_bar:
+            apex.append(i)
+        elif s[0] - s_bar < z[0] + z_bar:
+            edge.append(i)
+    return rows, edge, apex
+
+
+def touching(la: Array, lb: Array, blocks, y: Array, threshold: float):
+    """The same from the slacks alone."""
     rows = np.flatnonzero(lb - la @ y < threshold)
     edge, apex = [], []
     for i, (ba, bb) in enumerate(blocks):
@@ -225,26 +316,25 @@ def active(la: Array, lb: Array, blocks, y: Array, threshold: float):
     return rows, edge, apex
 
 
-def gradients(la: Array, blocks, y: Array, found) -> tuple[Array, Array]:
-    """Gradient rows of the active constraints g(y) <= 0 (cone edge: |s_bar| - s0), and the sum of no curvature."""
+def gradients(la: Array, blocks, y: Array, found) -> Array:
+    """Gradient rows of the active constraints g(y) <= 0; on a cone's boundary g = |s_bar| - s0, at its apex g = -s."""
     rows, edge, apex = found
     out = [la[rows]]
     for i in edge:
         ba, bb = blocks[i]
         s = bb - ba @ y
-        direction = s[1:] / np.linalg.norm(s[1:])
-        out.append((-(direction @ ba[1:]) + ba[0])[None, :])
+        direction = s[1:] / max(1e-300, np.linalg.norm(s[1:]))
+        out.append((ba[0] - direction @ ba[1:])[None, :])
     for i in apex:
         out.append(blocks[i][0])
     return np.vstack(out)
 
 
-def newton(a: Array, b: Array, la: Array, lb: Array, blocks, y: Array, threshold: float):
+def newton(a: Array, b: Array, blocks, y: Array, la: Array, lb: Array, found):
     """Solves the conditions of the active set; minimum-norm steps where they do not fix y."""
-    found = active(la, lb, blocks, y, threshold)
     rows, edge, apex = found
     h = a.T @ a
-    for _ in range(12):
+    for _ in range(15):
         g = gradients(la, blocks, y, found)
         value = [la[rows] @ y - lb[rows]]
         for i in edge:
@@ -261,51 +351,64 @@ def newton(a: Array, b: Array, la: Array, lb: Array, blocks, y: Array, threshold
         for j, i in enumerate(edge):
             ba, bb = blocks[i]
             s = bb - ba @ y
-            norm = np.linalg.norm(s[1:])
+            norm = max(1e-300, np.linalg.norm(s[1:]))
             d = s[1:] / norm
             curved += max(0.0, multiplier[len(rows) + j]) * ba[1:].T @ ((np.eye(len(d)) - np.outer(d, d)) / norm) @ ba[1:]
         k = np.block([[curved, g.T], [g, np.zeros((len(value), len(value)))]])
-        step = np.linalg.lstsq(k, -np.concatenate([cost, value]), rcond=1e-12)[0][: len(y)]
-        if not np.isfinite(step).all() or np.abs(step).max() > 1e3 * max(1.0, np.abs(y).max()):
+        if not np.isfinite(k).all():
+            return None
+        step = np.linalg.lstsq(k, np.concatenate([-cost, -value]), rcond=1e-13)[0][: len(y)]
+        if not np.isfinite(step).all() or np.abs(step).max(initial=0.0) > 1e3 * max(1.0, np.abs(y).max()):
             return None
         y = y + step
-        if np.abs(step).max() < 1e-14 * max(1.0, np.abs(y).max()):
+        if np.abs(step).max(initial=0.0) < 1e-14 * max(1.0, np.abs(y).max()):
             break
     return y
 
 
 def optimality(a: Array, b: Array, la: Array, lb: Array, blocks, y: Array) -> float:
-    """How far y is from the optimality conditions: infeasibility, and the distance of -gradient from the normal cone.
+    """How far y is from optimal: the larger of its infeasibility and the distance of -gradient from the normal cone.
 
-    The normal cone is spanned by nonnegative multiples of active rows (cone apex: any multiplier in the dual cone,
-    here sampled by its edge towards the gradient through a second-order projection is not needed: the apex multiplier
-    is found by least squares and checked for membership).
+    The normal cone is generated by the gradients of what touches; at a cone's apex by the edges of the dual cone, whose
+    circle is sampled and then refined around the edges in use, so that the distance found is never too small.
     """
-    from scipy.optimize import nnls
-
-    violation = max(0.0, float((la @ y - lb).max())) if len(lb) else 0.0
+    violation = max(0.0, float((la @ y - lb).max(initial=0.0)))
     for ba, bb in blocks:
         s = bb - ba @ y
         violation = max(violation, float(np.linalg.norm(s[1:]) - s[0]))
-    found = active(la, lb, blocks, y, 1e-7)
-    rows, edge, apex = found
+    rows, edge, apex = touching(la, lb, blocks, y, 1e-7)
     cost = a.T @ (a @ y - b)
-    scale = max(1.0, float(np.abs(a.T @ b).max())) if len(b) else 1.0
-    g = gradients(la, blocks, y, (rows, edge, []))
-    if apex:
-        # Dual cone of an apex block, approximated from inside by many of its edges: a generating set for nnls.
-        generators = []
-        for i in apex:
-            ba, _ = blocks[i]
-            for direction in _circle(len(ba) - 1):
-                generators.append(ba[0] + direction @ ba[1:])
-        g = np.vstack([g, np.array(generators)])
-    if len(g):
-        z, _ = nnls(g.T, -cost, maxiter=50 * max(10, len(g)))
-        stationarity = float(np.abs(cost + g.T @ z).max())
-    else:
-        stationarity = float(np.abs(cost).max()) if len(cost) else 0.0
-    return max(violation, stationarity / scale)
+    scale = max(1.0, float(np.abs(a.T @ b).max(initial=0.0)))
+    smooth = gradients(la, blocks, y, (rows, edge, []))
+    if not apex:
+        return max(violation, distance(smooth, cost)[0] / scale)
+    directions = [_circle(len(blocks[i][0]) - 1) for i in apex]
+    best = np.inf
+    for zoom in range(6):
+        generators = [smooth] + [blocks[i][0][0] + d @ blocks[i][0][1:] for i, d in zip(apex, directions)]
+        found, z = distance(np.vstack(generators), cost)
+        best = min(best, found)
+        if best < 1e-12 * scale:
+            break
+        at = len(smooth)
+        finer = []
+        for d in directions:
+            used = d[z[at : at + len(d)] > 0]
+            at += len(d)
+            near = used[:, None, :] + 0.01 * 0.1**zoom * _circle(d.shape[1])[:: 24 if d.shape[1] == 2 else 400][None]
+            near = near.reshape(-1, d.shape[1])
+            finer.append(np.vstack([d[::8], used, near / np.linalg.norm(near, axis=1)[:, None]]))
+        directions = finer
+    return max(violation, best / scale)
+
+
+def distance(generators: Array, cost: Array) -> tuple[float, Array]:
+    """Least distance (largest component) of -cost from nonnegative combinations of the generator rows."""
+    if not len(generators) or not len(cost):
+        return float(np.abs(cost).max(initial=0.0)), np.zeros(len(generators))
+    size = np.maximum(np.linalg.norm(generators, axis=1), 1e-300)
+    z, _ = scipy.optimize.nnls((generators / size[:, None]).T, -cost, maxiter=50 * (10 + len(generators)))
+    return float(np.abs(cost + generators.T @ (z / size)).max()), z
 
 
 def _circle(dimension: int) -> Array:
@@ -313,8 +416,7 @@ def _circle(dimension: int) -> Array:
     if dimension == 1:
         return np.array([[1.0], [-1.0]])
     if dimension == 2:
-        t = np.linspace(0, 2 * np.pi, 720, endpoint=False)
+        t = np.linspace(0, 2 * np.pi, 360, endpoint=False)
         return np.column_stack([np.cos(t), np.sin(t)])
-    rng = np.random.default_rng(0)
-    v = rng.normal(size=(4000, dimension))
+    v = np.random.default_rng(0).normal(size=(4000, dimension))
     return v / np.linalg.norm(v, axis=1)[:, None]

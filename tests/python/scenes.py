@@ -5,7 +5,8 @@ from __future__ import annotations
 from typing import Any
 
 import numpy as np
-from underfoot import build
+from underfoot import build, limits
+from underfoot import tasks as aims
 
 from cases import FOOT, Stance, walker_stance, walker_urdf
 
@@ -36,7 +37,7 @@ def tasks(stance: Stance, second_rate: bool = True, levels: bool = False) -> lis
     order = (1, 2, 3) if levels else (1, 1, 1)
     weights = (1.0, 1.0, 1.0) if levels else (1.0, 1e-2, 1e-4)
     if second_rate:
-        balance = build.momentum_second_rate(
+        balance = aims.momentum_second_rate(
             "balance",
             center=centre + [0.01, 0.005, 0],
             position_gain=512.0,
@@ -48,7 +49,7 @@ def tasks(stance: Stance, second_rate: bool = True, levels: bool = False) -> lis
             weight=weights[0],
         )
     else:
-        balance = build.momentum_rate(
+        balance = aims.momentum_rate(
             "balance",
             center=centre + [0.01, 0.005, 0],
             position_gain=20.0,
@@ -60,19 +61,19 @@ def tasks(stance: Stance, second_rate: bool = True, levels: bool = False) -> lis
         )
     return [
         balance,
-        build.posture("posture", [(n, q) for n, q in zip(names, stance.state.joints)], gains=(100.0, 20.0), scale=10.0, priority=order[1], weight=weights[1]),
-        build.effort("effort", [(n, 0.0) for n in names], scale=50.0, priority=order[2], weight=weights[2]),
+        aims.posture("posture", [(n, q) for n, q in zip(names, stance.state.joints)], gains=(100.0, 20.0), scale=10.0, priority=order[1], weight=weights[1]),
+        aims.effort("effort", [(n, 0.0) for n in names], scale=50.0, priority=order[2], weight=weights[2]),
     ]
 
 
 def standing(client, model, stance: Stance | None = None, *, ground=None, facets=None, levels=False, second_rate=True, length=TICK, rule="backward_euler", friction=0.6, state=None, include=()) -> dict[str, Any]:
-    """The walker on two feet. `ground`: a function from (sole position, share of the weight) to a ground."""
+    """The walker on two feet. `ground`: from sole position and share of the weight to members of the contact."""
     stance = stance or walker_stance()
     stance.put()
     weight = stance.robot.mass * 9.80665
 
     def carrying(position, load):
-        return build.bonded(**GROUND, rest=build.rest_carries([0, 0, load], [0, 0, 0]))
+        return {"law": build.bonded(**GROUND), "rest": build.rest_carries([0, 0, load])}
 
     ground = ground or carrying
     return build.request(
@@ -82,13 +83,13 @@ def standing(client, model, stance: Stance | None = None, *, ground=None, facets
         contacts=[
             build.contact(
                 name,
-                ground(sole[0], weight / 2),
+                **ground(sole[0], weight / 2),
                 friction=build.friction("wrench" if facets == "wrench" else "vertex", friction, facets=None if facets == "wrench" else facets, torsion=0.03 if facets == "wrench" else None),
                 normal_force=build.normal_force(least=5.0),
             )
             for name, sole in zip(SOLES, stance.soles())
         ],
-        limits=[build.torque_limit("torque", [(n, 150.0) for n in stance.robot.joints])],
+        limits=[limits.torque([(n, 150.0) for n in stance.robot.joints])],
         tasks=tasks(stance, second_rate, levels),
         include=list(include),
     )

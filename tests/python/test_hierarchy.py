@@ -9,9 +9,6 @@ import pytest
 
 from hierarchy import Level, Problem, Rows, solve
 
-EMPTY = np.zeros((0, 0))
-
-
 def level(a, b, soft=None, soft_weight=()):
     a = np.atleast_2d(np.asarray(a, float))
     n = a.shape[1]
@@ -75,3 +72,25 @@ def test_projection_on_a_cone():
     out = solve(problem(3, rows, [level(np.eye(3), [30, 40, 60])]), "cone")
     assert np.allclose(out.x, [20.4, 27.2, 68], atol=1e-8)
     assert out.residual < 1e-8
+
+
+@pytest.mark.parametrize("seed", range(6))
+def test_two_solvers_agree_on_random_pyramids(seed):
+    """Three levels, many degenerate facets, both methods: the same point, and both sets of conditions hold."""
+    rng = np.random.default_rng(seed)
+    n, contacts, facets = 20, 5, 8
+    cones, a, b = [("zero", 4)], [rng.normal(size=(4, n))], [rng.normal(size=4)]
+    for k in range(contacts):
+        rows = np.zeros((facets, n))
+        turn = 2 * np.pi * np.arange(facets) / facets
+        rows[:, 3 * k : 3 * k + 3] = np.column_stack([np.cos(turn), np.sin(turn), np.full(facets, -0.3)])
+        a.append(rows)
+        b.append(np.zeros(facets))
+        cones.append(("nonnegative", facets))
+    rows = Rows(np.vstack(a), np.concatenate(b), cones)
+    levels = [level(rng.normal(size=(6, n)), rng.normal(size=6)), level(rng.normal(size=(5, n)), rng.normal(size=5)), level(np.eye(n), np.zeros(n))]
+    one, two = (solve(problem(n, rows, levels), method) for method in ("active set", "cone"))
+    assert max(one.residual, two.residual) < 1e-9
+    assert np.allclose(one.x, two.x, atol=1e-9)
+    assert one.costs == pytest.approx(two.costs, abs=1e-9)
+

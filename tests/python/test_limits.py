@@ -28,13 +28,13 @@ def amounts(answer):
 
 def stiff(k):
     def ground(position, load):
-        return build.bonded(normal_stiffness=k, tangential_stiffness=k, normal_damping=0.01 * k, tangential_damping=0.01 * k, rest=build.rest_carries([0, 0, load], [0, 0, 0]))
+        return {"law": build.bonded(normal_stiffness=k, normal_damping=0.01 * k), "rest": build.rest_carries([0, 0, load])}
 
     return ground
 
 
 def gaps(client, walker, stance, rigid, first_rate):
-    reference = client.solve(scenes.standing(client, walker, stance, ground=lambda p, load: rigid, second_rate=not first_rate))
+    reference = client.solve(scenes.standing(client, walker, stance, ground=lambda p, load: {"law": rigid}, second_rate=not first_rate))
     assert reference.solved, reference.document
     out = []
     for k in (1e9, 1e10, 1e11, 1e12):
@@ -66,19 +66,15 @@ def test_stiff_ground_in_motion_is_the_stop(client, walker, row):
 
 def test_a_measured_wrench_equal_to_the_modelled_one_changes_nothing(client, walker, rng):
     stance = walker_stance(rng, speed=0.05, spread=0.05)
-    rests = {}
-
     def pose(position, load):
-        rests[tuple(position)] = position + [0.0, 0.0, 0.005]
-        return build.bonded(**scenes.GROUND, rest=build.rest_pose(position + [0.0, 0.0, 0.005], [0, 0, 0, 1]))
+        return {"law": build.bonded(**scenes.GROUND), "rest": build.rest_pose(position + [0.0, 0.0, 0.005])}
 
     first = client.solve(scenes.standing(client, walker, stance, ground=pose))
     assert first.torques is not None, first.document
     measured = iter([s.present for s in first.soles])
 
     def told(position, load):
-        w = next(measured)
-        return build.bonded(**scenes.GROUND, rest=build.rest_pose(position + [0.0, 0.0, 0.005], [0, 0, 0, 1]), measured=(w[:3], w[3:]))
+        return {**pose(position, load), "measured": next(measured)}
 
     second = client.solve(scenes.standing(client, walker, stance, ground=told))
     assert second.status == first.status

@@ -10,6 +10,7 @@ from __future__ import annotations
 import numpy as np
 import pytest
 from underfoot import build
+from underfoot import tasks as aims
 
 import plant
 from cases import FOOT, Stance, block_urdf, walker_stance, walker_urdf
@@ -26,7 +27,7 @@ def predicted(client, model, stance, rests, polygon_names, torques, length, rule
     """Asks the service for the wrench at the tick's end with the torques prescribed."""
     robot = stance.robot
     state = stance.state
-    tasks = [build.effort("given torques", [(n, t) for n, t in zip(robot.joints, torques)], must_hold=True)] if robot.joints else []
+    tasks = [aims.effort("given torques", [(n, t) for n, t in zip(robot.joints, torques)], must_hold=True)] if robot.joints else []
     answer = client.solve(
         build.request(
             model=model,
@@ -38,7 +39,7 @@ def predicted(client, model, stance, rests, polygon_names, torques, length, rule
             ),
             tick=build.tick(length, rule),
             contacts=[
-                build.contact(name, build.bonded(**GROUND, rest=build.rest_pose(position, [0, 0, 0, 1])))
+                build.contact(name, build.bonded(**GROUND), rest=build.rest_pose(position))
                 for name, position in zip(polygon_names, rests)
             ],
             tasks=tasks,

@@ -1,6 +1,6 @@
 """Client of Underfoot, the reference solver for legged robots on ground that gives."""
 
-from . import build
+from . import build, limits, tasks
 from .answer import Answer, Dynamics, FrameTerms, Sole, Task
 from .client import Client, Model
 from .errors import Busy, Fault, Garbled, NotFinite, Refused, UnderfootError, Unreachable
@@ -21,4 +21,6 @@ __all__ = [
     "UnderfootError",
     "Unreachable",
     "build",
+    "limits",
+    "tasks",
 ]

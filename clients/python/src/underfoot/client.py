@@ -7,6 +7,7 @@ from types import TracebackType
 from typing import Any, Mapping, Sequence
 
 from .answer import Answer, Dynamics, shaped
+from .build import FORMAT
 from .errors import Refused
 from .transport import Reply, Transport, segment
 
@@ -70,13 +71,13 @@ class Client:
         `urdf`: the text of the description. `soles`: see `build.sole` and `build.point_sole`. `joints`: what the
         URDF does not say, see `build.joint`. `fixed_base`: the base link is welded to the world.
         """
-        source: dict[str, Any] = {"urdf": urdf}
+        source: dict[str, Any] = {"format": FORMAT, "urdf": urdf}
         if soles:
             source["soles"] = list(soles)
         if joints:
             source["joints"] = list(joints)
         if fixed_base:
-            source["base"] = "fixed"
+            source["fixed_base"] = True
         model = _model(self._transport.post("/v1/models", source), source)
         self._sources[model.id] = source
         return model
@@ -87,12 +88,12 @@ class Client:
 
     def dynamics(self, model: Model | str | Mapping[str, Any], state: Mapping[str, Any], **more: Any) -> Dynamics:
         """Rigid-body terms of one state. `more`: further members of the request, e.g. `gravity=`, `frames=`."""
-        request = {"model": _reference(model), "state": state, **more}
+        request = {"format": FORMAT, "model": _reference(model), "state": state, **more}
         return Dynamics.read(self._post("/v1/dynamics", request, model).document())
 
     def solve(self, request: Mapping[str, Any] | None = None, /, **members: Any) -> Answer:
         """Solves a request: a whole document, or its members as keywords; a `Model` may stand for its id."""
-        document = {**(request or {}), **members}
+        document = {"format": FORMAT, **(request or {}), **members}
         model = document.get("model")
         if isinstance(model, Model):
             document["model"] = model.id
