@@ -1,5 +1,25 @@
 //! The robot as data: bodies, joints, frames and soles. Valid by construction once built.
 
+mod build;
+mod description;
+mod error;
+mod identity;
+mod loads;
+mod mass;
+mod options;
+mod settings;
+mod singular;
+mod tree;
+mod urdf;
+mod xml;
+
+pub use build::{MAX_MOVING_JOINTS, MAX_SOLES, read_urdf};
+pub use error::{Fault, ModelError, Subject};
+pub use loads::{Load, LoadError, with_loads};
+pub use options::{JointSpec, ModelOptions, SoleSpec};
+pub use urdf::MAX_LINKS;
+pub use xml::{MAX_ATTRIBUTES, MAX_DEPTH, MAX_NAMESPACES, MAX_NODES, MAX_URDF_BYTES};
+
 use crate::spatial::polygon::SoleShape;
 use crate::spatial::{Inertia, Pose, Twist, Vec3};
 

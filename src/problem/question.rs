@@ -353,3 +353,18 @@ pub struct Include {
     /// Mass matrix, bias, Jacobians.
     pub dynamics: bool,
 }
+
+/// A state whose rigid-body terms are wanted.
+#[derive(Debug, Clone)]
+pub struct DynamicsQuestion {
+    /// The robot.
+    pub model: Arc<Model>,
+    /// Its state, base parts in world axes.
+    pub state: State,
+    /// The axes in which the user works.
+    pub velocity_axes: VelocityAxes,
+    /// Gravitational acceleration (m/s^2, world).
+    pub gravity: Vec3,
+    /// Frames to report besides the soles.
+    pub frames: Vec<usize>,
+}

@@ -1,0 +1,168 @@
+//! One level as data: the conic program for the engine, and the same level in reduced coordinates.
+//!
+//! `minimise sum w (a x - b)^2 + sum v t^2` over the system and the level's soft limits. For the
+//! engine every x stays a variable, the residuals and slacks become variables with a diagonal cost.
+//! `t >= 0` needs no row: a negative t would only tighten the limit at a cost.
+
+use super::engine::Program;
+use super::system::{Entries, Kind, Reduced, ReducedBlock, System, blocks_of};
+use crate::conic::{Cone, ConicRows, Level, ResidualRows, SparseRows};
+
+/// The parts of a level that are solved for; the tie-break is a level without soft limits.
+#[derive(Clone, Copy)]
+pub(super) struct LevelData<'a> {
+    pub priority: u32,
+    pub residuals: &'a ResidualRows,
+    pub soft: Option<(&'a ConicRows, &'a [f64])>,
+}
+
+impl<'a> LevelData<'a> {
+    pub fn of(level: &'a Level) -> Self {
+        LevelData {
+            priority: level.priority,
+            residuals: &level.residuals,
+            soft: Some((&level.soft, level.soft_weight.as_slice())).filter(|(rows, _)| !rows.rhs.is_empty()),
+        }
+    }
+
+    pub fn tie_break(residuals: &'a ResidualRows) -> Self {
+        LevelData { priority: 0, residuals, soft: None }
+    }
+
+    /// Soft blocks as (first row, rows, kind), one per slack.
+    pub fn soft_blocks(&self) -> Vec<(usize, usize, Kind)> {
+        self.soft.map_or(Vec::new(), |(rows, _)| blocks_of(&rows.cones))
+    }
+}
+
+/// The level for the engine.
+pub(super) struct Assembled {
+    pub program: Program,
+    /// For each block of `Reduced` (hard, then soft), its first row in the program.
+    pub first: Vec<usize>,
+}
+
+/// Writes the level as one conic program in [x, r, t].
+pub(super) fn assemble(system: &System, data: &LevelData, reduced: &LevelProblem) -> Assembled {
+    let n = system.matrix.columns;
+    let residuals = data.residuals;
+    let m = residuals.rhs.len();
+    let weights = data.soft.map_or(&[][..], |(_, w)| w);
+    let mut rows = SparseRows::new(n + m + weights.len());
+    let mut rhs = Vec::new();
+    for &row in &system.pivots {
+        push(&mut rows, Entries::new(&system.matrix, row), None);
+        rhs.push(system.rhs[row]);
+    }
+    for i in 0..m {
+        push(&mut rows, Entries::new(&residuals.matrix, i), Some(n + i));
+        rhs.push(residuals.rhs[i]);
+    }
+    let mut cones = Vec::new();
+    if !rhs.is_empty() {
+        cones.push(Cone::Zero(rhs.len()));
+    }
+    let mut first = vec![0; reduced.sets.blocks.len()];
+    for kind in [Kind::Nonnegative, Kind::SecondOrder] {
+        let begin = rhs.len();
+        for (place, block) in reduced.sets.blocks.iter().enumerate().filter(|(_, b)| b.kind == kind) {
+            first[place] = rhs.len();
+            let (matrix, values, at, slack) = match (block.soft, data.soft) {
+                (Some(_), Some((soft, _))) => {
+                    (&soft.matrix, &soft.rhs, reduced.soft_first[block.block], Some(n + m + block.block))
+                }
+                _ => (&system.matrix, &system.rhs, system.blocks[block.block].first, None),
+            };
+            for k in 0..block.len {
+                push(&mut rows, Entries::new(matrix, at + k), slack.filter(|_| k == 0));
+                rhs.push(values[at + k]);
+            }
+            if kind == Kind::SecondOrder {
+                cones.push(Cone::SecondOrder(block.len));
+            }
+        }
+        if kind == Kind::Nonnegative && rhs.len() > begin {
+            cones.push(Cone::Nonnegative(rhs.len() - begin));
+        }
+    }
+    let mut diagonal = vec![0.0; n];
+    diagonal.extend(residuals.weight.iter().map(|w| 2.0 * w));
+    diagonal.extend(weights.iter().map(|w| 2.0 * w));
+    let linear = vec![0.0; diagonal.len()];
+    Assembled { program: Program { diagonal, linear, rows, rhs, cones }, first }
+}
+
+fn push(rows: &mut SparseRows, entries: Entries, minus: Option<usize>) {
+    for (j, v) in entries {
+        rows.index.push(j);
+        rows.value.push(v);
+    }
+    if let Some(j) = minus {
+        rows.index.push(j);
+        rows.value.push(-1.0);
+    }
+    rows.start.push(rows.index.len());
+}
+
+/// The level in u: `minimise |M u + at|^2 / 2 + sum v t^2` over blocks of which the last are soft.
+#[derive(Default)]
+pub(super) struct LevelProblem {
+    pub sets: Reduced,
+    /// First row of each soft block in the level's soft rows.
+    pub soft_first: Vec<usize>,
+    /// `sqrt(2 w) a N`, by rows.
+    pub residual: Vec<f64>,
+    /// `sqrt(2 w) (a x0 - b)`.
+    pub residual_at: Vec<f64>,
+    /// `sqrt(2 w) |a|`.
+    pub residual_length: Vec<f64>,
+    /// Largest `2 w |a|^2`, the natural size of a cost gradient; 1 where there are no residuals.
+    pub size: f64,
+}
+
+/// Reduces a level to the coordinates of the system.
+pub(super) fn reduce(system: &System, sets: Reduced, data: &LevelData) -> LevelProblem {
+    let d = sets.d;
+    let mut problem = LevelProblem { sets, ..LevelProblem::default() };
+    let residuals = data.residuals;
+    for i in 0..residuals.rhs.len() {
+        let root = (2.0 * residuals.weight[i]).sqrt();
+        let start = problem.residual.len();
+        problem.residual.resize(start + d, 0.0);
+        let out = &mut problem.residual[start..];
+        system.space.project(Entries::new(&residuals.matrix, i), out);
+        out.iter_mut().for_each(|v| *v *= root);
+        problem.residual_at.push(root * (residuals.matrix.row_dot(i, &system.x) - residuals.rhs[i]));
+        let length: f64 = residuals.matrix.row(i).map(|(_, v)| v * v).sum();
+        problem.residual_length.push(root * length.sqrt());
+        problem.size = problem.size.max(2.0 * residuals.weight[i] * length);
+    }
+    if let Some((soft, weights)) = data.soft {
+        for (index, (first, len, kind)) in data.soft_blocks().into_iter().enumerate() {
+            let sets = &mut problem.sets;
+            let at = sets.at.len();
+            for row in first..first + len {
+                let start = sets.gamma.len();
+                sets.gamma.resize(start + d, 0.0);
+                system.space.project(Entries::new(&soft.matrix, row), &mut sets.gamma[start..]);
+                sets.at.push(soft.rhs[row] - soft.matrix.row_dot(row, &system.x));
+                let length: f64 = soft.matrix.row(row).map(|(_, v)| v * v).sum();
+                sets.length.push(length.sqrt());
+                problem.size = problem.size.max(2.0 * weights[index] * length);
+            }
+            sets.blocks.push(ReducedBlock { block: index, first: at, len, kind, soft: Some(weights[index]) });
+            problem.soft_first.push(first);
+        }
+    }
+    if problem.size == 0.0 {
+        problem.size = 1.0;
+    }
+    problem
+}
+
+impl LevelProblem {
+    pub fn residual_row(&self, i: usize) -> &[f64] {
+        &self.residual[i * self.sets.d..(i + 1) * self.sets.d]
+    }
+}
+
