@@ -178,7 +178,9 @@ fn big_weights_tend_to_the_lexicographic_answer() {
                 one.soft_weight.extend(from.soft_weight.iter().map(|w| factor * w));
             }
             let joined = Hierarchy { levels: vec![one], ..problem.clone() };
-            answer(&joined)
+            let f = answer(&joined);
+            if std::env::var("DBG").is_ok() && seed == 7 { println!("{big:e} {:?} {:?}", f.levels[0].optimality, f.levels[0].refined); }
+            f
         };
         let (a, b) = (at(1e4), at(1e5));
         if a.status != Status::Solved || b.status != Status::Solved {
@@ -546,8 +548,8 @@ fn campaign() {
 #[test]
 #[ignore]
 fn look() {
-    for seed in [1190, 4453, 2353, 16492, 1370, 3083, 7046, 10466, 20900] {
-        let p = random_hierarchy(seed);
+    for (seed, tight) in [(16252, -1.0), (20900, -1.0), (10136, 1.0), (19446, 1.0)] {
+        let p = shaped_hierarchy(seed, tight);
         let f = answer(&p);
         println!("seed {seed} {:?} x {:?} bound {:e} hard faces {:?} cert {:?}\n   {:?} {:?}", f.status, f.x, f.bound, f.hard_faces, f.infeasibility, p.hard.cones, p.levels.iter().map(|l| l.soft.cones.clone()).collect::<Vec<_>>());
         for (l, o) in p.levels.iter().zip(&f.levels) {

@@ -2,8 +2,8 @@
 
 use super::answer::*;
 use super::check::check;
-use super::dense::{axpy, largest};
-use super::engine::{Ended, EngineAnswer, run};
+use super::dense::largest;
+use super::engine::{Ended, EngineAnswer, Program, run};
 use super::faces::{ensure_interior, exposed, interior_program, restrict};
 use super::free::free_directions;
 use super::infeasible::{certify, certify_equality, project_dual};
@@ -24,6 +24,12 @@ const ON_BOUNDARY: f64 = 1e-9;
 const ON_BOUNDARY_UNREFINED: f64 = 1e-5;
 /// Optimality that lets a level do without the engine.
 const WARM: f64 = 1e-12;
+/// Optimality that the engine's own point needs to be taken for the answer.
+const TRUSTED: f64 = 1e-7;
+/// A scaled point farther from the origin than this has run off along a direction that nothing bounds.
+const FAR: f64 = 1e4;
+/// Weight of the pull that holds such a point, of the cost's.
+const PULL: f64 = 1e-8;
 /// How often the first level is solved anew because its set had no interior.
 const MAX_RESTARTS: usize = 4;
 
@@ -60,6 +66,8 @@ struct Solved {
     point: Point,
     optimality: Optimality,
     refined: bool,
+    /// Refined, or at least the engine's own full accuracy.
+    trusted: bool,
     bound: f64,
     cost_pivot: f64,
     iterations: u32,
@@ -182,10 +190,13 @@ impl Cascade<'_> {
             let problem = reduce(&self.system, sets, data);
             let solved = match self.without_engine(&problem) {
                 Some(point) => Solved { problem, ..point },
-                None => self.with_engine(data, problem)?,
+                None => match self.with_engine(data, problem)? {
+                    Some(solved) => solved,
+                    None => continue,
+                },
             };
             if self.interior_known {
-                self.inaccurate |= !solved.refined && solved.optimality.worst() > CONFIRMED.sqrt();
+                self.inaccurate |= !solved.trusted;
                 return Ok(solved);
             }
             let before = self.system.x.clone();
@@ -198,11 +209,12 @@ impl Cascade<'_> {
                 return Err(self.contradicted(contradiction));
             }
             if interior.negative {
-                return Err(Stop::Infeasible(self.phase_one()?));
+                return Err(Stop::Infeasible(self.phase_one()?.0));
             }
             self.ill_posed |= interior.ill_posed;
             self.interior_known = true;
             if interior.faces.is_empty() {
+                self.inaccurate |= !solved.trusted;
                 self.system.x = before;
                 return Ok(solved);
             }
@@ -231,68 +243,100 @@ impl Cascade<'_> {
             point: refined.point,
             optimality: refined.optimality,
             refined: refined.confirmed,
+            trusted: refined.confirmed,
             bound: refined.bound,
             cost_pivot: refined.cost_pivot,
             iterations: 0,
         })
     }
 
-    fn with_engine(&mut self, data: &LevelData, problem: LevelProblem) -> Result<Solved, Stop> {
-        let assembled = assemble(&self.system, data, &problem);
-        let options = self.options;
-        let answer = run(&assembled.program, options.engine_tolerance, options.engine_iterations, self.cancel)?;
-        match answer.ended {
-            Ended::Cancelled => return Err(Stop::Cancelled),
-            Ended::Infeasible if !self.interior_known => return Err(self.infeasible(&problem, &assembled.first, &answer)?),
-            _ => {}
-        }
-        let mut step = answer.x[..self.system.x.len()].to_vec();
-        axpy(-1.0, &self.system.x, &mut step);
-        let u = self.system.space.reduce(&step);
-        let mut z = vec![0.0; problem.sets.at.len()];
-        for (block, &from) in problem.sets.blocks.iter().zip(&assembled.first) {
-            let part = &mut z[block.first..block.first + block.len];
-            part.copy_from_slice(&answer.z[from..from + block.len]);
-            project_dual(block.kind, part);
+    /// The engine, then Newton steps on what it identified. `None` where it saw no feasible point though there is one: the
+    /// system then stands at a better point to start from.
+    fn with_engine(&mut self, data: &LevelData, problem: LevelProblem) -> Result<Option<Solved>, Stop> {
+        let mut iterations = 0;
+        let mut trusted = false;
+        let (mut u, mut z) = (vec![0.0; problem.sets.d], vec![0.0; problem.sets.at.len()]);
+        for pull in [0.0, PULL] {
+            let assembled = assemble(&self.system, data, &problem, pull);
+            let answer = self.run(&assembled.program)?;
+            iterations += answer.iterations;
+            if answer.ended == Ended::Infeasible {
+                if self.interior_known {
+                    break;
+                }
+                return self.infeasible(&problem, &assembled.first, &answer).map(|()| None);
+            }
+            u = self.system.space.reduce(&answer.x[..self.system.x.len()]);
+            for (block, &from) in problem.sets.blocks.iter().zip(&assembled.first) {
+                let part = &mut z[block.first..block.first + block.len];
+                part.copy_from_slice(&answer.z[from..from + block.len]);
+                part.iter_mut().for_each(|v| *v *= problem.size);
+                project_dual(block.kind, part);
+            }
+            trusted = answer.ended == Ended::Solved;
+            // Along directions that nothing bounds an interior point runs far off; a slight pull holds it.
+            if largest(&u) <= FAR {
+                break;
+            }
         }
         let engine = optimality(&problem, &u, &z);
         let refined = refine(&problem, classify(&problem, u.clone(), z.clone()));
         if refined.confirmed && refined.optimality.worst() <= engine.worst() {
             let Refined { point, optimality, bound, cost_pivot, .. } = refined;
-            return Ok(Solved { problem, point, optimality, refined: true, bound, cost_pivot, iterations: answer.iterations });
+            return Ok(Some(Solved { problem, point, optimality, refined: true, trusted: true, bound, cost_pivot, iterations }));
         }
+        trusted &= engine.worst() <= TRUSTED;
         // Strong convexity in the weighted residuals: |M (u - u*)|^2 is at most the gap.
         let bound = (engine.worst() * problem.size * (1.0 + largest(&z) / problem.size)).sqrt();
         let modes = vec![Mode::Off; problem.sets.blocks.len()];
         let point = Point { u, z, modes };
-        Ok(Solved { problem, point, optimality: engine, refined: false, bound, cost_pivot: 1.0, iterations: answer.iterations })
+        Ok(Some(Solved { problem, point, optimality: engine, refined: false, trusted, bound, cost_pivot: 1.0, iterations }))
+    }
+
+    fn run(&self, program: &Program) -> Result<EngineAnswer, Stop> {
+        let answer = run(program, self.options.engine_tolerance, self.options.engine_iterations, self.cancel)?;
+        if answer.ended == Ended::Cancelled { Err(Stop::Cancelled) } else { Ok(answer) }
     }
 
     /// The engine says infeasible. Its multipliers are one certificate of many; the interior test's is the one with
-    /// the most negative value for its size, so it is preferred.
-    fn infeasible(&self, problem: &LevelProblem, first: &[usize], answer: &EngineAnswer) -> Result<Stop, Stop> {
-        if let Some(certificate) = self.phase_one()? {
-            return Ok(Stop::Infeasible(Some(certificate)));
+    /// the most negative value for its size, so it is preferred. Where neither proves anything and the interior test has
+    /// found a point, the system is moved there.
+    fn infeasible(&mut self, problem: &LevelProblem, first: &[usize], answer: &EngineAnswer) -> Result<(), Stop> {
+        let (certificate, point) = self.phase_one()?;
+        if certificate.is_some() {
+            return Err(Stop::Infeasible(certificate));
         }
         let mut z = vec![0.0; self.system.rhs.len()];
         for (block, &from) in problem.sets.blocks.iter().zip(first).filter(|(b, _)| b.soft.is_none()) {
             let at = self.system.blocks[block.block].first;
             z[at..at + block.len].copy_from_slice(&answer.z[from..from + block.len]);
         }
-        Ok(Stop::Infeasible(certify(&self.system, &self.hierarchy.hard, z)))
+        let certificate = certify(&self.system, &self.hierarchy.hard, z);
+        match point {
+            Some(u) if certificate.is_none() => {
+                self.system.space.add_expanded(&u, &mut self.system.x);
+                self.sets = None;
+                Ok(())
+            }
+            _ => Err(Stop::Infeasible(certificate)),
+        }
     }
 
-    /// `maximise t, s - t e in K` over the equalities: a negative optimum's dual is a certificate.
-    fn phase_one(&self) -> Result<Option<InfeasibilityCertificate>, Stop> {
+    /// `maximise t, s - t e in K` over the equalities: the dual of a negative optimum is a certificate; otherwise its
+    /// point satisfies the rows.
+    fn phase_one(&self) -> Result<(Option<InfeasibilityCertificate>, Option<Vec<f64>>), Stop> {
         let (sets, _) = self.system.clone().reduce();
-        let program = interior_program(&sets, &sets.blocks, false);
-        let answer = run(&program, self.options.engine_tolerance, self.options.engine_iterations, self.cancel)?;
+        let answer = self.run(&interior_program(&sets, &sets.blocks, false))?;
         let mut z = vec![0.0; self.system.rhs.len()];
         for block in &sets.blocks {
             let at = self.system.blocks[block.block].first;
             z[at..at + block.len].copy_from_slice(&answer.z[block.first..block.first + block.len]);
         }
-        Ok(certify(&self.system, &self.hierarchy.hard, z))
+        let certificate = certify(&self.system, &self.hierarchy.hard, z);
+        let mut u = answer.x;
+        let t = u.pop().unwrap_or(f64::NEG_INFINITY);
+        let usable = answer.ended != Ended::Infeasible && t > -CONFIRMED.sqrt() && largest(&u) <= FAR;
+        Ok((certificate, usable.then_some(u)))
     }
 
     fn move_to(&mut self, solved: &Solved) {
@@ -346,7 +390,7 @@ impl Cascade<'_> {
             multipliers: origin.iter().map(|&row| by_row[row]).collect(),
             soft_slack,
             soft_multipliers,
-            cost,
+            cost: cost + 0.0,
             residual,
             rank: Vec::new(),
             faces: Vec::new(),

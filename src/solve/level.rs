@@ -42,8 +42,10 @@ pub(super) struct Assembled {
     pub first: Vec<usize>,
 }
 
-/// Writes the level as one conic program in [x, r, t].
-pub(super) fn assemble(system: &System, data: &LevelData, reduced: &LevelProblem) -> Assembled {
+/// Writes the level as one conic program in [x - x0, r, t]; x0 satisfies the equalities, so that their right-hand sides
+/// vanish. The cost is divided by the problem's size, and so are the multipliers that come back. `pull` adds
+/// `pull |x - x0|^2 / 2` to it.
+pub(super) fn assemble(system: &System, data: &LevelData, reduced: &LevelProblem, pull: f64) -> Assembled {
     let n = system.matrix.columns;
     let residuals = data.residuals;
     let m = residuals.rhs.len();
@@ -52,11 +54,11 @@ pub(super) fn assemble(system: &System, data: &LevelData, reduced: &LevelProblem
     let mut rhs = Vec::new();
     for &row in &system.pivots {
         push(&mut rows, Entries::new(&system.matrix, row), None);
-        rhs.push(system.rhs[row]);
+        rhs.push(0.0);
     }
     for i in 0..m {
         push(&mut rows, Entries::new(&residuals.matrix, i), Some(n + i));
-        rhs.push(residuals.rhs[i]);
+        rhs.push(-reduced.residual_at[i] / (2.0 * residuals.weight[i]).sqrt());
     }
     let mut cones = Vec::new();
     if !rhs.is_empty() {
@@ -67,15 +69,15 @@ pub(super) fn assemble(system: &System, data: &LevelData, reduced: &LevelProblem
         let begin = rhs.len();
         for (place, block) in reduced.sets.blocks.iter().enumerate().filter(|(_, b)| b.kind == kind) {
             first[place] = rhs.len();
-            let (matrix, values, at, slack) = match (block.soft, data.soft) {
+            let (matrix, at, slack) = match (block.soft, data.soft) {
                 (Some(_), Some((soft, _))) => {
-                    (&soft.matrix, &soft.rhs, reduced.soft_first[block.block], Some(n + m + block.block))
+                    (&soft.matrix, reduced.soft_first[block.block], Some(n + m + block.block))
                 }
-                _ => (&system.matrix, &system.rhs, system.blocks[block.block].first, None),
+                _ => (&system.matrix, system.blocks[block.block].first, None),
             };
             for k in 0..block.len {
                 push(&mut rows, Entries::new(matrix, at + k), slack.filter(|_| k == 0));
-                rhs.push(values[at + k]);
+                rhs.push(reduced.sets.at[block.first + k]);
             }
             if kind == Kind::SecondOrder {
                 cones.push(Cone::SecondOrder(block.len));
@@ -85,9 +87,9 @@ pub(super) fn assemble(system: &System, data: &LevelData, reduced: &LevelProblem
             cones.push(Cone::Nonnegative(rhs.len() - begin));
         }
     }
-    let mut diagonal = vec![0.0; n];
-    diagonal.extend(residuals.weight.iter().map(|w| 2.0 * w));
-    diagonal.extend(weights.iter().map(|w| 2.0 * w));
+    let mut diagonal = vec![pull; n];
+    diagonal.extend(residuals.weight.iter().map(|w| 2.0 * w / reduced.size));
+    diagonal.extend(weights.iter().map(|w| 2.0 * w / reduced.size));
     let linear = vec![0.0; diagonal.len()];
     Assembled { program: Program { diagonal, linear, rows, rhs, cones }, first }
 }

@@ -1,1 +1,106 @@
-//! Placeholder; see DEVELOPERS.md.
+//! The JSON documents and their conversion into domain types: the only gate for bad input, and
+//! the only module that knows serde.
+
+mod aim;
+mod canonical;
+mod common;
+mod contact;
+mod extras;
+mod friction;
+mod gate;
+mod kinds;
+mod limit;
+mod model;
+mod raw;
+mod refusal;
+mod schema;
+mod second;
+mod solve;
+mod state;
+mod strict;
+mod task;
+mod treatment;
+
+use std::sync::Arc;
+
+use crate::model::Model;
+use crate::problem::question::{DynamicsQuestion, Question};
+use crate::reference::answer::{Answer, DynamicsReport};
+
+pub use canonical::{canonical, fingerprint};
+pub use refusal::{Fault, Refusal};
+pub use schema::{schema, schema_names};
+use second::Document;
+
+/// Where models registered earlier are kept.
+pub trait ModelSource {
+    /// The model with this id, if it is still kept.
+    fn find(&self, id: &str) -> Option<Arc<Model>>;
+}
+
+/// The largest request body (bytes).
+pub const MAX_BODY: usize = 4 * 1024 * 1024;
+
+/// Reads the body of `POST /v1/models`.
+///
+/// # Errors
+/// [`Refusal`] with every fault that was found.
+pub fn read_model(body: &[u8]) -> Result<Model, Refusal> {
+    typed::<model::ModelRequest>(body, Document::Model)?.read()
+}
+
+/// Reads the body of `POST /v1/solve`.
+///
+/// # Errors
+/// [`Refusal`] with every fault that was found; 404 where the model's id is not known.
+pub fn read_solve(body: &[u8], models: &dyn ModelSource) -> Result<Question, Refusal> {
+    typed::<solve::SolveRequest>(body, Document::Solve)?.read(models)
+}
+
+/// Reads the body of `POST /v1/dynamics`.
+///
+/// # Errors
+/// [`Refusal`] with every fault that was found; 404 where the model's id is not known.
+pub fn read_dynamics(body: &[u8], models: &dyn ModelSource) -> Result<DynamicsQuestion, Refusal> {
+    typed::<solve::DynamicsRequest>(body, Document::Dynamics)?.read(models)
+}
+
+/// Typed straight from the bytes; only a body that fails is gone through a second time, for the
+/// sake of every fault's pointer.
+fn typed<T: serde::de::DeserializeOwned>(body: &[u8], document: Document) -> Result<T, Refusal> {
+    if body.len() > MAX_BODY {
+        let detail = format!("a request may have {MAX_BODY} bytes, this one has {}", body.len());
+        return Err(Refusal::new(413, "body-too-large", "The request is too large", detail));
+    }
+    strict::read(body).map_err(|error| second::refusal(document, body, &error))
+}
+
+/// The document that describes a model.
+pub fn write_model(_model: &Model) -> Vec<u8> {
+    b"{}".to_vec()
+}
+
+/// The answer to a solve request.
+pub fn write_answer(_question: &Question, _answer: &Answer, _fingerprint: &str) -> Vec<u8> {
+    b"{}".to_vec()
+}
+
+/// The answer to a dynamics request.
+pub fn write_dynamics(_question: &DynamicsQuestion, _report: &DynamicsReport, _fingerprint: &str) -> Vec<u8> {
+    b"{}".to_vec()
+}
+
+/// The problem document (RFC 9457, `application/problem+json`) of a refusal; `instance` is the
+/// path of the request.
+pub fn write_refusal(refusal: &Refusal, instance: &str) -> Vec<u8> {
+    let document = serde_json::json!({
+        "title": refusal.title, "status": refusal.status, "detail": refusal.detail,
+        "instance": instance, "code": refusal.code,
+    });
+    document.to_string().into_bytes()
+}
+
+/// The OpenAPI 3.1 description of the service.
+pub fn openapi() -> String {
+    String::new()
+}
