@@ -269,7 +269,7 @@ impl Cascade<'_> {
             iterations += answer.iterations;
             if answer.ended == Ended::Infeasible {
                 if self.interior_known {
-                    break;
+                    continue;
                 }
                 return self.infeasible(&problem, &assembled.first, &answer).map(|()| None);
             }
@@ -337,17 +337,26 @@ impl Cascade<'_> {
     /// point satisfies the rows.
     fn phase_one(&self) -> Result<(Option<InfeasibilityCertificate>, Option<Vec<f64>>), Stop> {
         let (sets, _) = self.system.clone().reduce();
-        let answer = self.run(&interior_program(&sets, &sets.blocks, false))?;
-        let mut z = vec![0.0; self.system.rhs.len()];
-        for block in &sets.blocks {
-            let at = self.system.blocks[block.block].first;
-            z[at..at + block.len].copy_from_slice(&answer.z[block.first..block.first + block.len]);
+        let mut program = interior_program(&sets, &sets.blocks, false);
+        for pull in [0.0, PULL] {
+            program.diagonal[..sets.d].fill(pull);
+            let answer = self.run(&program)?;
+            let mut z = vec![0.0; self.system.rhs.len()];
+            for block in &sets.blocks {
+                let at = self.system.blocks[block.block].first;
+                z[at..at + block.len].copy_from_slice(&answer.z[block.first..block.first + block.len]);
+            }
+            let certificate = certify(&self.system, &self.hierarchy.hard, z);
+            if certificate.is_some() {
+                return Ok((certificate, None));
+            }
+            let mut u = answer.x;
+            let t = u.pop().unwrap_or(f64::NEG_INFINITY);
+            if answer.ended != Ended::Infeasible && t > -CONFIRMED.sqrt() && largest(&u) <= FAR {
+                return Ok((None, Some(u)));
+            }
         }
-        let certificate = certify(&self.system, &self.hierarchy.hard, z);
-        let mut u = answer.x;
-        let t = u.pop().unwrap_or(f64::NEG_INFINITY);
-        let usable = answer.ended != Ended::Infeasible && t > -CONFIRMED.sqrt() && largest(&u) <= FAR;
-        Ok((certificate, usable.then_some(u)))
+        Ok((None, None))
     }
 
     fn move_to(&mut self, solved: &Solved) {
