@@ -181,7 +181,7 @@ fn big_weights_tend_to_the_lexicographic_answer() {
             let joined = Hierarchy { levels: vec![one], ..problem.clone() };
             answer(&joined)
         };
-        let (a, b) = if problem.levels.len() == 2 { (at(1e5), at(1e6)) } else { (at(1e3), at(1e4)) };
+        let (a, b) = if problem.levels.len() == 2 { (at(1e4), at(1e5)) } else { (at(1e3), at(1e4)) };
         if a.status != Status::Solved || b.status != Status::Solved {
             continue;
         }

@@ -22,6 +22,10 @@ const EXPOSING_UNREFINED: f64 = 1e-5;
 const ON_BOUNDARY: f64 = 1e-9;
 /// The same where the point is the engine's own.
 const ON_BOUNDARY_UNREFINED: f64 = 1e-5;
+/// Rounds of taking rows into the active set and out of it, from the engine's point.
+const ROUNDS: usize = 24;
+/// The same without the engine: beyond a few, the engine is quicker.
+const WARM_ROUNDS: usize = 5;
 /// Optimality that lets a level do without the engine.
 const WARM: f64 = 1e-12;
 /// Optimality that the engine's own point needs to be taken for the answer.
@@ -237,7 +241,7 @@ impl Cascade<'_> {
             z: vec![0.0; problem.sets.at.len()],
             modes: vec![Mode::Off; problem.sets.blocks.len()],
         };
-        let refined = refine(problem, start);
+        let refined = refine(problem, start, if unconstrained { 1 } else { WARM_ROUNDS });
         ((refined.confirmed && refined.optimality.worst() <= WARM) || unconstrained).then(|| Solved {
             problem: LevelProblem::default(),
             point: refined.point,
@@ -265,7 +269,7 @@ impl Cascade<'_> {
             iterations += answer.iterations;
             if answer.ended == Ended::Infeasible {
                 if self.interior_known {
-                    break;
+                    continue;
                 }
                 return self.infeasible(&problem, &assembled.first, &answer).map(|()| None);
             }
@@ -277,7 +281,7 @@ impl Cascade<'_> {
             for (block, &from) in problem.sets.blocks.iter().zip(&assembled.first) {
                 let part = &mut z[block.first..block.first + block.len];
                 part.copy_from_slice(&answer.z[from..from + block.len]);
-                part.iter_mut().for_each(|v| *v *= problem.size);
+                part.iter_mut().for_each(|v| *v *= problem.scale);
                 project_dual(block.kind, part);
             }
             trusted = answer.ended == Ended::Solved;
@@ -287,7 +291,7 @@ impl Cascade<'_> {
             }
         }
         let engine = optimality(&problem, &u, &z);
-        let refined = refine(&problem, classify(&problem, u.clone(), z.clone()));
+        let refined = refine(&problem, classify(&problem, u.clone(), z.clone()), ROUNDS);
         if refined.confirmed && refined.optimality.worst() <= engine.worst() {
             let Refined { point, optimality, bound, cost_pivot, .. } = refined;
             return Ok(Some(Solved { problem, point, optimality, refined: true, trusted: true, bound, cost_pivot, iterations }));
@@ -333,17 +337,26 @@ impl Cascade<'_> {
     /// point satisfies the rows.
     fn phase_one(&self) -> Result<(Option<InfeasibilityCertificate>, Option<Vec<f64>>), Stop> {
         let (sets, _) = self.system.clone().reduce();
-        let answer = self.run(&interior_program(&sets, &sets.blocks, false))?;
-        let mut z = vec![0.0; self.system.rhs.len()];
-        for block in &sets.blocks {
-            let at = self.system.blocks[block.block].first;
-            z[at..at + block.len].copy_from_slice(&answer.z[block.first..block.first + block.len]);
+        let mut program = interior_program(&sets, &sets.blocks, false);
+        for pull in [0.0, PULL] {
+            program.diagonal[..sets.d].fill(pull);
+            let answer = self.run(&program)?;
+            let mut z = vec![0.0; self.system.rhs.len()];
+            for block in &sets.blocks {
+                let at = self.system.blocks[block.block].first;
+                z[at..at + block.len].copy_from_slice(&answer.z[block.first..block.first + block.len]);
+            }
+            let certificate = certify(&self.system, &self.hierarchy.hard, z);
+            if certificate.is_some() {
+                return Ok((certificate, None));
+            }
+            let mut u = answer.x;
+            let t = u.pop().unwrap_or(f64::NEG_INFINITY);
+            if answer.ended != Ended::Infeasible && t > -CONFIRMED.sqrt() && largest(&u) <= FAR {
+                return Ok((None, Some(u)));
+            }
         }
-        let certificate = certify(&self.system, &self.hierarchy.hard, z);
-        let mut u = answer.x;
-        let t = u.pop().unwrap_or(f64::NEG_INFINITY);
-        let usable = answer.ended != Ended::Infeasible && t > -CONFIRMED.sqrt() && largest(&u) <= FAR;
-        Ok((certificate, usable.then_some(u)))
+        Ok((None, None))
     }
 
     fn move_to(&mut self, solved: &Solved) {

@@ -44,7 +44,7 @@ pub(super) struct Assembled {
 }
 
 /// Writes the level as one conic program in [x - x0, r, t]; x0 satisfies the equalities, so that their right-hand sides
-/// vanish. The cost is divided by the problem's size, and so are the multipliers that come back. `pull` adds
+/// vanish. The cost is divided by the problem's scale, and so are the multipliers that come back. `pull` adds
 /// `pull |x - x0|^2 / 2` to it.
 pub(super) fn assemble(system: &System, data: &LevelData, reduced: &LevelProblem, pull: f64) -> Assembled {
     let n = system.matrix.columns;
@@ -89,8 +89,8 @@ pub(super) fn assemble(system: &System, data: &LevelData, reduced: &LevelProblem
         }
     }
     let mut diagonal = vec![pull; n];
-    diagonal.extend(residuals.weight.iter().map(|w| 2.0 * w / reduced.size));
-    diagonal.extend(weights.iter().map(|w| 2.0 * w / reduced.size));
+    diagonal.extend(residuals.weight.iter().map(|w| 2.0 * w / reduced.scale));
+    diagonal.extend(weights.iter().map(|w| 2.0 * w / reduced.scale));
     let linear = vec![0.0; diagonal.len()];
     Assembled { program: Program { diagonal, linear, rows, rhs, cones }, first }
 }
@@ -100,7 +100,7 @@ pub(super) fn assemble(system: &System, data: &LevelData, reduced: &LevelProblem
 pub(super) fn assemble_reduced(reduced: &LevelProblem, pull: f64) -> Assembled {
     let sets = &reduced.sets;
     let d = sets.d;
-    let root = reduced.size.sqrt();
+    let root = reduced.scale.sqrt();
     let (cost_rows, cost_at) = compressed(reduced);
     let m = cost_at.len();
     let slacks = reduced.soft_first.len();
@@ -124,7 +124,7 @@ pub(super) fn assemble_reduced(reduced: &LevelProblem, pull: f64) -> Assembled {
             first[place] = rhs.len();
             for i in block.first..block.first + block.len {
                 let slack = block.soft.filter(|_| i == block.first).map(|weight| {
-                    diagonal[d + m + block.block] = 2.0 * weight / reduced.size;
+                    diagonal[d + m + block.block] = 2.0 * weight / reduced.scale;
                     (d + m + block.block, -1.0)
                 });
                 rows.push(sets.row(i).iter().copied().enumerate().chain(slack));
@@ -197,6 +197,9 @@ pub(super) struct LevelProblem {
     pub residual_length: Vec<f64>,
     /// Largest `2 w |a|^2`, the natural size of a cost gradient; 1 where there are no residuals.
     pub size: f64,
+    /// What the cost is divided by for the engine: the geometric mean of the largest and the smallest `2 w`, so that within a
+    /// wide range of weights the small ones are not lost under the engine's tolerance.
+    pub scale: f64,
 }
 
 /// Reduces a level to the coordinates of the system.
@@ -236,6 +239,9 @@ pub(super) fn reduce(system: &System, sets: Reduced, data: &LevelData) -> LevelP
     if problem.size == 0.0 {
         problem.size = 1.0;
     }
+    let weights = residuals.weight.iter().chain(data.soft.map_or(&[][..], |(_, w)| w));
+    let (least, most) = weights.fold((f64::INFINITY, 0.0f64), |(a, b), &w| (a.min(w), b.max(w)));
+    problem.scale = if most > 0.0 { 2.0 * least.sqrt() * most.sqrt() } else { 1.0 };
     problem
 }
 
