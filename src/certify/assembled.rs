@@ -14,6 +14,7 @@
 
 use nalgebra::{DMatrix, DVector};
 
+use super::friction::spread;
 use super::physics::{PHYSICS_BOUND, gathered, vertex_arms};
 use super::rows::row_size;
 use super::situation::Situation;
@@ -21,7 +22,6 @@ use super::worst::Worst;
 use super::{Check, Claim};
 use crate::conic::Hierarchy;
 use crate::contact::Law;
-use crate::problem::question::FrictionSet;
 use crate::spatial::{Twist, Vec3, Vec6, Wrench};
 
 /// Points at which rows are compared, beside the answer.
@@ -230,7 +230,7 @@ impl Probe<'_> {
 
     fn vertices(&self, i: usize, worst: &mut Worst) {
         let contact = &self.situation.question.contacts[i];
-        if !matches!(contact.friction, Some(f) if f.set == FrictionSet::Vertex) {
+        if !spread(self.situation, contact) {
             return;
         }
         let arms = vertex_arms(self.situation, contact);
