@@ -7,7 +7,7 @@ use super::engine::{Ended, EngineAnswer, Program, run};
 use super::faces::{ensure_interior, exposed, interior_program, restrict};
 use super::free::free_directions;
 use super::infeasible::{certify, certify_equality, project_dual};
-use super::level::{LevelData, LevelProblem, assemble, reduce};
+use super::level::{LevelData, LevelProblem, assemble, assemble_reduced, reduce};
 use super::refine::{CONFIRMED, Mode, Point, Refined, classify, optimality, refine};
 use super::system::{Contradiction, DEPENDENT, DEPENDENT_FACE, Kind, Reduced, System};
 use crate::conic::Hierarchy;
@@ -257,7 +257,10 @@ impl Cascade<'_> {
         let mut trusted = false;
         let (mut u, mut z) = (vec![0.0; problem.sets.d], vec![0.0; problem.sets.at.len()]);
         for pull in [0.0, PULL] {
-            let assembled = assemble(&self.system, data, &problem, pull);
+            // The first level is sparse; later ones have little freedom left and frozen rows that fill the matrix.
+            let reduced = self.interior_known;
+            let assembled =
+                if reduced { assemble_reduced(&problem, pull) } else { assemble(&self.system, data, &problem, pull) };
             let answer = self.run(&assembled.program)?;
             iterations += answer.iterations;
             if answer.ended == Ended::Infeasible {
@@ -266,7 +269,11 @@ impl Cascade<'_> {
                 }
                 return self.infeasible(&problem, &assembled.first, &answer).map(|()| None);
             }
-            u = self.system.space.reduce(&answer.x[..self.system.x.len()]);
+            u = if reduced {
+                answer.x[..problem.sets.d].to_vec()
+            } else {
+                self.system.space.reduce(&answer.x[..self.system.x.len()])
+            };
             for (block, &from) in problem.sets.blocks.iter().zip(&assembled.first) {
                 let part = &mut z[block.first..block.first + block.len];
                 part.copy_from_slice(&answer.z[from..from + block.len]);

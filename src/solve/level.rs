@@ -5,6 +5,7 @@
 //! `t >= 0` needs no row: a negative t would only tighten the limit at a cost.
 
 use super::engine::Program;
+use super::rank::Factor;
 use super::system::{Entries, Kind, Reduced, ReducedBlock, System, blocks_of};
 use crate::conic::{Cone, ConicRows, Level, ResidualRows, SparseRows};
 
@@ -92,6 +93,82 @@ pub(super) fn assemble(system: &System, data: &LevelData, reduced: &LevelProblem
     diagonal.extend(weights.iter().map(|w| 2.0 * w / reduced.size));
     let linear = vec![0.0; diagonal.len()];
     Assembled { program: Program { diagonal, linear, rows, rhs, cones }, first }
+}
+
+/// Writes the level as one conic program in [u, r, t]: no equalities but the residuals' own, so that nothing hangs on how well
+/// the frozen rows are conditioned. Residuals are turned into at most d rows first; their sum of squares changes by a constant.
+pub(super) fn assemble_reduced(reduced: &LevelProblem, pull: f64) -> Assembled {
+    let sets = &reduced.sets;
+    let d = sets.d;
+    let root = reduced.size.sqrt();
+    let (cost_rows, cost_at) = compressed(reduced);
+    let m = cost_at.len();
+    let slacks = reduced.soft_first.len();
+    let mut rows = SparseRows::new(d + m + slacks);
+    let mut rhs = Vec::new();
+    for i in 0..m {
+        rows.push((0..d).map(|j| (j, cost_rows[i * d + j] / root)).chain([(d + i, -1.0)]));
+        rhs.push(-cost_at[i] / root);
+    }
+    let mut cones = Vec::new();
+    if m > 0 {
+        cones.push(Cone::Zero(m));
+    }
+    let mut first = vec![0; sets.blocks.len()];
+    let mut diagonal = vec![pull; d];
+    diagonal.resize(d + m, 1.0);
+    diagonal.resize(d + m + slacks, 0.0);
+    for kind in [Kind::Nonnegative, Kind::SecondOrder] {
+        let begin = rhs.len();
+        for (place, block) in sets.blocks.iter().enumerate().filter(|(_, b)| b.kind == kind) {
+            first[place] = rhs.len();
+            for i in block.first..block.first + block.len {
+                let slack = block.soft.filter(|_| i == block.first).map(|weight| {
+                    diagonal[d + m + block.block] = 2.0 * weight / reduced.size;
+                    (d + m + block.block, -1.0)
+                });
+                rows.push(sets.row(i).iter().copied().enumerate().chain(slack));
+                rhs.push(sets.at[i]);
+            }
+            if kind == Kind::SecondOrder {
+                cones.push(Cone::SecondOrder(block.len));
+            }
+        }
+        if kind == Kind::Nonnegative && rhs.len() > begin {
+            cones.push(Cone::Nonnegative(rhs.len() - begin));
+        }
+    }
+    let linear = vec![0.0; diagonal.len()];
+    Assembled { program: Program { diagonal, linear, rows, rhs, cones }, first }
+}
+
+/// Rows R and values with `|R u + values|^2 = |M u + at|^2` up to a constant: at most d of them.
+fn compressed(reduced: &LevelProblem) -> (Vec<f64>, Vec<f64>) {
+    let (d, m) = (reduced.sets.d, reduced.residual_at.len());
+    if m <= d || d == 0 {
+        return (reduced.residual.clone(), reduced.residual_at.clone());
+    }
+    let mut columns = vec![0.0; m * d];
+    for i in 0..m {
+        for j in 0..d {
+            columns[j * m + i] = reduced.residual[i * d + j];
+        }
+    }
+    let original = columns.clone();
+    let factor = Factor::new(&mut columns, m, &vec![1.0; d], 0.0, "cost columns");
+    let rank = factor.rank();
+    let mut rows = vec![0.0; rank * d];
+    for j in 0..d {
+        let mut turned = original[j * m..(j + 1) * m].to_vec();
+        factor.apply_transpose(&mut turned);
+        for i in 0..rank {
+            rows[i * d + j] = turned[i];
+        }
+    }
+    let mut values = reduced.residual_at.clone();
+    factor.apply_transpose(&mut values);
+    values.truncate(rank);
+    (rows, values)
 }
 
 fn push(rows: &mut SparseRows, entries: Entries, minus: Option<usize>) {
