@@ -66,8 +66,12 @@ fn moving_kind(joint: &JointPart) -> Option<JointKind> {
     }
 }
 
-/// Unit vector along `axis`, scaled first so that no square underflows.
+/// Unit vector along `axis`, scaled first so that no square underflows. An axis that is a unit vector
+/// to the last digit stays as written.
 fn unit(axis: &Vec3) -> Vec3 {
+    if (axis.norm() - 1.0).abs() <= f64::EPSILON {
+        return *axis;
+    }
     let scaled = axis / axis.amax();
     scaled / scaled.norm()
 }

@@ -61,11 +61,10 @@ pub(super) fn check(mass: f64, inertia: &Mat3) -> Result<(), String> {
     }
     let [a, b, c] = principal_moments(inertia);
     let shown = format!("principal moments {a:.6e}, {b:.6e}, {c:.6e} kg m^2");
-    // Written so that NaN is refused.
-    if !(a > DEFINITE_TOLERANCE * c) {
+    if a <= DEFINITE_TOLERANCE * c {
         return Err(format!("expected it positive definite, got {shown}"));
     }
-    if !(a + b >= c * (1.0 - TRIANGLE_TOLERANCE)) {
+    if a + b < c * (1.0 - TRIANGLE_TOLERANCE) {
         return Err(format!(
             "expected no principal moment larger than the sum of the other two, got {shown}"
         ));
@@ -73,10 +72,10 @@ pub(super) fn check(mass: f64, inertia: &Mat3) -> Result<(), String> {
     Ok(())
 }
 
-/// Eigenvalues of a symmetric matrix, ascending, by Jacobi rotations.
+/// Eigenvalues of a symmetric, finite matrix, ascending, by Jacobi rotations.
 fn principal_moments(inertia: &Mat3) -> [f64; 3] {
     let scale = inertia.amax();
-    if !(scale > 0.0) {
+    if scale == 0.0 {
         return [0.0; 3];
     }
     let mut m = inertia / scale;

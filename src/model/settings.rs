@@ -59,11 +59,11 @@ fn check(spec: &JointSpec, kind: JointType) -> Result<(), Fault> {
             return bad(what, "a finite number > 0", v.to_string());
         }
     }
-    if let Some((lower, upper)) = spec.position {
-        if !(lower.is_finite() && upper.is_finite() && lower <= upper) {
-            let got = format!("lower {lower}, upper {upper}");
-            return bad("position", "finite numbers, lower <= upper", got);
-        }
+    if let Some((lower, upper)) = spec.position
+        && !(lower.is_finite() && upper.is_finite() && lower <= upper)
+    {
+        let got = format!("lower {lower}, upper {upper}");
+        return bad("position", "finite numbers, lower <= upper", got);
     }
     if let Some(at) = spec.locked_at {
         if !at.is_finite() {
@@ -103,11 +103,11 @@ fn drop_zero_limits(joint: &mut JointPart, remarks: &mut Vec<String>) {
             remarks.push(format!("{name}: {what} limit 0 is taken as none given"));
         }
     }
-    if let (Some(at), Some((lower, upper))) = (joint.locked_at, joint.position) {
-        if at < lower || at > upper {
-            remarks.push(format!(
-                "{name}: locked at {at}, outside its position limits {lower} to {upper}"
-            ));
-        }
+    if let (Some(at), Some((lower, upper))) = (joint.locked_at, joint.position)
+        && !(lower..=upper).contains(&at)
+    {
+        remarks.push(format!(
+            "{name}: locked at {at}, outside its position limits {lower} to {upper}"
+        ));
     }
 }
