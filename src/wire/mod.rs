@@ -2,17 +2,25 @@
 //! the only module that knows serde.
 
 mod aim;
+mod answer;
 mod canonical;
 mod common;
 mod contact;
+mod dynamics;
+mod export;
 mod extras;
 mod friction;
 mod gate;
 mod kinds;
 mod limit;
 mod model;
+mod number;
+mod openapi;
+mod problem;
 mod raw;
 mod refusal;
+mod report;
+mod robot;
 mod schema;
 mod second;
 mod solve;
@@ -29,6 +37,7 @@ use crate::problem::question::{DynamicsQuestion, Question};
 use crate::reference::answer::{Answer, DynamicsReport};
 
 pub use canonical::{canonical, fingerprint};
+pub use openapi::openapi;
 pub use refusal::{Fault, Refusal};
 pub use schema::{schema, schema_names};
 use second::Document;
@@ -77,31 +86,22 @@ fn typed<T: serde::de::DeserializeOwned>(body: &[u8], document: Document) -> Res
 }
 
 /// The document that describes a model.
-pub fn write_model(_model: &Model) -> Vec<u8> {
-    b"{}".to_vec()
+pub fn write_model(model: &Model) -> Vec<u8> {
+    robot::write(model)
 }
 
 /// The answer to a solve request.
-pub fn write_answer(_question: &Question, _answer: &Answer, _fingerprint: &str) -> Vec<u8> {
-    b"{}".to_vec()
+pub fn write_answer(question: &Question, answer: &Answer, fingerprint: &str) -> Vec<u8> {
+    answer::write(question, answer, fingerprint)
 }
 
 /// The answer to a dynamics request.
-pub fn write_dynamics(_question: &DynamicsQuestion, _report: &DynamicsReport, _fingerprint: &str) -> Vec<u8> {
-    b"{}".to_vec()
+pub fn write_dynamics(question: &DynamicsQuestion, report: &DynamicsReport, fingerprint: &str) -> Vec<u8> {
+    dynamics::write(question, report, fingerprint)
 }
 
 /// The problem document (RFC 9457, `application/problem+json`) of a refusal; `instance` is the
 /// path of the request.
 pub fn write_refusal(refusal: &Refusal, instance: &str) -> Vec<u8> {
-    let document = serde_json::json!({
-        "title": refusal.title, "status": refusal.status, "detail": refusal.detail,
-        "instance": instance, "code": refusal.code,
-    });
-    document.to_string().into_bytes()
-}
-
-/// The OpenAPI 3.1 description of the service.
-pub fn openapi() -> String {
-    String::new()
+    problem::write(refusal, instance)
 }

@@ -5,7 +5,7 @@ use serde_json::{Map, Value, json};
 
 use super::kinds::KindTable;
 use super::strict::MAX_MAGNITUDE;
-use super::{contact, limit, model, solve, task, treatment};
+use super::{answer, contact, dynamics, limit, model, problem, robot, solve, task, treatment};
 
 /// Objects whose members depend on a `kind`.
 const TABLES: [&KindTable; 5] = [
@@ -17,7 +17,9 @@ const TABLES: [&KindTable; 5] = [
 ];
 
 /// Names of the documents.
-const NAMES: &[&str] = &["model-request", "dynamics-request", "solve-request"];
+const NAMES: &[&str] = &[
+    "model-request", "model", "dynamics-request", "dynamics-answer", "solve-request", "solve-answer", "problem",
+];
 
 /// Names that [`schema`] knows.
 pub fn schema_names() -> &'static [&'static str] {
@@ -34,10 +36,15 @@ pub fn schema(name: &str) -> Option<String> {
 /// The JSON Schema (draft 2020-12) of this name.
 pub(super) fn value(name: &str) -> Option<Value> {
     let reading = || SchemaSettings::draft2020_12().for_deserialize().into_generator();
+    let writing = || SchemaSettings::draft2020_12().for_serialize().into_generator();
     let (schema, request) = match name {
         "model-request" => (reading().into_root_schema_for::<model::ModelRequest>(), true),
         "dynamics-request" => (reading().into_root_schema_for::<solve::DynamicsRequest>(), true),
         "solve-request" => (reading().into_root_schema_for::<solve::SolveRequest>(), true),
+        "model" => (writing().into_root_schema_for::<robot::ModelOut<'_>>(), false),
+        "dynamics-answer" => (writing().into_root_schema_for::<dynamics::DynamicsAnswerOut<'_>>(), false),
+        "solve-answer" => (writing().into_root_schema_for::<answer::AnswerOut<'_>>(), false),
+        "problem" => (writing().into_root_schema_for::<problem::ProblemOut<'_>>(), false),
         _ => return None,
     };
     let mut schema = Value::from(schema);
