@@ -56,7 +56,7 @@ fn hard(random: &mut Random, load: f64) -> ConicRows {
     }
     for sole in 0..2 {
         let at = |v: usize, c: usize| VERTEX + 12 * sole + 3 * v + c;
-        let corner = |v: usize| (if v < 2 { 0.5 } else { -0.5 }, if v % 2 == 0 { 0.25 } else { -0.25 });
+        let corner = |v: usize| (if v < 2 { 0.5 } else { -0.5 }, if v.is_multiple_of(2) { 0.25 } else { -0.25 });
         for c in 0..3 {
             let mut row: Vec<(usize, f64)> = (0..4).map(|v| (at(v, c), 1.0)).collect();
             row.push((WRENCH + 6 * sole + c, -1.0));
