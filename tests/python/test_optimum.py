@@ -23,16 +23,14 @@ def walker(client):
     return scenes.add_walker(client)
 
 
-def dense(matrix, rows, columns):
-    out = np.zeros((rows, columns))
-    for i, j, v in matrix:
-        out[int(i), int(j)] += v
+def dense(matrix):
+    out = np.zeros((matrix["rows"], matrix["columns"]))
+    np.add.at(out, (matrix["row"], matrix["column"]), matrix["value"])
     return out
 
 
-def conic_rows(document, columns):
-    b = np.array(document["rhs"], float)
-    return hierarchy.Rows(dense(document["matrix"], len(b), columns), b, [(c["kind"], c["size"]) for c in document["cones"]])
+def conic_rows(document):
+    return hierarchy.Rows(dense(document["matrix"]), np.array(document["rhs"], float), [(c["kind"], c["rows"]) for c in document["cones"]])
 
 
 def exported(document) -> hierarchy.Problem:
@@ -43,9 +41,9 @@ def exported(document) -> hierarchy.Problem:
     for level in [*document["levels"], {"residuals": document["tie_break"], "soft": None, "soft_weight": []}]:
         residuals = level["residuals"]
         b = np.array(residuals["rhs"], float)
-        soft = conic_rows(level["soft"], n) if level["soft"] else hierarchy.Rows(np.zeros((0, n)), np.zeros(0))
-        levels.append(hierarchy.Level(dense(residuals["matrix"], len(b), n), b, np.array(residuals["weight"], float), soft, np.array(level["soft_weight"], float)))
-    return hierarchy.Problem(n, conic_rows(document["hard"], n), levels, [c["name"] for c in columns], np.array([c["scale"] for c in columns]))
+        soft = conic_rows(level["soft"]) if level["soft"] else hierarchy.Rows(np.zeros((0, n)), np.zeros(0))
+        levels.append(hierarchy.Level(dense(residuals["matrix"]), b, np.array(residuals["weight"], float), soft, np.array(level["soft_weight"], float)))
+    return hierarchy.Problem(n, conic_rows(document["hard"]), levels, [c["name"] for c in columns], np.array([c["scale"] for c in columns]))
 
 
 def torques(problem, outcome, joints):

@@ -37,16 +37,14 @@ def maybe(value: Any) -> Array | None:
 
 
 def wrench(value: Any) -> Array | None:
-    """`{force, moment}` as six numbers; a point sole has no moment: three zeros stand there."""
+    """`{force, moment}` as six numbers; None stays None."""
     if value is None:
         return None
-    return np.concatenate([vector(value["force"]), vector(value.get("moment") or (0.0, 0.0, 0.0))])
+    return np.concatenate([vector(value["force"]), vector(value["moment"])])
 
 
-def twist(value: Any) -> Array | None:
+def six(value: Any) -> Array:
     """`{linear, angular}` as six numbers."""
-    if value is None:
-        return None
     return np.concatenate([vector(value["linear"]), vector(value["angular"])])
 
 
@@ -107,11 +105,15 @@ class Dynamics:
 
     @staticmethod
     def read(document: Mapping[str, Any]) -> Dynamics:
-        """From the service's document."""
-        return shaped(lambda: Dynamics._read(document))
+        """From the service's answer to a dynamics request."""
+        terms = shaped(lambda: document["dynamics"])
+        if terms is None:
+            raise Garbled("the service withheld the terms: a number in them was not finite")
+        return shaped(lambda: Dynamics.of(terms))
 
     @staticmethod
-    def _read(d: Mapping[str, Any]) -> Dynamics:
+    def of(d: Mapping[str, Any]) -> Dynamics:
+        """From the member `dynamics` of an answer."""
         return Dynamics(
             mass=d["mass"],
             velocities=tuple(d["velocities"]),
@@ -120,9 +122,9 @@ class Dynamics:
             friction=vector(d["friction"]),
             center_of_mass=vector(d["center_of_mass"]),
             center_of_mass_velocity=vector(d["center_of_mass_velocity"]),
-            momentum=_six(d["momentum"]),
+            momentum=six(d["momentum"]),
             momentum_matrix=vector(d["momentum_matrix"]),
-            momentum_bias=_six(d["momentum_bias"]),
+            momentum_bias=six(d["momentum_bias"]),
             kinetic_energy=d["kinetic_energy"],
             potential_energy=d["potential_energy"],
             frames=tuple(
@@ -130,21 +132,14 @@ class Dynamics:
                     name=f["name"],
                     position=vector(f["position"]),
                     orientation=vector(f["orientation"]),
-                    twist=_six(f["twist"]),
+                    twist=six(f["twist"]),
                     jacobian=vector(f["jacobian"]),
-                    bias_acceleration=_six(f["bias_acceleration"]),
+                    bias_acceleration=six(f["bias_acceleration"]),
                 )
                 for f in d["frames"]
             ),
             document=d,
         )
-
-
-def _six(value: Any) -> Array:
-    """Six numbers, linear first, from `{linear, angular}` or a flat or nested list."""
-    if isinstance(value, Mapping):
-        return np.concatenate([vector(value["linear"]), vector(value["angular"])])
-    return vector(value).reshape(6)
 
 
 @dataclass(frozen=True)
@@ -167,7 +162,29 @@ class Sole:
     """|f_t| / (mu f_n): 1 is the limit."""
     edge_distance: float | None
     """Distance of the centre of pressure from the nearest edge (m), negative outside."""
+    vertex_forces: Array
+    """(n, 3), world axes (N); not unique; empty where the friction set does not use them."""
+    acceleration: Array | None
+    """Linear (m/s^2) and angular (rad/s^2), world axes."""
     document: Mapping[str, Any] = field(repr=False)
+
+    @staticmethod
+    def of(d: Mapping[str, Any]) -> Sole:
+        """From one entry of `soles`."""
+        return Sole(
+            name=d["name"],
+            wrench=wrench(d["wrench"]),
+            wrench_in_sole_axes=wrench(d["wrench_in_sole_axes"]),
+            wrench_over_tick=wrench(d["wrench_over_tick"]),
+            present=wrench(d["present"]),
+            normal_force=d["normal_force"],
+            center_of_pressure=maybe(d["center_of_pressure"]),
+            friction_use=d["friction_use"],
+            edge_distance=d["edge_distance"],
+            vertex_forces=vector(d["vertex_forces"]).reshape(-1, 3),
+            acceleration=None if d["acceleration"] is None else six(d["acceleration"]),
+            document=d,
+        )
 
 
 @dataclass(frozen=True)
@@ -181,8 +198,22 @@ class Task:
     units: tuple[str, ...]
     desired: Array
     achieved: Array
+    """Empty where nothing was found."""
     residual: Array
     """achieved - desired."""
+
+    @staticmethod
+    def of(d: Mapping[str, Any]) -> Task:
+        """From one entry of `tasks`."""
+        return Task(
+            name=d["name"],
+            priority=d["priority"],
+            rows=tuple(d["rows"]),
+            units=tuple(d["units"]),
+            desired=vector(d["desired"]),
+            achieved=vector(d["achieved"]),
+            residual=vector(d["residual"]),
+        )
 
 
 @dataclass(frozen=True)
@@ -190,9 +221,9 @@ class Answer:
     """The answer to a solve request."""
 
     status: str
-    """`solved`, `infeasible`, `not_reachable`, `ill_posed` or `inaccurate`."""
+    """`solved`, `infeasible`, `not_reachable`, `ill_posed`, `inaccurate` or `cancelled`."""
     joints: tuple[str, ...]
-    """Joint names, in the order of the arrays beside them."""
+    """Joint names, in the order of the arrays beside them; empty where there is no answer."""
     torques: Array | None
     """N m (N for sliding joints); None where there is no answer."""
     joint_accelerations: Array | None
@@ -202,14 +233,44 @@ class Answer:
     soles: tuple[Sole, ...]
     tasks: tuple[Task, ...]
     levels: tuple[Mapping[str, Any], ...]
+    """One entry per priority: cost, rank decisions, freedom left, faces, error bound."""
     warnings: tuple[Mapping[str, Any], ...]
     certificate: Mapping[str, Any] | None
+    """What was verified without the solver; None where there was nothing to verify."""
+    dynamics: Dynamics | None
+    """Rigid-body terms, where `include` asked for them."""
     document: Mapping[str, Any] = field(repr=False)
     """Everything, as it came."""
     body: bytes = field(repr=False)
     """The bytes: the same request gives the same bytes on the same machine and build."""
     timing: str = field(repr=False, default="")
     """The Server-Timing header."""
+
+    @staticmethod
+    def read(document: Mapping[str, Any], body: bytes, timing: str) -> Answer:
+        """From the service's answer to a solve request."""
+        return shaped(lambda: Answer._read(document, body, timing))
+
+    @staticmethod
+    def _read(d: Mapping[str, Any], body: bytes, timing: str) -> Answer:
+        joints = d["joints"]
+        base = d["base_acceleration"]
+        return Answer(
+            status=d["status"],
+            joints=tuple(j["name"] for j in joints or ()),
+            torques=None if joints is None else vector([j["torque"] for j in joints]),
+            joint_accelerations=None if joints is None else vector([j["acceleration"] for j in joints]),
+            base_acceleration=None if base is None else six(base),
+            soles=tuple(Sole.of(s) for s in d["soles"]),
+            tasks=tuple(Task.of(t) for t in d["tasks"]),
+            levels=tuple(d["levels"]),
+            warnings=tuple(d["warnings"]),
+            certificate=d["certificate"],
+            dynamics=Dynamics.of(d["dynamics"]) if d.get("dynamics") else None,
+            document=d,
+            body=body,
+            timing=timing,
+        )
 
     @property
     def solved(self) -> bool:
