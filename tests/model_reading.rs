@@ -214,11 +214,11 @@ fn what_is_not_understood_is_listed() {
     );
     let model = plain(&xml);
     let expected = [
-        "ignored: <collision>, 1 times",
-        "ignored: <joint>, 1 times",
-        "ignored: <transmission>, 1 times",
-        "ignored: <visual>, 2 times",
-        "ignored: attribute \"dampning\" of <dynamics>, 1 times",
+        "ignored: <collision> (1)",
+        "ignored: <joint> (1)",
+        "ignored: <transmission> (1)",
+        "ignored: <visual> (2)",
+        "ignored: attribute \"dampning\" of <dynamics> (1)",
     ];
     assert_eq!(model.remarks, expected);
 }

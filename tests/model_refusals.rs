@@ -201,6 +201,11 @@ fn floating_joints() {
     let good = robot(&format!("<link name=\"world\"/>\n<link name=\"a\">$</link>\n{floating}"));
     let model = read_urdf(&good, &ModelOptions::default()).expect("a massless root is dropped");
     assert_eq!(model.bodies.len(), 1);
+    // Locked, it is a weld like any other.
+    let locked = JointSpec { locked_at: Some(0.0), ..JointSpec::named("f") };
+    let options = ModelOptions { joints: vec![locked], ..ModelOptions::default() };
+    let welded = read_urdf(&good, &options).expect("a weld");
+    assert_eq!((welded.bodies.len(), welded.frames.len()), (1, 2));
     assert_eq!(model.frames.iter().map(|f| f.name.as_str()).collect::<Vec<_>>(), ["a"]);
     assert!(model.remarks.iter().any(|r| r.contains("\"world\"")), "{:?}", model.remarks);
 }
@@ -233,7 +238,11 @@ fn options() {
         let error = refused(&xml, &options);
         assert_eq!((error.code(), error.subject), (code, Subject::Joint(1)), "{error}");
         assert_eq!(error.element, element);
+        assert_eq!(error.member().is_some(), code != "joint-does-not-move");
     }
+    let stall = JointSpec { torque_speed: line(-1.0, 1.0), ..j() };
+    let error = refused(&xml, &ModelOptions { joints: vec![stall], ..ModelOptions::default() });
+    assert_eq!(error.member(), Some("torque_speed.stall"));
     let sole = |name: &str, link: &str, placement| SoleSpec {
         name: name.to_string(),
         link: link.to_string(),
@@ -288,6 +297,10 @@ fn hostile_text() {
     }
     assert_eq!(code("<machine name=\"r\"/>").code(), "urdf-not-a-robot");
     assert_eq!(code("<robot/>").code(), "urdf-missing-attribute");
+    // Megabytes on one line: finding places must not walk the line each time.
+    let pad = "x".repeat(200);
+    let links: String = (0..4_000).map(|i| format!("<link name=\"l{i}\"><visual n=\"{pad}{pad}{pad}{pad}\"/></link>")).collect();
+    assert_eq!(code(&format!("<robot name=\"r\">{links}</robot>")).code(), "several-roots");
     // 300 links in a chain of moving joints: more than the matrices are meant for.
     let mut chain = "<robot name=\"r\"><link name=\"l0\"/>".to_string();
     for i in 1..300 {

@@ -18,7 +18,14 @@ fn solve(question: &Question) -> Answer {
 
 fn solved(question: &Question) -> Answer {
     let answer = solve(question);
-    assert_eq!(answer.status, Status::Solved, "{:#?}\n{:?}", answer.certificate, answer.blocking);
+    assert_eq!(
+        answer.status,
+        Status::Solved,
+        "{:#?}\n{:?}\n{:?}",
+        answer.certificate,
+        answer.blocking,
+        answer.levels
+    );
     answer
 }
 

@@ -45,6 +45,20 @@ impl ModelError {
     pub fn code(&self) -> &'static str {
         self.fault.code()
     }
+
+    /// The member of the option at fault, in the names of [`SoleSpec`](super::SoleSpec) and
+    /// [`JointSpec`](super::JointSpec), a dot before a member of a member. None if the option is at
+    /// fault as a whole, or the URDF is.
+    pub fn member(&self) -> Option<&str> {
+        match (self.subject, &self.fault) {
+            (Subject::Urdf { .. }, _) => None,
+            (_, Fault::BadValue { what, .. }) => Some(what),
+            (_, Fault::DuplicateName(_)) => Some("name"),
+            (Subject::Sole(_), Fault::Unknown { .. }) => Some("link"),
+            (Subject::Joint(_), Fault::Unknown { .. }) => Some("name"),
+            _ => None,
+        }
+    }
 }
 
 /// What is wrong with a description. Texts hold what was expected and what came.

@@ -53,7 +53,7 @@ pub(super) fn read(text: &str) -> Result<Description, ModelError> {
     }
     check_names(&description)?;
     for (what, count) in &reader.ignored {
-        description.remarks.push(format!("ignored: {what}, {count} times"));
+        description.remarks.push(format!("ignored: {what} ({count})"));
     }
     Ok(description)
 }

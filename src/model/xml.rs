@@ -18,24 +18,49 @@ pub const MAX_NAMESPACES: usize = 64;
 /// Largest length, mass, inertia and angle (SI): far beyond any robot, and its square is finite.
 pub const MAX_MAGNITUDE: f64 = 1e9;
 
-/// Line starts of a text, to find line and column of a byte.
+/// Bytes between two entries of the character index.
+const BLOCK: usize = 1024;
+
+/// Index of a text, to find line and column of a byte without walking the text: descriptions come
+/// on one line of megabytes too.
 pub(super) struct Lines<'a> {
     text: &'a str,
+    /// Byte at which each line starts.
     starts: Vec<usize>,
+    /// Characters before each block of bytes.
+    characters: Vec<usize>,
+}
+
+/// Characters that start in these bytes of UTF-8: all bytes but continuation bytes.
+fn count_characters(bytes: &[u8]) -> usize {
+    bytes.iter().filter(|byte| **byte & 0xC0 != 0x80).count()
 }
 
 impl<'a> Lines<'a> {
     pub(super) fn new(text: &'a str) -> Self {
         let newlines = text.bytes().enumerate().filter(|(_, b)| *b == b'\n').map(|(i, _)| i + 1);
-        Lines { text, starts: std::iter::once(0).chain(newlines).collect() }
+        let starts = std::iter::once(0).chain(newlines).collect();
+        let (mut characters, mut total) = (vec![0], 0);
+        for block in text.as_bytes().chunks(BLOCK) {
+            total += count_characters(block);
+            characters.push(total);
+        }
+        Lines { text, starts, characters }
+    }
+
+    /// Characters before this byte.
+    fn characters_before(&self, byte: usize) -> usize {
+        let block = byte / BLOCK;
+        let rest = self.text.as_bytes().get(block * BLOCK..byte).map_or(0, count_characters);
+        self.characters.get(block).copied().unwrap_or(0) + rest
     }
 
     /// Line and column, from 1, of the character at this byte.
     pub(super) fn at(&self, byte: usize) -> Subject {
         let line = self.starts.partition_point(|start| *start <= byte).max(1);
         let start = self.starts.get(line - 1).copied().unwrap_or(0);
-        let column = self.text.get(start..byte).map_or(0, |before| before.chars().count()) + 1;
-        Subject::Urdf { line, column }
+        let before = self.characters_before(byte).saturating_sub(self.characters_before(start));
+        Subject::Urdf { line, column: before + 1 }
     }
 }
 
@@ -297,5 +322,23 @@ pub(super) fn bad(node: Node<'_, '_>, attribute: &str, expected: &'static str, g
         what: format!("{attribute} of <{}>", shortened(node.tag_name().name())),
         expected,
         got: format!("{:?}", shortened(got)),
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    // Derived: counting characters line by line, the plain way.
+    #[test]
+    fn places_agree_with_plain_counting() {
+        let text = "r\u{e9}sum\u{e9} \u{1f9b6}\n".repeat(300) + &"\u{e9}<a/>".repeat(900);
+        let lines = Lines::new(&text);
+        for (byte, _) in text.char_indices() {
+            let before = &text[..byte];
+            let line = before.matches('\n').count() + 1;
+            let column = before.rsplit('\n').next().unwrap_or("").chars().count() + 1;
+            assert_eq!(lines.at(byte), Subject::Urdf { line, column });
+        }
     }
 }

@@ -1,0 +1,122 @@
+//! The JSON Schemas (draft 2020-12), made from the types that read and write the documents.
+
+use schemars::generate::SchemaSettings;
+use serde_json::{Map, Value, json};
+
+use super::kinds::KindTable;
+use super::strict::MAX_MAGNITUDE;
+use super::{answer, contact, dynamics, limit, model, problem, robot, solve, task, treatment};
+
+/// Objects whose members depend on a `kind`.
+const TABLES: [&KindTable; 5] = [
+    &treatment::TREATMENT_KINDS,
+    &contact::LAW_KINDS,
+    &contact::REST_KINDS,
+    &limit::LIMIT_KINDS,
+    &task::TASK_KINDS,
+];
+
+/// Names of the documents.
+const NAMES: &[&str] = &[
+    "model-request", "model", "dynamics-request", "dynamics-answer", "solve-request", "solve-answer", "problem",
+];
+
+/// Names that [`schema`] knows.
+pub fn schema_names() -> &'static [&'static str] {
+    NAMES
+}
+
+/// The JSON Schema (draft 2020-12) of this name, as text.
+pub fn schema(name: &str) -> Option<String> {
+    let mut text = serde_json::to_string_pretty(&value(name)?).ok()?;
+    text.push('\n');
+    Some(text)
+}
+
+/// The JSON Schema (draft 2020-12) of this name.
+pub(super) fn value(name: &str) -> Option<Value> {
+    let reading = || SchemaSettings::draft2020_12().for_deserialize().into_generator();
+    let writing = || SchemaSettings::draft2020_12().for_serialize().into_generator();
+    let (schema, request) = match name {
+        "model-request" => (reading().into_root_schema_for::<model::ModelRequest>(), true),
+        "dynamics-request" => (reading().into_root_schema_for::<solve::DynamicsRequest>(), true),
+        "solve-request" => (reading().into_root_schema_for::<solve::SolveRequest>(), true),
+        "model" => (writing().into_root_schema_for::<robot::ModelOut<'_>>(), false),
+        "dynamics-answer" => (writing().into_root_schema_for::<dynamics::DynamicsAnswerOut<'_>>(), false),
+        "solve-answer" => (writing().into_root_schema_for::<answer::AnswerOut<'_>>(), false),
+        "problem" => (writing().into_root_schema_for::<problem::ProblemOut<'_>>(), false),
+        _ => return None,
+    };
+    let mut schema = Value::from(schema);
+    if request {
+        tighten(&mut schema);
+        add_kinds(&mut schema);
+    }
+    Some(schema)
+}
+
+/// Requests know no null: what is optional is left out. And their numbers are bounded.
+fn tighten(schema: &mut Value) {
+    match schema {
+        Value::Array(elements) => elements.iter_mut().for_each(tighten),
+        Value::Object(members) => {
+            without_null(members);
+            if members.get("type") == Some(&json!("number")) {
+                members.insert("minimum".to_string(), json!(-MAX_MAGNITUDE));
+                members.insert("maximum".to_string(), json!(MAX_MAGNITUDE));
+            }
+            members.values_mut().for_each(tighten);
+        }
+        _ => {}
+    }
+}
+
+fn without_null(members: &mut Map<String, Value>) {
+    let null = json!({ "type": "null" });
+    if let Some(Value::Array(types)) = members.get_mut("type") {
+        types.retain(|kind| kind != "null");
+        if let [one] = types.as_slice() {
+            let one = one.clone();
+            members.insert("type".to_string(), one);
+        }
+    }
+    if let Some(Value::Array(words)) = members.get_mut("enum") {
+        words.retain(|word| !word.is_null());
+    }
+    let Some(Value::Array(forms)) = members.get_mut("anyOf") else { return };
+    forms.retain(|form| *form != null);
+    if let [Value::Object(only)] = forms.as_slice() {
+        let only = only.clone();
+        members.remove("anyOf");
+        for (name, value) in only {
+            members.entry(name).or_insert(value);
+        }
+    }
+}
+
+/// Says which members go with which kind.
+fn add_kinds(schema: &mut Value) {
+    for table in TABLES {
+        let Some(Value::Object(definition)) = schema.pointer_mut(&format!("/$defs/{}", table.definition))
+        else {
+            continue;
+        };
+        let rules = table.rules.iter().map(|rule| {
+            let foreign = table.foreign(rule).into_iter();
+            let none: Map<String, Value> = foreign.map(|name| (name.to_string(), json!(false))).collect();
+            let mut then = Map::new();
+            if !rule.needs.is_empty() {
+                then.insert("required".to_string(), json!(rule.needs));
+            }
+            if !none.is_empty() {
+                then.insert("properties".to_string(), Value::Object(none));
+            }
+            json!({
+                "if": { "properties": { "kind": { "const": rule.kind } }, "required": ["kind"] },
+                "then": then,
+            })
+        });
+        let rules: Vec<Value> = rules.collect();
+        definition.insert("allOf".to_string(), Value::Array(rules));
+    }
+}
