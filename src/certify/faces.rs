@@ -12,8 +12,9 @@
 //! So each equality of `system` has to be a combination of implied equalities, and each cone row or block an
 //! implied one, up to implied equalities and a positive factor. LEAVING implied rows out is allowed: x
 //! obeys them anyway (check `hard-rows`), and an optimum of less is an optimum of all.
-//! A face that only a further program exposes (all multipliers zero, yet nothing strictly inside) is not
-//! justified here: such a problem is ill-posed and is not certified.
+//! A pair of opposite rows without room between them (`least` equal to `largest`) is an equality. Any other face that
+//! only a further program exposes (all multipliers zero, yet nothing strictly inside) is not justified
+//! here: such a problem is ill-posed and is not certified.
 
 use super::rows::{Block, blocks, fits, matrix_fits, norm};
 use super::worst::Worst;
@@ -156,6 +157,28 @@ impl Known {
         }
     }
 
+    /// Two implied rows that leave an equality no room: `r x <= b` and `-r x <= -b`, up to positive factors. The
+    /// figure is the larger of their distances to the row and of the room between them, infinite without such a pair.
+    fn pinched(&self, bare: &[Vec<Vec<f64>>], row: &[f64]) -> f64 {
+        let (mut upper, mut lower) = ((f64::INFINITY, 0.0), (f64::INFINITY, 0.0));
+        for (implied, bare) in self.cones.iter().zip(bare) {
+            let own: f64 = bare[0].iter().map(|b| b * b).sum();
+            let cross: f64 = bare[0].iter().zip(row).map(|(b, r)| b * r).sum();
+            if own == 0.0 || cross == 0.0 {
+                continue;
+            }
+            let factor = cross / own;
+            let apart: f64 = bare[0].iter().zip(row).map(|(b, r)| (factor * b - r).powi(2)).sum();
+            let side = if factor > 0.0 { &mut upper } else { &mut lower };
+            let distance = apart.sqrt() / norm(row);
+            let room = implied.slack[0] * factor.abs();
+            if distance <= OPTIMALITY_BOUND && (side.0 == f64::INFINITY || room < side.1) {
+                *side = (distance, room);
+            }
+        }
+        upper.0.max(lower.0).max((upper.1 + lower.1).abs())
+    }
+
     /// Records how much of each row of a system is not implied.
     fn judge(&self, proof: &LevelProof, x: &[f64], worst: &mut Worst) {
         let system = &proof.system;
@@ -176,6 +199,8 @@ impl Known {
                 let candidates = self.cones.iter().zip(&bare);
                 let distances = candidates.map(|(implied, bare)| distance(implied, bare, &rests, &slack));
                 share = share.min(distances.fold(f64::INFINITY, f64::min));
+            } else if share > OPTIMALITY_BOUND {
+                share = share.min(self.pinched(&bare, &rests[0]));
             }
             worst.record(share, || place(proof, &block));
         }
