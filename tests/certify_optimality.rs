@@ -32,7 +32,7 @@ fn failing(check: &LevelCheck) -> Vec<&'static str> {
         ("dual", check.dual_violation),
         ("feasibility", check.feasibility),
     ];
-    figures.into_iter().filter(|f| !(f.1 <= check.bound)).map(|f| f.0).collect()
+    figures.into_iter().filter(|f| f.1.is_nan() || f.1 > check.bound).map(|f| f.0).collect()
 }
 
 /// HS76 (Hock & Schittkowski 1981, published): optimum (3, 23, 0, 6)/11, multipliers 5/11 and 19/11.
