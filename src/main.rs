@@ -1,3 +1,7 @@
 //! The `underfoot` command: it only dispatches to `underfoot::cli`.
 
-fn main() {}
+use std::process::ExitCode;
+
+fn main() -> ExitCode {
+    underfoot::cli::main()
+}

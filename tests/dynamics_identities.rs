@@ -185,7 +185,7 @@ fn jacobian_and_its_rate_by_differences_along_a_motion() {
         });
         let bias = frame_bias_acceleration(&model, &ws, body, &place);
         let want = &j * DVector::from_vec(nu_dot) + bias;
-        small((&want - rate).amax(), want.amax(), 1e-9, "J nu_dot + J_dot nu");
+        small((want - rate).amax(), want.amax(), 1e-9, "J nu_dot + J_dot nu");
     }
 }
 
@@ -239,7 +239,7 @@ fn momentum_follows_the_external_wrenches() {
         let nu_dot = forward_dynamics(&model, &mut ws, &state, &gravity(), &force).expect("regular");
         let rate = &ws.momentum_matrix * &nu_dot + ws.momentum_bias;
         let want = stack(&total, &moment);
-        small((&rate - want).amax(), want.amax(), 1e-9, "rate of momentum");
+        small((rate - want).amax(), want.amax(), 1e-9, "rate of momentum");
         let motion = Motion::new(&model, &state, nu_dot.as_slice());
         let numeric = motion.rate(|s| list(&updated(&model, s).momentum));
         small((numeric - want).amax(), want.amax(), 1e-8, "rate of momentum by differences");
@@ -257,7 +257,7 @@ fn momentum_matrix_and_bias() {
         let motion = Motion::new(&model, &state, &nu_dot);
         let numeric = motion.rate(|s| list(&updated(&model, s).momentum));
         let want = &ws.momentum_matrix * DVector::from_vec(nu_dot) + ws.momentum_bias;
-        small((&want - numeric).amax(), want.amax(), 1e-9, "A nu_dot + A_dot nu");
+        small((want - numeric).amax(), want.amax(), 1e-9, "A nu_dot + A_dot nu");
         let drift = motion.rate(|s| {
             DVector::from_column_slice(updated(&model, s).center_of_mass.as_slice())
         });
@@ -374,7 +374,7 @@ fn velocity_axes_agree_with_each_other() {
                 let user_rate = map.rate_from_world(&j, &rate);
                 let a = &user_j * &user_nu_dot + user_rate;
                 let b = &j * &nu_dot + rate;
-                small((&a - &b).amax(), b.amax(), 1e-13, "frame acceleration");
+                small((a - b).amax(), b.amax(), 1e-13, "frame acceleration");
             }
         }
     }

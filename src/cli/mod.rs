@@ -1,1 +1,75 @@
-//! Placeholder; see DEVELOPERS.md.
+//! The command line: one file per command.
+//!
+//! Exit codes, the same for every command: 0 good, 1 the answer is bad news, 2 unusable input.
+
+mod demo;
+mod dynamics;
+mod files;
+mod log;
+mod report;
+mod schemas;
+mod serve;
+mod solve;
+mod table;
+
+use std::process::ExitCode;
+
+use clap::{Parser, Subcommand};
+
+/// A reference solver for legged robots on ground that gives.
+///
+/// A robot's state and prioritised tasks go in, certified joint torques and sole wrenches come out.
+/// Exit codes: 0 good, 1 the answer is bad news, 2 unusable input.
+#[derive(Debug, Parser)]
+#[command(name = "underfoot", version)]
+struct Arguments {
+    #[command(subcommand)]
+    command: Command,
+}
+
+#[derive(Debug, Subcommand)]
+enum Command {
+    /// Serve over HTTP, on the loopback unless told otherwise.
+    Serve(serve::Serve),
+    /// Answer a solve request from a file; prints what POST /v1/solve answers.
+    Solve(solve::Solve),
+    /// Rigid-body terms of a state from a file; prints what POST /v1/dynamics answers.
+    Dynamics(dynamics::Dynamics),
+    /// List the JSON Schemas, or print one.
+    Schemas(schemas::Schemas),
+    /// Show the whole path on a built-in scenario, through a real service.
+    Demo(demo::Demo),
+}
+
+/// How a command ended.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+enum Outcome {
+    /// Everything went well.
+    Good,
+    /// There is an answer, and it is bad news.
+    BadNews,
+    /// The input is unusable, or the system would not let the command do its work.
+    Unusable,
+}
+
+impl From<Outcome> for ExitCode {
+    fn from(outcome: Outcome) -> ExitCode {
+        ExitCode::from(match outcome {
+            Outcome::Good => 0,
+            Outcome::BadNews => 1,
+            Outcome::Unusable => 2,
+        })
+    }
+}
+
+/// Reads the arguments and runs the command they name.
+pub fn main() -> ExitCode {
+    match Arguments::parse().command {
+        Command::Serve(command) => command.run(),
+        Command::Solve(command) => command.run(),
+        Command::Dynamics(command) => command.run(),
+        Command::Schemas(command) => command.run(),
+        Command::Demo(command) => command.run(),
+    }
+    .into()
+}

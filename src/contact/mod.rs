@@ -2,6 +2,19 @@
 //!
 //! The moments, wrenches and matrices here are about the sole-frame origin, in world axes.
 
+pub mod error;
+pub mod friction;
+pub mod law;
+mod moments;
+pub mod predict;
+pub mod quadrature;
+mod relative;
+pub mod report;
+pub mod rest;
+pub mod tick;
+
+pub use error::{ContactError, Direction};
+
 use crate::spatial::polygon::SoleShape;
 use crate::spatial::{Mat6, Pose, Twist, Vec3, Vec6, Wrench};
 
@@ -86,14 +99,18 @@ pub struct SoleMotion {
     pub twist: Twist,
 }
 
-/// The affine map from sole acceleration to wrench over one tick, DESIGN in short:
+/// The affine map from sole acceleration to wrench over one tick:
 /// `w_plus = drift - gain * a`, `a` the acceleration of the sole frame (classical, origin; angular).
 #[derive(Debug, Clone, PartialEq)]
 pub struct TickMap {
     /// 6 for polygons, 3 (force, linear acceleration) for points; unused rows and columns are zero.
     pub dimension: usize,
-    /// Wrench at the start of the tick (measured where given, else the law's).
+    /// Wrench at the start of the tick (measured where given, else the law's; zero on a rigid sole
+    /// without a measurement, see `now_known`).
     pub now: Wrench,
+    /// False on a rigid sole without a measured wrench: no law says what it carries at present, so
+    /// rates of the wrench cannot be formed.
+    pub now_known: bool,
     /// Wrench at the tick's end if the acceleration were zero. Unused on a rigid sole.
     pub drift: Vec6,
     /// `G = T D + c T^2 S`. Unused on a rigid sole.
@@ -107,6 +124,15 @@ pub struct TickMap {
     pub wrench_part: Mat6,
     /// See `acceleration_part`.
     pub right_side: Vec6,
+    /// Natural size of each equality row: 1 m/s^2 for the linear rows, 1/r rad/s^2 for the angular ones (r the
+    /// polygon's polar radius of gyration about the sole origin; 1 m/s^2 and 0 on a point sole). A
+    /// row's residual is an acceleration: the mismatch of the law's wrench divided by `Z + G`.
+    pub row_scale: Vec6,
+    /// S = -dw/d(pose) at the drift state, for a translation of the origin and a left rotation
+    /// vector (N/m, N, N m/m, N m/rad). Zero on a rigid sole.
+    pub stiffness: Mat6,
+    /// D = -dw/d(twist) at the drift state (N s/m and so on). Zero on a rigid sole.
+    pub damping: Mat6,
     /// True on a rigid sole.
     pub rigid: bool,
 }

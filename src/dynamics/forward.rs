@@ -59,28 +59,29 @@ impl Workspace {
     /// [`DynamicsError::MassMatrixNotPositiveDefinite`] with the pivot that failed.
     pub fn factorise(&mut self, model: &Model) -> Result<(), DynamicsError> {
         let n = self.velocities();
+        // Column by column, each reduced by multiples of those before it: columns lie contiguous
+        // in memory, rows do not.
         for j in 0..n {
-            for i in j..n {
-                let mut sum = self.mass_matrix[(i, j)];
-                for k in 0..j {
-                    sum -= self.factor[(i, k)] * self.factor[(j, k)];
-                }
-                if i == j {
-                    let needed = SMALLEST_PIVOT * self.mass_matrix[(j, j)];
-                    // Written so that a pivot that is not a number fails too.
-                    if !(sum > needed && sum.is_finite()) {
-                        return Err(DynamicsError::MassMatrixNotPositiveDefinite {
-                            row: j,
-                            coordinate: coordinate_name(model, j),
-                            pivot: sum,
-                            needed,
-                        });
-                    }
-                    self.factor[(j, j)] = sum.sqrt();
-                } else {
-                    self.factor[(i, j)] = sum / self.factor[(j, j)];
-                }
+            let diagonal = self.mass_matrix[(j, j)];
+            let (before, rest) = self.factor.as_mut_slice().split_at_mut(j * n);
+            let column = &mut rest[j..n];
+            column.copy_from_slice(&self.mass_matrix.as_slice()[j * n + j..(j + 1) * n]);
+            for earlier in before.chunks_exact(n) {
+                subtract_multiple(column, earlier[j], &earlier[j..]);
             }
+            let (pivot, needed) = (column[0], SMALLEST_PIVOT * diagonal);
+            // Written so that a pivot that is not a number fails too.
+            if !(pivot > needed && pivot.is_finite()) {
+                let coordinate = coordinate_name(model, j);
+                return Err(DynamicsError::MassMatrixNotPositiveDefinite {
+                    row: j,
+                    coordinate,
+                    pivot,
+                    needed,
+                });
+            }
+            let root = pivot.sqrt();
+            column.iter_mut().for_each(|entry| *entry /= root);
         }
         Ok(())
     }
@@ -88,21 +89,25 @@ impl Workspace {
     /// Replaces `b` (nv) by `M^-1 b`, with the factor of the last [`Workspace::factorise`].
     pub fn solve_factored(&self, b: &mut DVector<f64>) {
         let n = self.velocities();
-        for i in 0..n {
-            let mut sum = b[i];
-            for k in 0..i {
-                sum -= self.factor[(i, k)] * b[k];
-            }
-            b[i] = sum / self.factor[(i, i)];
+        let (factor, b) = (self.factor.as_slice(), b.as_mut_slice());
+        for j in 0..n {
+            let column = &factor[j * n..(j + 1) * n];
+            b[j] /= column[j];
+            let known = b[j];
+            subtract_multiple(&mut b[j + 1..], known, &column[j + 1..]);
         }
-        for i in (0..n).rev() {
-            let mut sum = b[i];
-            for k in i + 1..n {
-                sum -= self.factor[(k, i)] * b[k];
-            }
-            b[i] = sum / self.factor[(i, i)];
+        for j in (0..n).rev() {
+            let column = &factor[j * n..(j + 1) * n];
+            let below = column[j + 1..].iter().zip(&b[j + 1..]);
+            let sum: f64 = below.map(|(l, x)| l * x).sum();
+            b[j] = (b[j] - sum) / column[j];
         }
     }
+}
+
+/// `a -= factor * b`, entry by entry.
+fn subtract_multiple(a: &mut [f64], factor: f64, b: &[f64]) {
+    a.iter_mut().zip(b).for_each(|(x, y)| *x -= factor * y);
 }
 
 fn coordinate_name(model: &Model, row: usize) -> String {

@@ -14,9 +14,8 @@
 //! for a turning joint; a sliding one adds `2 (R' omega_p) x a q_dot + a q_ddot` to acc instead.
 //! Gravity enters as an upward acceleration of the base.
 
-use super::kinematics::rotation_about;
 use crate::model::{BaseKind, JointKind, Model, State};
-use crate::spatial::{Pose, Vec3, Wrench};
+use crate::spatial::{Pose, Vec3, Wrench, exp_so3};
 
 /// A wrench on a body: world axes, moment about a point of the world.
 #[derive(Debug, Clone, Copy, PartialEq)]
@@ -132,7 +131,7 @@ fn move_outwards(model: &Model, state: &State, q_ddot: &[f64], i: usize, bodies:
             here.in_parent.translation += body.placement.rotation * joint.axis * q;
             (shift, shift_rate) = (joint.axis * speed, joint.axis * rate);
         } else {
-            here.in_parent.rotation *= rotation_about(&joint.axis, q);
+            here.in_parent.rotation *= exp_so3(&(joint.axis * q));
             (spin, spin_rate) = (joint.axis * speed, joint.axis * rate);
         }
     }

@@ -97,7 +97,7 @@ fn place_inertia(here: &mut BodyState, body: &Body) {
 }
 
 /// Rotation by `angle` about a unit axis (Rodrigues): `cos I + sin [a]x + (1 - cos) a a'`.
-pub(super) fn rotation_about(axis: &Vec3, angle: f64) -> Mat3 {
+fn rotation_about(axis: &Vec3, angle: f64) -> Mat3 {
     let (s, c) = angle.sin_cos();
     let t = 1.0 - c;
     let (x, y, z) = (axis.x, axis.y, axis.z);

@@ -1,3 +1,183 @@
 //! One function: from a question to its answer.
+//!
+//! The order is that of the method: predict over the latency, work out the state, assemble, solve by priority,
+//! certify, report.
 
 pub mod answer;
+mod dynamics;
+mod ground;
+mod latency;
+mod limits;
+mod report;
+
+use std::sync::Arc;
+use std::sync::atomic::AtomicBool;
+
+use crate::certify;
+use crate::contact::{ContactError, Law, Rest};
+use crate::problem::question::{DynamicsQuestion, Question};
+use crate::problem::scene::{Scene, SceneError};
+use crate::problem::{Assembly, assemble};
+use crate::solve::{self, HierarchySolution, SolveError};
+use answer::{Answer, DynamicsReport, Status, Warning};
+
+/// Above this `omega_max T` the tick is long for the bed, and the answer warns.
+pub const TICK_WARNING: f64 = 0.3;
+/// Above this share of the normal force the linearisation error is warned about.
+pub const LINEARISATION_WARNING: f64 = 0.01;
+
+/// Why a valid question has no answer at all.
+#[derive(Debug, Clone, PartialEq, thiserror::Error)]
+pub enum Trouble {
+    /// The ground under a sole cannot be worked out at this state (e.g. the explicit rule would be unstable).
+    #[error(transparent)]
+    Scene(#[from] SceneError),
+    /// The state after the latency cannot be predicted: the physics rows are singular (rigid soles that fight).
+    #[error("the state after the latency cannot be predicted: rigid soles constrain the robot more than once")]
+    Latency,
+    /// The solver refused its input: a mistake of ours.
+    #[error("the assembled problem was refused: {0}")]
+    Solver(#[from] SolveError),
+}
+
+impl Trouble {
+    fn contact(contact: usize, sole: &str, source: ContactError) -> Trouble {
+        Trouble::Scene(SceneError::Contact { contact, sole: sole.into(), source })
+    }
+
+    /// The contact at fault, where there is one.
+    pub fn contact_index(&self) -> Option<usize> {
+        match self {
+            Trouble::Scene(SceneError::Contact { contact, .. }) => Some(*contact),
+            _ => None,
+        }
+    }
+}
+
+/// Everything worked out on the way, for reports and tests.
+pub(crate) struct Work {
+    question: Question,
+    scene: Scene,
+    assembly: Assembly,
+    solution: HierarchySolution,
+}
+
+/// Answers `question`. Setting `cancel` ends the work early with [`Status::Cancelled`].
+pub fn solve(question: &Question, cancel: &Arc<AtomicBool>) -> Result<Answer, Trouble> {
+    let question = latency::predict(question)?;
+    let scene = Scene::new(&question)?;
+    let violations = limits::vertex_violations(&question, &scene, cancel)?;
+    let assembly = assemble(&question, &scene, &violations);
+    let solution = solve::solve(&assembly.hierarchy, &solve::Options::default(), Some(cancel))?;
+    let work = Work { question, scene, assembly, solution };
+    Ok(answer(work))
+}
+
+/// Rigid-body terms of a state.
+pub fn dynamics(question: &DynamicsQuestion) -> DynamicsReport {
+    let model = &*question.model;
+    let places: Vec<_> = question
+        .frames
+        .iter()
+        .map(|&f| &model.frames[f])
+        .map(|f| dynamics::Place { name: &f.name, body: f.body, placement: f.placement })
+        .collect();
+    dynamics::report(model, &question.state, &question.velocity_axes, &question.gravity, &places)
+}
+
+fn answer(work: Work) -> Answer {
+    let mut warnings = Vec::new();
+    let ground = ground::report(&work.question, &work.scene);
+    let found = match work.solution.status {
+        solve::Status::Infeasible | solve::Status::Cancelled => None,
+        _ => Some(report::Found::new(&work)),
+    };
+    let certificate = found.as_ref().map(|found| found.certify(&work));
+    let status = status(&work.solution, certificate.as_ref());
+    ground_warnings(&work.question, &ground, &mut warnings);
+    let soles = report::soles(&work, found.as_ref());
+    linearisation_warnings(&soles, &mut warnings);
+    Answer {
+        status,
+        motion: found.as_ref().map(|f| f.motion(&work)),
+        tasks: report::tasks(&work, found.as_ref()),
+        levels: if found.is_some() { report::levels(&work) } else { Vec::new() },
+        binding: if found.is_some() { report::binding(&work) } else { Vec::new() },
+        margins: found.as_ref().map(|f| limits::margins(&work, f)).unwrap_or_default(),
+        free: if found.is_some() { report::free(&work) } else { Vec::new() },
+        blocking: report::blocking(&work),
+        dynamics: work.question.include.dynamics.then(|| Box::new(dynamics_of(&work.question))),
+        problem: work.question.include.problem.then(|| Box::new(work.assembly.hierarchy.clone())),
+        soles,
+        certificate,
+        ground,
+        warnings,
+    }
+}
+
+/// `Solved` is only said when the certificate holds.
+fn status(solution: &HierarchySolution, certificate: Option<&certify::Certificate>) -> Status {
+    let holds = certificate.is_some_and(|c| c.holds);
+    match solution.status {
+        solve::Status::Infeasible => Status::Infeasible,
+        solve::Status::Cancelled => Status::Cancelled,
+        solve::Status::IllPosed => Status::IllPosed,
+        solve::Status::Solved | solve::Status::Inaccurate if holds => Status::Solved,
+        solve::Status::Solved | solve::Status::Inaccurate => Status::Inaccurate,
+    }
+}
+
+fn dynamics_of(question: &Question) -> DynamicsReport {
+    dynamics::report(&question.model, &question.state, &question.velocity_axes, &question.gravity, &[])
+}
+
+fn ground_warnings(question: &Question, ground: &answer::GroundReport, warnings: &mut Vec<Warning>) {
+    if ground.omega_max_tick > TICK_WARNING {
+        warnings.push(Warning {
+            code: "tick-long-for-ground",
+            text: format!(
+                "omega_max T = {:.2} is above {TICK_WARNING}: the bed rings at {:.0} rad/s, and the predicted change of \
+                 wrench over one tick carries errors of tens of per cent",
+                ground.omega_max_tick, ground.omega_max
+            ),
+        });
+    }
+    if let Some(rocking) = ground.rocking
+        && rocking.bed < rocking.weight
+    {
+        warnings.push(Warning {
+            code: "bed-too-soft-to-stand",
+            text: format!(
+                "the bed's rocking stiffness {:.1} N m/rad is below m g h = {:.1} N m/rad: standing still is unstable without feedback",
+                rocking.bed, rocking.weight
+            ),
+        });
+    }
+    let modelled_now = question.contacts.iter().any(|c| {
+        matches!(c.ground.law, Law::Bonded(_)) && c.ground.measured.is_none() && !matches!(c.ground.rest, Rest::Carries(_))
+    });
+    if modelled_now {
+        warnings.push(Warning {
+            code: "present-wrench-modelled",
+            text: "the present wrench of at least one sole comes from the ground model, not from a measurement: an error in stiffness \
+                   or rest pose enters the answer directly"
+                .into(),
+        });
+    }
+}
+
+fn linearisation_warnings(soles: &[answer::SoleAnswer], warnings: &mut Vec<Warning>) {
+    for sole in soles {
+        if let (Some([force, _]), Some(normal)) = (sole.linearisation_error, sole.normal_force)
+            && force > LINEARISATION_WARNING * normal.abs()
+        {
+            warnings.push(Warning {
+                code: "linearisation-error",
+                text: format!(
+                    "{}: at the predicted state the nonlinear law differs from the linear map by {force:.3} N, more than 1 % of the normal force {normal:.1} N",
+                    sole.name
+                ),
+            });
+        }
+    }
+}

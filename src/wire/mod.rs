@@ -28,6 +28,7 @@ mod state;
 mod strict;
 mod task;
 mod treatment;
+pub mod view;
 
 use std::sync::Arc;
 

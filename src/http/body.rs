@@ -1,0 +1,128 @@
+//! Reading a request body: JSON only, within a size and a time.
+
+use std::future::poll_fn;
+use std::pin::Pin;
+use std::sync::Arc;
+
+use axum::body::{Body, Bytes, HttpBody};
+use axum::extract::{FromRequest, Request};
+use axum::http::{HeaderMap, StatusCode, header};
+
+use super::problem::Problem;
+use super::router::Shared;
+
+/// The bytes of a JSON request body.
+#[derive(Debug)]
+pub struct JsonBytes(pub Bytes);
+
+impl FromRequest<Arc<Shared>> for JsonBytes {
+    type Rejection = Problem;
+
+    async fn from_request(request: Request, shared: &Arc<Shared>) -> Result<Self, Problem> {
+        check_type(request.headers())?;
+        let limit = shared.settings.body_limit;
+        check_length(request.headers(), limit)?;
+        let reading = read(request.into_body(), limit);
+        match tokio::time::timeout(shared.settings.body_time, reading).await {
+            Ok(result) => result.map(JsonBytes),
+            Err(_) => Err(Problem::new(
+                StatusCode::REQUEST_TIMEOUT,
+                "slow-body",
+                "Body came too slowly",
+                format!("the body must arrive within {} s", shared.settings.body_time.as_secs_f64()),
+            )),
+        }
+    }
+}
+
+/// A page in a browser can send a form or plain text to any address without asking; JSON it cannot.
+fn check_type(headers: &HeaderMap) -> Result<(), Problem> {
+    let mut given = headers.get_all(header::CONTENT_TYPE).iter();
+    let json = match (given.next(), given.next()) {
+        (Some(value), None) => value.to_str().is_ok_and(is_json),
+        _ => false,
+    };
+    if !json {
+        return Err(Problem::new(
+            StatusCode::UNSUPPORTED_MEDIA_TYPE,
+            "not-json",
+            "Content-Type is not application/json",
+            "send one Content-Type header with application/json",
+        ));
+    }
+    let encoded = headers.get_all(header::CONTENT_ENCODING).iter().any(|value| value != "identity");
+    if encoded {
+        return Err(Problem::new(
+            StatusCode::UNSUPPORTED_MEDIA_TYPE,
+            "encoded-body",
+            "Content-Encoding is not supported",
+            "send the body as it is, without compression",
+        ));
+    }
+    Ok(())
+}
+
+fn is_json(value: &str) -> bool {
+    let essence = value.split(';').next().unwrap_or_default();
+    essence.trim_matches([' ', '\t']).eq_ignore_ascii_case("application/json")
+}
+
+/// Refuses by the announced length, before a byte of the body is read.
+fn check_length(headers: &HeaderMap, limit: usize) -> Result<(), Problem> {
+    let announced = headers
+        .get(header::CONTENT_LENGTH)
+        .and_then(|value| value.to_str().ok())
+        .and_then(|text| text.parse::<u64>().ok());
+    match announced {
+        Some(length) if length > limit as u64 => Err(too_large(limit)),
+        _ => Ok(()),
+    }
+}
+
+/// Reads frame by frame, so that a body without an announced length stops at the limit as well.
+async fn read(mut body: Body, limit: usize) -> Result<Bytes, Problem> {
+    let mut bytes = Vec::with_capacity(usize::try_from(body.size_hint().lower()).unwrap_or(0).min(limit));
+    while let Some(frame) = poll_fn(|context| Pin::new(&mut body).poll_frame(context)).await {
+        let frame = frame.map_err(|_| broken())?;
+        if let Ok(data) = frame.into_data() {
+            if data.len() > limit - bytes.len() {
+                return Err(too_large(limit));
+            }
+            bytes.extend_from_slice(&data);
+        }
+    }
+    Ok(Bytes::from(bytes))
+}
+
+fn too_large(limit: usize) -> Problem {
+    Problem::new(
+        StatusCode::PAYLOAD_TOO_LARGE,
+        "body-too-large",
+        "Body too large",
+        format!("a request body may have at most {limit} bytes"),
+    )
+}
+
+fn broken() -> Problem {
+    Problem::new(
+        StatusCode::BAD_REQUEST,
+        "broken-body",
+        "Body broke off",
+        "the request body ended early or its chunks are malformed",
+    )
+}
+
+#[cfg(test)]
+mod tests {
+    use super::is_json;
+
+    #[test]
+    fn json_types_are_told_from_the_rest() {
+        for good in ["application/json", "Application/JSON", "application/json; charset=utf-8", "application/json ;x=y"] {
+            assert!(is_json(good), "{good}");
+        }
+        for bad in ["", "text/plain", "application/jsonp", "application/json+x", "text/plain; application/json", ";application/json", "application/x-www-form-urlencoded"] {
+            assert!(!is_json(bad), "{bad}");
+        }
+    }
+}

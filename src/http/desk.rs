@@ -1,0 +1,102 @@
+//! Work at the desk: as many jobs as permits, a bounded queue behind them, a time limit, and a
+//! flag that tells a job to stop once nobody waits for its answer.
+
+use std::sync::Arc;
+use std::sync::atomic::{AtomicBool, Ordering};
+use std::time::{Duration, Instant};
+
+use axum::http::StatusCode;
+use tokio::sync::Semaphore;
+
+use super::problem::{Problem, internal, panic_text};
+use super::settings::{MOST_WAITING, Settings};
+
+/// Permits, seats and the time limit.
+#[derive(Debug)]
+pub struct Desk {
+    permits: Arc<Semaphore>,
+    seats: Arc<Semaphore>,
+    time_limit: Duration,
+}
+
+/// Raises the flag when the request's future goes away: answered, timed out or hung up.
+struct CancelOnDrop(Arc<AtomicBool>);
+
+impl Drop for CancelOnDrop {
+    fn drop(&mut self) {
+        self.0.store(true, Ordering::Relaxed);
+    }
+}
+
+impl Desk {
+    /// A desk with the bounds of `settings`.
+    pub fn new(settings: &Settings) -> Self {
+        let workers = settings.workers.clamp(1, MOST_WAITING);
+        Desk {
+            permits: Arc::new(Semaphore::new(workers)),
+            seats: Arc::new(Semaphore::new(workers + settings.queue.min(MOST_WAITING))),
+            time_limit: settings.time_limit,
+        }
+    }
+
+    /// Runs `job` on a thread of its own, off the asynchronous runtime, and says how long it waited.
+    ///
+    /// The job keeps its permit and its seat until it returns, even after its client has gone: so
+    /// never more than `workers` jobs run, whatever the clients do.
+    ///
+    /// # Errors
+    /// 503 when every seat is taken, 504 past the time limit, 500 when the job panics.
+    pub async fn run<T, J>(&self, job: J) -> Result<(T, Duration), Problem>
+    where
+        T: Send + 'static,
+        J: FnOnce(&Arc<AtomicBool>) -> T + Send + 'static,
+    {
+        let seat = Arc::clone(&self.seats).try_acquire_owned().map_err(|_| busy())?;
+        let flag = Arc::new(AtomicBool::new(false));
+        let _cancel = CancelOnDrop(Arc::clone(&flag));
+        let arrived = Instant::now();
+        let permits = Arc::clone(&self.permits);
+        let work = async move {
+            let permit = permits.acquire_owned().await.map_err(|_| internal())?;
+            let waited = arrived.elapsed();
+            let running = tokio::task::spawn_blocking(move || {
+                let _held = (seat, permit);
+                job(&flag)
+            });
+            match running.await {
+                Ok(result) => Ok((result, waited)),
+                Err(failure) => Err(after_failure(failure)),
+            }
+        };
+        match tokio::time::timeout(self.time_limit, work).await {
+            Ok(result) => result,
+            Err(_) => Err(self.too_late()),
+        }
+    }
+
+    fn too_late(&self) -> Problem {
+        Problem::new(
+            StatusCode::GATEWAY_TIMEOUT,
+            "time-limit",
+            "Time limit reached",
+            format!("no answer within {} s; the work was called off", self.time_limit.as_secs_f64()),
+        )
+    }
+}
+
+fn busy() -> Problem {
+    Problem::new(
+        StatusCode::SERVICE_UNAVAILABLE,
+        "busy",
+        "All workers busy and the queue is full",
+        "ask again after the time that Retry-After gives",
+    )
+}
+
+fn after_failure(failure: tokio::task::JoinError) -> Problem {
+    match failure.try_into_panic() {
+        Ok(panic) => tracing::error!(panic = panic_text(panic.as_ref()), "a job panicked"),
+        Err(failure) => tracing::error!(%failure, "a job did not finish"),
+    }
+    internal()
+}

@@ -1,0 +1,147 @@
+//! From a request's bytes to a document's bytes: the one path that service and command line share.
+
+use std::sync::Arc;
+use std::sync::atomic::AtomicBool;
+use std::time::{Duration, Instant};
+
+use super::models::Models;
+use super::settings::MODELS_KEPT;
+use crate::reference::answer::Status;
+use crate::reference::{self, Trouble};
+use crate::wire::{self, Fault, ModelSource, Refusal};
+
+/// What is asked for.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Errand {
+    /// Keep a model.
+    Register,
+    /// Rigid-body terms of a state.
+    Dynamics,
+    /// Torques and wrenches.
+    Solve,
+}
+
+/// A document, and what the transport needs to know of it.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Document {
+    /// The JSON text.
+    pub body: Vec<u8>,
+    /// How a solve ended; none for other documents.
+    pub status: Option<Status>,
+    /// Id of the model that was registered.
+    pub model: Option<String>,
+    /// Where the time went. Never part of the body, which is the same every time.
+    pub timings: Vec<(&'static str, Duration)>,
+}
+
+/// Turns requests into documents. The service holds one; tests put their own in its place.
+pub trait Work: Send + Sync + 'static {
+    /// Does the errand; stops soon after `cancel` is raised.
+    ///
+    /// # Errors
+    /// A refusal names what is wrong with the request.
+    fn run(&self, errand: Errand, body: &[u8], cancel: &Arc<AtomicBool>) -> Result<Document, Refusal>;
+
+    /// The document of a registered model.
+    fn model(&self, id: &str) -> Option<Vec<u8>>;
+}
+
+/// The real work, with the models registered so far.
+#[derive(Debug)]
+pub struct Catalogue {
+    models: Models,
+}
+
+impl Default for Catalogue {
+    fn default() -> Self {
+        Catalogue { models: Models::new(MODELS_KEPT) }
+    }
+}
+
+impl Work for Catalogue {
+    fn run(&self, errand: Errand, body: &[u8], cancel: &Arc<AtomicBool>) -> Result<Document, Refusal> {
+        match errand {
+            Errand::Register => self.register(body),
+            Errand::Dynamics => self.dynamics(body),
+            Errand::Solve => self.solve(body, cancel),
+        }
+    }
+
+    fn model(&self, id: &str) -> Option<Vec<u8>> {
+        self.models.find(id).map(|model| wire::write_model(&model))
+    }
+}
+
+impl Catalogue {
+    fn register(&self, body: &[u8]) -> Result<Document, Refusal> {
+        let mut clock = Clock::start();
+        let model = Arc::new(wire::read_model(body)?);
+        clock.lap("read");
+        self.models.keep(Arc::clone(&model));
+        let body = wire::write_model(&model);
+        clock.lap("write");
+        Ok(Document { body, status: None, model: Some(model.id.clone()), timings: clock.laps })
+    }
+
+    fn dynamics(&self, body: &[u8]) -> Result<Document, Refusal> {
+        let mut clock = Clock::start();
+        let question = wire::read_dynamics(body, &self.models)?;
+        clock.lap("read");
+        let report = reference::dynamics(&question);
+        clock.lap("dynamics");
+        let body = wire::write_dynamics(&question, &report, &wire::fingerprint(body));
+        clock.lap("write");
+        Ok(Document { body, status: None, model: None, timings: clock.laps })
+    }
+
+    fn solve(&self, body: &[u8], cancel: &Arc<AtomicBool>) -> Result<Document, Refusal> {
+        let mut clock = Clock::start();
+        let question = wire::read_solve(body, &self.models)?;
+        clock.lap("read");
+        let answer = reference::solve(&question, cancel).map_err(|trouble| refusal(&trouble))?;
+        if answer.status == Status::Cancelled {
+            return Err(Refusal::new(504, "time-limit", "Time limit reached", "the work was called off"));
+        }
+        clock.lap("solve");
+        let body = wire::write_answer(&question, &answer, &wire::fingerprint(body));
+        clock.lap("write");
+        Ok(Document { body, status: Some(answer.status), model: None, timings: clock.laps })
+    }
+}
+
+/// A question that passed the gate and yet leads nowhere: the member at fault is named where there is one.
+fn refusal(trouble: &Trouble) -> Refusal {
+    let pointer = match (trouble, trouble.contact_index()) {
+        (_, Some(contact)) => format!("/contacts/{contact}"),
+        (Trouble::Latency, None) => "/latency".to_owned(),
+        (Trouble::Scene(_), None) => String::new(),
+        (Trouble::Solver(error), None) => {
+            tracing::error!(%error, "the assembled problem was refused");
+            return Refusal::new(500, "defect", "A defect of this service", trouble.to_string());
+        }
+    };
+    Refusal::unusable(vec![Fault {
+        pointer,
+        expected: "a state and ground from which an answer can be computed".to_owned(),
+        got: trouble.to_string(),
+        line: None,
+    }])
+}
+
+/// Named laps of one request.
+struct Clock {
+    last: Instant,
+    laps: Vec<(&'static str, Duration)>,
+}
+
+impl Clock {
+    fn start() -> Self {
+        Clock { last: Instant::now(), laps: Vec::new() }
+    }
+
+    fn lap(&mut self, name: &'static str) {
+        let now = Instant::now();
+        self.laps.push((name, now - self.last));
+        self.last = now;
+    }
+}

@@ -1,0 +1,122 @@
+//! The question's state worked out: dynamics, soles, and the map from acceleration to wrench.
+
+use nalgebra::DMatrix;
+
+use super::question::Question;
+use crate::contact::{ContactError, Patch, SoleMotion, TickMap, tick};
+use crate::dynamics::{self, Workspace};
+use crate::spatial::{Vec3, Vec6, Wrench};
+
+/// One sole on the ground.
+#[derive(Debug, Clone)]
+pub struct SoleScene {
+    /// Sole name.
+    pub name: String,
+    /// Pose and velocity of the sole frame.
+    pub motion: SoleMotion,
+    /// Jacobian, 6 x nv, linear rows first, world axes, sole-frame origin.
+    pub jacobian: DMatrix<f64>,
+    /// `J_dot nu`.
+    pub bias_acceleration: Vec6,
+    /// Wrench over the tick as a function of the sole's acceleration.
+    pub map: TickMap,
+}
+
+/// The state of one question, worked out.
+#[derive(Debug, Clone)]
+pub struct Scene {
+    /// Rigid-body terms.
+    pub dynamics: Workspace,
+    /// One entry per contact.
+    pub soles: Vec<SoleScene>,
+    /// Generalised force of the external wrenches (nv).
+    pub external: nalgebra::DVector<f64>,
+    /// External wrenches in the world: point, its velocity, load about the point.
+    pub loads: Vec<PlacedLoad>,
+}
+
+/// An external wrench in the world.
+#[derive(Debug, Clone, Copy)]
+pub struct PlacedLoad {
+    /// Point of application (m).
+    pub point: Vec3,
+    /// Its velocity (m/s).
+    pub velocity: Vec3,
+    /// Load about the point.
+    pub wrench: Wrench,
+}
+
+/// The state cannot be worked out.
+#[derive(Debug, Clone, PartialEq, thiserror::Error)]
+pub enum SceneError {
+    /// The ground under a sole.
+    #[error("contact {contact} (sole {sole}): {source}")]
+    Contact {
+        /// Index of the contact.
+        contact: usize,
+        /// Sole name.
+        sole: String,
+        /// What is wrong.
+        source: ContactError,
+    },
+}
+
+impl Scene {
+    /// Works out `question`'s state (as it stands: latency has been dealt with).
+    pub fn new(question: &Question) -> Result<Scene, SceneError> {
+        let model = &*question.model;
+        let mut ws = Workspace::new(model);
+        ws.update(model, &question.state, &question.gravity);
+        let mut soles = Vec::with_capacity(question.contacts.len());
+        for (index, contact) in question.contacts.iter().enumerate() {
+            let sole = &model.soles[contact.sole];
+            let motion = SoleMotion {
+                pose: dynamics::frame_pose(model, &ws, sole.body, &sole.placement),
+                twist: dynamics::frame_twist(model, &ws, sole.body, &sole.placement),
+            };
+            let mut jacobian = DMatrix::zeros(6, model.velocities());
+            dynamics::frame_jacobian(model, &ws, sole.body, &sole.placement, &mut jacobian);
+            let patch = Patch { shape: &sole.shape, ground: &contact.ground };
+            let map = tick::tick_map(&patch, &motion, question.tick.rule, question.tick.length, ws.mass)
+                .map_err(|source| SceneError::Contact { contact: index, sole: sole.name.clone(), source })?;
+            soles.push(SoleScene {
+                name: sole.name.clone(),
+                motion,
+                jacobian,
+                bias_acceleration: dynamics::frame_bias_acceleration(model, &ws, sole.body, &sole.placement),
+                map,
+            });
+        }
+        let mut external = nalgebra::DVector::zeros(model.velocities());
+        let mut loads = Vec::with_capacity(question.external.len());
+        for load in &question.external {
+            let frame = &model.frames[load.frame];
+            let at = frame.placement.compose(&crate::spatial::Pose {
+                rotation: crate::spatial::Mat3::identity(),
+                translation: load.point,
+            });
+            let point = dynamics::frame_pose(model, &ws, frame.body, &at).translation;
+            let velocity = dynamics::frame_twist(model, &ws, frame.body, &at).linear;
+            dynamics::external_generalised_force(model, &ws, frame.body, &point, &load.wrench, &mut external);
+            loads.push(PlacedLoad { point, velocity, wrench: load.wrench });
+        }
+        Ok(Scene { dynamics: ws, soles, external, loads })
+    }
+
+    /// Rate of momentum under the present wrenches (N; N m about the centre of mass): `sum X w + m g`.
+    pub fn momentum_rate_now(&self, gravity: &Vec3) -> [Vec3; 2] {
+        let c = self.dynamics.center_of_mass;
+        let mut rate = [gravity * self.dynamics.mass, Vec3::zeros()];
+        let mut add = |point: &Vec3, w: &Wrench| {
+            rate[0] += w.force;
+            rate[1] += w.moment + (point - c).cross(&w.force);
+        };
+        for sole in &self.soles {
+            add(&sole.motion.pose.translation, &sole.map.now);
+        }
+        for load in &self.loads {
+            add(&load.point, &load.wrench);
+        }
+        rate
+    }
+}
