@@ -7,6 +7,8 @@ use Side::{Left, Right};
 
 /// Tasks with more rows than this are shown by their largest residual in each unit.
 const ROWS_SHOWN: usize = 6;
+/// Binding limits shown.
+const BINDING_SHOWN: usize = 12;
 /// Free directions shown, and parts of each.
 const FREE_SHOWN: usize = 3;
 
@@ -49,6 +51,11 @@ pub fn meaning(status: &str) -> &'static str {
 /// A value in a table cell; a dash where there is none.
 fn cell(value: View<'_>, digits: usize) -> String {
     value.number().map_or_else(|| "-".to_owned(), |value| number(value, digits))
+}
+
+/// The same in powers of ten.
+fn power(value: View<'_>) -> String {
+    value.number().map_or_else(|| "-".to_owned(), |value| format!("{value:.1e}"))
 }
 
 fn scaled(value: View<'_>, factor: f64, digits: usize) -> String {
@@ -226,12 +233,12 @@ fn levels(out: &mut String, answer: View<'_>) {
     for level in answer.at("/levels").items() {
         table.row([
             cell(level.at("/priority"), 0),
-            cell(level.at("/cost"), 6),
+            power(level.at("/cost")),
             cell(level.at("/rows"), 0),
             cell(level.at("/rank"), 0),
             cell(level.at("/freedom_left"), 0),
             if level.at("/refined").truth() == Some(true) { "yes" } else { "no" }.to_owned(),
-            cell(level.at("/error_bound"), 12),
+            power(level.at("/error_bound")),
         ]);
     }
     section(out, "Priorities", &table);
@@ -257,16 +264,20 @@ fn margins(out: &mut String, answer: View<'_>) {
 
 fn binding(out: &mut String, answer: View<'_>) {
     let mut table = Table::new(&[("limit", Left), ("part", Left), ("priority", Right), ("multiplier", Right), ("per", Left)]);
-    for binding in answer.at("/binding").items() {
+    for binding in answer.at("/binding").items().take(BINDING_SHOWN) {
         table.row([
             text(binding.at("/limit")),
             text(binding.at("/part")),
             cell(binding.at("/priority"), 0),
-            cell(binding.at("/multiplier"), 6),
+            power(binding.at("/multiplier")),
             text(binding.at("/unit")),
         ]);
     }
     section(out, "Binding limits (cost per unit of the limit)", &table);
+    let more = answer.at("/binding").items().count().saturating_sub(BINDING_SHOWN);
+    if more > 0 {
+        push_line(out, &format!("  and {more} more in the document"));
+    }
 }
 
 fn blocking(out: &mut String, answer: View<'_>) {
@@ -297,13 +308,12 @@ fn free(out: &mut String, answer: View<'_>) {
 
 fn certificate(out: &mut String, answer: View<'_>) {
     let mut table = Table::new(&[("check", Left), ("figure", Right), ("bound", Right), ("", Left), ("worst at", Left)]);
-    let figure = |view: View<'_>| view.number().map_or_else(|| "-".to_owned(), |value| format!("{value:.1e}"));
     for check in answer.at("/certificate/checks").items() {
         table.row([
             text(check.at("/name")),
-            figure(check.at("/value")),
-            figure(check.at("/bound")),
-            text(check.at("/relative_to")),
+            power(check.at("/value")),
+            power(check.at("/bound")),
+            check.at("/relative_to").text().and_then(|long| long.split(" (").next()).unwrap_or("-").to_owned(),
             text(check.at("/worst")),
         ]);
     }
@@ -316,8 +326,8 @@ fn certificate(out: &mut String, answer: View<'_>) {
         ] {
             table.row([
                 format!("{name}, priority {priority}"),
-                figure(level.at(at)),
-                figure(level.at("/bound")),
+                power(level.at(at)),
+                power(level.at("/bound")),
                 "relative".to_owned(),
             ]);
         }

@@ -105,35 +105,43 @@ fn joints(out: &mut String, compliant: View<'_>, rigid: View<'_>) {
 
 /// What the difference means, from the figures of the two answers.
 fn verdict(out: &mut String, compliant: View<'_>, rigid: View<'_>) {
-    let mut jump: f64 = 0.0;
-    let mut change: f64 = 0.0;
+    let (mut soft_change, mut rigid_change) = ([0.0_f64; 2], [0.0_f64; 2]);
+    let mut moved = [0.0_f64; 2];
     for sole in compliant.at("/soles").items() {
         let name = sole.at("/name").text().unwrap_or("-");
         if let (Some(now), Some(soft), Some(hard)) = (present(sole), at_end(compliant, name), at_end(rigid, name)) {
-            for ((now, soft), hard) in now.iter().zip(soft).zip(hard).take(3) {
-                jump = jump.max((hard - now).abs());
-                change = change.max((soft - now).abs());
+            for (axis, ((now, soft), hard)) in now.iter().zip(soft).zip(hard).enumerate() {
+                let part = usize::from(axis >= 3);
+                soft_change[part] = soft_change[part].max((soft - now).abs());
+                rigid_change[part] = rigid_change[part].max((hard - now).abs());
             }
         }
+        for (moved, part) in moved.iter_mut().zip(["/acceleration/linear", "/acceleration/angular"]) {
+            *moved = sole.at(part).numbers().into_iter().fold(*moved, |most, value| most.max(value.abs()));
+        }
     }
+    push_line(out, "");
     let Some(&(joint, soft, hard)) = torques(compliant, rigid).first() else {
-        push_text(out, "", "The rigid request has no answer to compare.");
+        push_text(out, "", "One of the two requests has no answer, so there are no torques to compare.");
         return;
     };
-    push_line(out, "");
     push_text(
         out,
         "",
         &format!(
-            "What that means: the rigid answer counts on a sole force that differs from the present one by up to {} N at \
-             once. Ground that gives changes its force only as the sole moves, and the compliant answer, which knows \
-             that, moves it by up to {} N within this tick. A controller that sent the rigid torques would have the \
-             robot accelerate by what the ground does not deliver ({} off by {} N m), and would correct against it in \
-             the next tick.",
-            number(jump, 1),
-            number(change, 1),
+            "What that means: taken for rigid, the floor would deliver wrenches up to {} N and {} N m away from the \
+             present ones at once, with the soles at rest. A floor that gives changes its wrench only as the sole \
+             moves: the compliant answer changes it by up to {} N and {} N m within the tick, and for that moves the \
+             soles with up to {} m/s^2 and {} rad/s^2. A controller that sent the rigid torques (off by {} N m at {}) \
+             would not get the accelerations it computed.",
+            number(rigid_change[0], 1),
+            number(rigid_change[1], 2),
+            number(soft_change[0], 1),
+            number(soft_change[1], 2),
+            number(moved[0], 2),
+            number(moved[1], 2),
+            number((hard - soft).abs(), 2),
             joint,
-            number((hard - soft).abs(), 1),
         ),
     );
 }

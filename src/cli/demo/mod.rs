@@ -14,7 +14,7 @@ use super::{Outcome, files, log, report};
 use crate::http::{Catalogue, Running, Settings};
 use crate::wire::view::{Parsed, rigid_twin};
 
-/// The scenario: a fictional biped on a soft floor, pushed at the torso.
+/// The scenario, invented: a fictional biped on a soft floor, about to shift its centre of mass.
 const REQUEST: &str = include_str!("request.json");
 
 /// Arguments of `underfoot demo`.
@@ -59,9 +59,9 @@ fn show(address: SocketAddr) -> Result<(String, Outcome), String> {
     push_text(
         &mut out,
         "",
-        "A fictional biped of 39 kg and 19 joints stands on a soft floor (2 MN/m^3, about 5 mm of sink), its arms \
-         moving, and is pushed forward at the torso with 40 N. Which torques and which sole wrenches are right for \
-         the next 5 ms? The request goes to a service started just now, over a TCP socket, as yours would.",
+        "A fictional biped of 39 kg and 19 joints stands on a soft floor (4 MN/m^3, about 2.4 mm of sink), its arms \
+         swinging, and wants its centre of mass 5 mm further forward. Which torques and which sole wrenches are \
+         right for the next 5 ms? The request goes to a service started just now, over a TCP socket, as yours would.",
     );
     push_line(&mut out, "");
     let (compliant, timing) = ask(address, REQUEST.as_bytes())?;
