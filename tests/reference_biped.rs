@@ -18,7 +18,14 @@ fn solve(question: &Question) -> Answer {
 
 fn solved(question: &Question) -> Answer {
     let answer = solve(question);
-    assert_eq!(answer.status, Status::Solved, "{:#?}\n{:?}", answer.certificate, answer.blocking);
+    assert_eq!(
+        answer.status,
+        Status::Solved,
+        "{:#?}\n{:?}\n{:?}",
+        answer.certificate,
+        answer.blocking,
+        answer.levels
+    );
     answer
 }
 
@@ -48,7 +55,17 @@ fn rigid(mut question: Question, stop: bool) -> Question {
         contact.ground.law = Law::Rigid { stop };
         contact.ground.rest = Rest::Measured;
     }
-    question.tasks.retain(|t| !matches!(t.kind, TaskKind::Wrench { .. }));
+    by_value(question)
+}
+
+/// Wrench tasks that ask for the value itself. Without them stiff ground leaves the inner forces to the posture task, which
+/// gains ever less from ever larger ones: there is no limit to meet.
+fn by_value(mut question: Question) -> Question {
+    for task in &mut question.tasks {
+        if let TaskKind::Wrench { approach, .. } = &mut task.kind {
+            *approach = None;
+        }
+    }
     question
 }
 
@@ -80,16 +97,16 @@ fn momentum_is_followed_and_total_force_is_what_newton_asks() {
 #[test]
 fn stiffness_without_bound_meets_rigid_ground() {
     let rigid_answer = solved(&rigid(at_first_rate(biped::standing(2e6)), false));
-    let mut last = f64::INFINITY;
-    for stiffness in [1e9, 1e11, 1e13] {
-        let mut question = at_first_rate(biped::standing(stiffness));
-        question.tasks.retain(|t| !matches!(t.kind, TaskKind::Wrench { .. }));
-        let answer = solved(&question);
-        let difference = largest_difference(&torques(&answer), &torques(&rigid_answer));
-        assert!(difference < last / 10.0, "{stiffness:e}: {difference:e} after {last:e}");
-        last = difference;
+    let difference = |stiffness: f64| {
+        let answer = solved(&by_value(at_first_rate(biped::standing(stiffness))));
+        largest_difference(&torques(&answer), &torques(&rigid_answer))
+    };
+    // Derived: the sole's acceleration is `(drift - w) / G` with G proportional to k, so the gap closes like 1/k.
+    let gaps = [1e9, 1e11, 1e13].map(difference);
+    for pair in gaps.windows(2) {
+        assert!((90.0..110.0).contains(&(pair[0] / pair[1])), "{gaps:?}");
     }
-    assert!(last < 1e-6, "{last:e}");
+    assert!(gaps[2] < 1e-4, "{gaps:?}");
 }
 
 #[test]
@@ -107,8 +124,7 @@ fn stop_is_the_limit_of_stiff_ground_in_motion() {
     };
     let rigid_answer = solved(&rigid(at_first_rate(moving(biped::standing(2e6))), true));
     for stiffness in [1e10, 1e12] {
-        let mut question = at_first_rate(moving(biped::standing(stiffness)));
-        question.tasks.retain(|t| !matches!(t.kind, TaskKind::Wrench { .. }));
+        let mut question = by_value(at_first_rate(moving(biped::standing(stiffness))));
         // b/k goes to zero with the sole's memory: only then does the end of the tick find it at rest at its rest pose.
         for contact in &mut question.contacts {
             if let Law::Bonded(m) = &mut contact.ground.law {

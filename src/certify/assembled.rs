@@ -7,13 +7,14 @@
 //! - groups `contact:<sole>` and `vertices:<sole>`: for any acceleration (any vertex forces) the rows, solved for
 //!   w+, must give the wrench of the law (the sum of the forces). On rigid ground the rows hold no wrench:
 //!   they must vanish at an acceleration that moves the sole as prescribed, and fix the sole's
-//!   whole acceleration.
+//!   whole acceleration. Where the joints allow no such acceleration there is no answer to certify.
 //!
 //! Columns are found by name: `acceleration:<..>` in the order of the generalised velocity,
 //! `torque:<joint>`, `wrench:<sole>:<fx..mz>`, `vertex:<sole>:<i>:<x|y|z>`; physical = scaled * scale.
 
 use nalgebra::{DMatrix, DVector};
 
+use super::friction::spread;
 use super::physics::{PHYSICS_BOUND, gathered, vertex_arms};
 use super::rows::row_size;
 use super::situation::Situation;
@@ -21,7 +22,6 @@ use super::worst::Worst;
 use super::{Check, Claim};
 use crate::conic::Hierarchy;
 use crate::contact::Law;
-use crate::problem::question::FrictionSet;
 use crate::spatial::{Twist, Vec3, Vec6, Wrench};
 
 /// Points at which rows are compared, beside the answer.
@@ -31,6 +31,8 @@ const MISSING: f64 = 1e-13;
 
 /// The same where a sole's whole acceleration is concerned, whose Jacobian may lack directions.
 const LOST: f64 = 1e-11;
+/// Share of the acceleration by which a prescribed one is missed where the joints do not allow it.
+const UNREACHED: f64 = 1e-7;
 /// Sweeps of a singular value decomposition.
 const MAX_SWEEPS: usize = 10_000;
 
@@ -230,7 +232,7 @@ impl Probe<'_> {
 
     fn vertices(&self, i: usize, worst: &mut Worst) {
         let contact = &self.situation.question.contacts[i];
-        if !matches!(contact.friction, Some(f) if f.set == FrictionSet::Vertex) {
+        if !spread(self.situation, contact) {
             return;
         }
         let arms = vertex_arms(self.situation, contact);
@@ -305,12 +307,16 @@ impl Probe<'_> {
         for point in &self.points {
             let present = self.columns.acceleration.iter().map(|&j| point[j]);
             let is = &start + &way * DVector::from_iterator(n, present);
-            let Ok(step) = ours.solve(&(flat(&wanted) - is), cut(&ours)) else {
+            let Ok(step) = ours.solve(&(flat(&wanted) - &is), cut(&ours)) else {
                 return worst.record(f64::NAN, || name.to_string());
             };
             let mut x = point.clone();
             for (k, &j) in self.columns.acceleration.iter().enumerate() {
                 x[j] += step[k];
+            }
+            let reached = &is + &way * &step;
+            if (&reached - flat(&wanted)).norm() > UNREACHED * is.norm().max(self.situation.gravity) {
+                return;
             }
             for &r in &rows {
                 let size = row_size(&self.hierarchy.hard.matrix, &self.hierarchy.hard.rhs, r, &x).max(1.0);

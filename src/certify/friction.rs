@@ -26,32 +26,45 @@ pub fn hold(situation: &Situation, claim: &Claim, i: usize, end: &Wrench, worst:
     let Some(friction) = contact.friction else { return };
     let Some(remaining) = remaining(situation, friction.treatment) else { return };
     let rotation = present_rotation(situation, contact);
-    match friction.set {
-        FrictionSet::Wrench => {
-            let ends = excesses(situation, contact, &friction, &rotation, end);
-            let now = situation.now(i).map(|now| excesses(situation, contact, &friction, &rotation, &now));
-            for (k, (part, excess)) in ends.into_iter().enumerate() {
-                let before = now.as_ref().and_then(|now| now.get(k)).map_or(0.0, |n| n.1.max(0.0));
-                worst.record((excess - remaining * before) / situation.weight, || {
-                    format!("{} {part}", situation.name(contact))
-                });
-            }
+    if !spread(situation, contact) {
+        let ends = excesses(situation, contact, &friction, &rotation, end);
+        let now = situation.now(i).map(|now| excesses(situation, contact, &friction, &rotation, &now));
+        for (k, (part, excess)) in ends.into_iter().enumerate() {
+            let before = now.as_ref().and_then(|now| now.get(k)).map_or(0.0, |n| n.1.max(0.0));
+            worst.record((excess - remaining * before) / situation.weight, || {
+                format!("{} {part}", situation.name(contact))
+            });
         }
-        FrictionSet::Vertex if friction.treatment == Treatment::Hard => {
-            let forces = &claim.vertex_forces[i];
-            if forces.len() != vertex_arms(situation, contact).len() {
-                worst.record(f64::NAN, || format!("{} vertex forces missing", situation.name(contact)));
-            }
-            for (v, force) in forces.iter().enumerate() {
-                for (part, excess) in cone(&contact.ground.normal, &rotation, &friction, force) {
-                    worst.record(excess / situation.weight, || {
-                        format!("{} vertex {} {part}", situation.name(contact), v + 1)
-                    });
-                }
-            }
-        }
-        FrictionSet::Vertex => {}
+    } else if friction.treatment == Treatment::Hard {
+        hold_vertices(situation, contact, &friction, &rotation, &claim.vertex_forces[i], worst);
     }
+}
+
+fn hold_vertices(
+    situation: &Situation,
+    contact: &Contact,
+    friction: &Friction,
+    rotation: &Mat3,
+    forces: &[Vec3],
+    worst: &mut Worst,
+) {
+    if forces.len() != vertex_arms(situation, contact).len() {
+        worst.record(f64::NAN, || format!("{} vertex forces missing", situation.name(contact)));
+    }
+    for (v, force) in forces.iter().enumerate() {
+        for (part, excess) in cone(&contact.ground.normal, rotation, friction, force) {
+            worst.record(excess / situation.weight, || {
+                format!("{} vertex {} {part}", situation.name(contact), v + 1)
+            });
+        }
+    }
+}
+
+/// True where the friction set of a contact rests on vertex forces. A point foot has one vertex, its origin: there the
+/// wrench itself is the vertex force.
+pub fn spread(situation: &Situation, contact: &Contact) -> bool {
+    let polygon = matches!(situation.shape(contact), SoleShape::Polygon(_));
+    polygon && matches!(contact.friction, Some(f) if f.set == FrictionSet::Vertex)
 }
 
 fn present_rotation(situation: &Situation, contact: &Contact) -> Mat3 {
@@ -111,7 +124,9 @@ fn excesses(
         let m = polygon.moments();
         let centroid = rotation * Vec3::new(m.first[0] / m.area, m.first[1] / m.area, 0.0);
         let about = wrench.moment - centroid.cross(&wrench.force);
-        out.push(("yaw friction".to_string(), normal.dot(&about).abs() - radius * normal.dot(&wrench.force)));
+        let (turning, room) = (normal.dot(&about), radius * normal.dot(&wrench.force));
+        out.push(("yaw friction, one way".to_string(), turning - room));
+        out.push(("yaw friction, other way".to_string(), -turning - room));
     }
     out
 }

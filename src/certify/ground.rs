@@ -277,3 +277,149 @@ fn split(normal: &Vec3, along: f64, across: f64, v: &Vec3) -> Vec3 {
 fn sum(a: &Wrench, b: &Wrench) -> Wrench {
     Wrench { force: a.force + b.force, moment: a.moment + b.moment }
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::certify::rest;
+    use crate::contact::{Ground, Rest};
+    use crate::spatial::Pose;
+    use crate::spatial::polygon::Polygon;
+
+    fn rectangle() -> SoleShape {
+        let corners = vec![[0.11, -0.05], [0.11, 0.05], [-0.11, 0.05], [-0.11, -0.05]];
+        SoleShape::Polygon(Polygon::new(corners).expect("convex"))
+    }
+
+    fn hexagon() -> SoleShape {
+        let corners = vec![[0.14, -0.03], [0.14, 0.02], [0.10, 0.05], [-0.08, 0.04], [-0.08, -0.04], [0.08, -0.05]];
+        SoleShape::Polygon(Polygon::new(corners).expect("convex"))
+    }
+
+    /// CHECKS of the bonded sole: isotropic k = 3e6 N/m^3, b = 1.5e4 N s/m^3.
+    fn ground(rest: Rest) -> Ground {
+        let material = Material {
+            normal_stiffness: 3e6,
+            tangential_stiffness: 3e6,
+            normal_damping: 1.5e4,
+            tangential_damping: 1.5e4,
+        };
+        Ground { law: Law::Bonded(material), normal: Vec3::z(), rest, rest_twist: Twist::zero(), measured: None }
+    }
+
+    fn moving() -> SoleMotion {
+        SoleMotion {
+            pose: Pose {
+                rotation: exp_so3(&Vec3::new(0.03, -0.05, 0.02)),
+                translation: Vec3::new(0.001, -0.0015, -0.004),
+            },
+            twist: Twist { linear: Vec3::new(0.02, -0.01, -0.05), angular: Vec3::new(0.1, 0.3, -0.2) },
+        }
+    }
+
+    fn close(a: &Wrench, b: &Wrench, bound: f64) {
+        let off = (a.to_vec6() - b.to_vec6()).amax();
+        assert!(off <= bound, "off by {off}: {a:?} against {b:?}");
+    }
+
+    #[test]
+    fn law_at_a_turned_and_moving_sole() {
+        // Derived, by an independent quadrature to 1e-13.
+        let cases = [
+            (
+                rectangle(),
+                Vec3::new(-72.6, 102.3, 280.5),
+                Vec3::new(-1.6567053241189467, 12.982256316142955, -5.931621908958925),
+            ),
+            (
+                hexagon(),
+                Vec3::new(-60.94654203639363, 58.684077827203666, 163.08291358348845),
+                Vec3::new(-1.1454009614464178, 5.523661114485344, -2.872723414026121),
+            ),
+        ];
+        for (shape, force, moment) in cases {
+            let ground = ground(Rest::Pose(Pose::identity()));
+            let bed = rest::bed(&Patch { shape: &shape, ground: &ground }, &moving()).expect("soft");
+            close(&bed.law_now(), &Wrench { force, moment }, 1e-11);
+        }
+    }
+
+    #[test]
+    fn finite_turns_about_the_centre() {
+        // Derived: My = -266.2 sin(theta), Mz = -321.2 sin(psi).
+        let (shape, ground) = (rectangle(), ground(Rest::Pose(Pose::identity())));
+        for (axis, moment) in [(Vec3::y(), -127.62307837643885), (Vec3::z(), -153.99148299967004)] {
+            let pose = Pose { rotation: exp_so3(&(axis * 0.5)), translation: Vec3::zeros() };
+            let motion = SoleMotion { pose, twist: Twist::zero() };
+            let bed = rest::bed(&Patch { shape: &shape, ground: &ground }, &motion).expect("soft");
+            close(&bed.law_now(), &Wrench { force: Vec3::zeros(), moment: axis * moment }, 1e-10);
+        }
+    }
+
+    #[test]
+    fn linearised_end_is_the_derivative_of_the_exact_end() {
+        // Derived: second-order differences of the law itself, moving and turning ground, oblique normal.
+        for rule in [TickRule::BackwardEuler, TickRule::Trapezoid, TickRule::Explicit] {
+            let mut ground = ground(Rest::Pose(Pose::identity()));
+            ground.normal = Vec3::new(0.2, -0.1, 1.0).normalize();
+            ground.rest_twist = Twist { linear: Vec3::new(0.1, 0.0, 0.2), angular: Vec3::new(0.5, -0.3, 0.7) };
+            ground.law = Law::Bonded(Material {
+                normal_stiffness: 3e6,
+                tangential_stiffness: 1e6,
+                normal_damping: 1.5e4,
+                tangential_damping: 2e4,
+            });
+            let shape = hexagon();
+            let bed = rest::bed(&Patch { shape: &shape, ground: &ground }, &moving()).expect("soft");
+            let tick = (0.02, rule);
+            let a = Twist { linear: Vec3::new(3.0, -2.0, 5.0), angular: Vec3::new(7.0, 4.0, -9.0) };
+            let part = |s: f64| {
+                let scaled = Twist { linear: a.linear * s, angular: a.angular * s };
+                bed.end_exact(tick, &scaled).to_vec6()
+            };
+            let h = 1e-3;
+            let slope = (part(h) - part(-h)) / (2.0 * h);
+            close(&bed.along(tick, &a), &Wrench::from_vec6(&slope), 1e-5 * slope.amax());
+            close(&bed.end(tick, &Twist::zero()), &bed.end_exact(tick, &Twist::zero()), 1e-12);
+        }
+    }
+
+    #[test]
+    fn rest_poses_carry_what_they_should() {
+        let wanted = Wrench { force: Vec3::new(20.0, -35.0, 310.0), moment: Vec3::new(2.0, -9.0, 1.5) };
+        let shape = hexagon();
+        let mut still = moving();
+        still.twist = Twist::zero();
+        let ground = ground(Rest::Carries(wanted));
+        let bed = rest::bed(&Patch { shape: &shape, ground: &ground }, &still).expect("carried");
+        close(&bed.law_now(), &wanted, 1e-9);
+        // No tangential stiffness: what acts along the ground is not carried by any pose.
+        let mut slippery = ground;
+        slippery.law = Law::Bonded(Material {
+            normal_stiffness: 3e6,
+            tangential_stiffness: 0.0,
+            normal_damping: 1e4,
+            tangential_damping: 1e4,
+        });
+        assert!(rest::bed(&Patch { shape: &shape, ground: &slippery }, &still).is_none());
+    }
+
+    #[test]
+    fn touchdown_lays_the_sole_on_the_plane() {
+        let normal = Vec3::new(0.3, -0.2, 1.0).normalize();
+        let pose = moving().pose;
+        let plane_point = Vec3::new(0.4, 0.1, 0.02);
+        let mut ground = ground(Rest::Touchdown { pose, plane_point });
+        ground.normal = normal;
+        let shape = rectangle();
+        let bed = rest::bed(&Patch { shape: &shape, ground: &ground }, &moving()).expect("soft");
+        let rotation = (Mat3::identity() + bed.rest.turn) * pose.rotation;
+        assert!((rotation * Vec3::z() - normal).norm() < 1e-14);
+        let origin = pose.translation + bed.rest.offset;
+        assert!((origin - plane_point).dot(&normal).abs() < 1e-15);
+        assert!((origin - pose.translation).cross(&normal).norm() < 1e-15);
+        // The smallest rotation onto the plane has no part about the normal.
+        let tilt = crate::spatial::log_so3(&(rotation * pose.rotation.transpose()));
+        assert!(tilt.dot(&normal).abs() < 1e-14);
+    }
+}

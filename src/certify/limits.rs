@@ -118,7 +118,8 @@ fn wrench_rate(situation: &Situation, contact: &Contact, i: usize, end: &Wrench,
     if matches!(rate.treatment, Treatment::Soft { .. }) {
         return;
     }
-    let now = situation.now(i).unwrap_or_else(unknown_wrench);
+    // On rigid ground without a measurement there is no present wrench to change from, hence no rate.
+    let Some(now) = situation.now(i) else { return };
     let changes = [(rate.force, end.force - now.force, "force"), (rate.moment, end.moment - now.moment, "moment")];
     for (bound, change, kind) in changes {
         let Some(bound) = bound else { continue };

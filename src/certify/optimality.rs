@@ -6,8 +6,9 @@
 //!     complementary  z's = 0, z_soft'(s_soft + t e) = 0, z_t t = 0,
 //!     feasible       s in K, s_soft + t e in K, and t the actual excess.
 //! For a convex program these are enough. Figures are relative:
-//! - stationarity to `max_j (sum_i 2 |a_ij| w_i size_i + sum_i |A_ij z_i|)`, `size_i = sum_k |a_ik x_k| + |b_i|`:
-//!   the terms of the sum as they are before anything cancels;
+//! - stationarity to `max_j (sum_i 2 |a_ij| w_i size_i + sum_i |A_ij z_i|)`, `size_i = sum_k |a_ik x_k| + |b_i|`, at
+//!   least 1 (rows are dimensionless, their natural size is 1): the terms of the sum before anything cancels. Without
+//!   the 1 a task whose every term is rounding error could never pass;
 //! - multipliers to the larger of the greatest multiplier of a cone row and the residuals' part of that;
 //! - complementarity to `sum w_i size_i^2` plus `sum |z_i| size_i` over cone rows;
 //! - feasibility of each row to the larger of 1 and `size_i` (rows are dimensionless).
@@ -95,7 +96,7 @@ impl Terms {
     fn add_residuals(&mut self, rows: &ResidualRows, x: &[f64]) {
         for i in 0..rows.rhs.len() {
             let residual = rows.matrix.row_dot(i, x) - rows.rhs[i];
-            let size = row_size(&rows.matrix, &rows.rhs, i, x);
+            let size = larger(1.0, row_size(&rows.matrix, &rows.rhs, i, x));
             let weight = rows.weight[i];
             for (j, v) in rows.matrix.row(i) {
                 self.gradient[j] += 2.0 * weight * v * residual;

@@ -1,11 +1,12 @@
 //! The checks of the claimed motion and wrenches: balance, ground law, vertex forces.
 
+use super::friction::spread;
 use super::ground::Bed;
 use super::situation::{Situation, unknown_wrench};
 use super::worst::Worst;
 use super::{Check, Claim};
 use crate::contact::Law;
-use crate::problem::question::{Contact, FrictionSet};
+use crate::problem::question::Contact;
 use crate::spatial::polygon::SoleShape;
 use crate::spatial::{Mat6, Twist, Vec3, Vec6, Wrench, skew};
 
@@ -118,7 +119,7 @@ pub fn vertex_sum(situation: &Situation, claim: &Claim) -> Option<Check> {
     let mut worst = Worst::default();
     let mut used = false;
     for (i, contact) in situation.question.contacts.iter().enumerate() {
-        if !matches!(contact.friction, Some(f) if f.set == FrictionSet::Vertex) {
+        if !spread(situation, contact) {
             continue;
         }
         used = true;

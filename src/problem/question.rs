@@ -354,17 +354,17 @@ pub struct Include {
     pub dynamics: bool,
 }
 
-/// What a dynamics request asks: rigid-body terms in one state.
+/// A state whose rigid-body terms are wanted.
 #[derive(Debug, Clone)]
 pub struct DynamicsQuestion {
-    /// The robot, carried loads included.
+    /// The robot.
     pub model: Arc<Model>,
     /// Its state, base parts in world axes.
     pub state: State,
-    /// The axes in which the user gives, and gets back, the base part of velocities.
+    /// The axes in which the user works.
     pub velocity_axes: VelocityAxes,
     /// Gravitational acceleration (m/s^2, world).
     pub gravity: Vec3,
-    /// Frames (indices in `model.frames`) to report besides the soles, each at most once.
+    /// Frames to report besides the soles.
     pub frames: Vec<usize>,
 }

@@ -12,6 +12,8 @@ use crate::spatial::{Mat3, Vec3, Vec6, Wrench, head, tail};
 
 /// Multipliers (scaled, relative to the largest of the level) below this do not count as binding.
 const BINDING: f64 = 1e-7;
+/// Shares of a proof of infeasibility below this are the engine's rounding.
+const BLOCKING: f64 = 1e-6;
 /// Parts of a free direction below this share of the largest are left out.
 const FREE_PART: f64 = 1e-6;
 
@@ -279,6 +281,7 @@ pub(super) fn blocking(work: &Work) -> Vec<Blocking> {
     }
     let total: f64 = shares.iter().map(|b| b.share).sum();
     shares.iter_mut().for_each(|b| b.share /= total.max(f64::MIN_POSITIVE));
+    shares.retain(|b| b.share > BLOCKING);
     shares.sort_by(|a, b| b.share.total_cmp(&a.share));
     shares
 }

@@ -5,6 +5,7 @@
 //! `t >= 0` needs no row: a negative t would only tighten the limit at a cost.
 
 use super::engine::Program;
+use super::rank::Factor;
 use super::system::{Entries, Kind, Reduced, ReducedBlock, System, blocks_of};
 use crate::conic::{Cone, ConicRows, Level, ResidualRows, SparseRows};
 
@@ -42,8 +43,10 @@ pub(super) struct Assembled {
     pub first: Vec<usize>,
 }
 
-/// Writes the level as one conic program in [x, r, t].
-pub(super) fn assemble(system: &System, data: &LevelData, reduced: &LevelProblem) -> Assembled {
+/// Writes the level as one conic program in [x - x0, r, t]; x0 satisfies the equalities, so that their right-hand sides
+/// vanish. The cost is divided by the problem's scale, and so are the multipliers that come back. `pull` adds
+/// `pull |x - x0|^2 / 2` to it.
+pub(super) fn assemble(system: &System, data: &LevelData, reduced: &LevelProblem, pull: f64) -> Assembled {
     let n = system.matrix.columns;
     let residuals = data.residuals;
     let m = residuals.rhs.len();
@@ -52,11 +55,11 @@ pub(super) fn assemble(system: &System, data: &LevelData, reduced: &LevelProblem
     let mut rhs = Vec::new();
     for &row in &system.pivots {
         push(&mut rows, Entries::new(&system.matrix, row), None);
-        rhs.push(system.rhs[row]);
+        rhs.push(0.0);
     }
     for i in 0..m {
         push(&mut rows, Entries::new(&residuals.matrix, i), Some(n + i));
-        rhs.push(residuals.rhs[i]);
+        rhs.push(-reduced.residual_at[i] / (2.0 * residuals.weight[i]).sqrt());
     }
     let mut cones = Vec::new();
     if !rhs.is_empty() {
@@ -67,15 +70,15 @@ pub(super) fn assemble(system: &System, data: &LevelData, reduced: &LevelProblem
         let begin = rhs.len();
         for (place, block) in reduced.sets.blocks.iter().enumerate().filter(|(_, b)| b.kind == kind) {
             first[place] = rhs.len();
-            let (matrix, values, at, slack) = match (block.soft, data.soft) {
+            let (matrix, at, slack) = match (block.soft, data.soft) {
                 (Some(_), Some((soft, _))) => {
-                    (&soft.matrix, &soft.rhs, reduced.soft_first[block.block], Some(n + m + block.block))
+                    (&soft.matrix, reduced.soft_first[block.block], Some(n + m + block.block))
                 }
-                _ => (&system.matrix, &system.rhs, system.blocks[block.block].first, None),
+                _ => (&system.matrix, system.blocks[block.block].first, None),
             };
             for k in 0..block.len {
                 push(&mut rows, Entries::new(matrix, at + k), slack.filter(|_| k == 0));
-                rhs.push(values[at + k]);
+                rhs.push(reduced.sets.at[block.first + k]);
             }
             if kind == Kind::SecondOrder {
                 cones.push(Cone::SecondOrder(block.len));
@@ -85,11 +88,87 @@ pub(super) fn assemble(system: &System, data: &LevelData, reduced: &LevelProblem
             cones.push(Cone::Nonnegative(rhs.len() - begin));
         }
     }
-    let mut diagonal = vec![0.0; n];
-    diagonal.extend(residuals.weight.iter().map(|w| 2.0 * w));
-    diagonal.extend(weights.iter().map(|w| 2.0 * w));
+    let mut diagonal = vec![pull; n];
+    diagonal.extend(residuals.weight.iter().map(|w| 2.0 * w / reduced.scale));
+    diagonal.extend(weights.iter().map(|w| 2.0 * w / reduced.scale));
     let linear = vec![0.0; diagonal.len()];
     Assembled { program: Program { diagonal, linear, rows, rhs, cones }, first }
+}
+
+/// Writes the level as one conic program in [u, r, t]: no equalities but the residuals' own, so that nothing hangs on how well
+/// the frozen rows are conditioned. Residuals are turned into at most d rows first; their sum of squares changes by a constant.
+pub(super) fn assemble_reduced(reduced: &LevelProblem, pull: f64) -> Assembled {
+    let sets = &reduced.sets;
+    let d = sets.d;
+    let root = reduced.scale.sqrt();
+    let (cost_rows, cost_at) = compressed(reduced);
+    let m = cost_at.len();
+    let slacks = reduced.soft_first.len();
+    let mut rows = SparseRows::new(d + m + slacks);
+    let mut rhs = Vec::new();
+    for i in 0..m {
+        rows.push((0..d).map(|j| (j, cost_rows[i * d + j] / root)).chain([(d + i, -1.0)]));
+        rhs.push(-cost_at[i] / root);
+    }
+    let mut cones = Vec::new();
+    if m > 0 {
+        cones.push(Cone::Zero(m));
+    }
+    let mut first = vec![0; sets.blocks.len()];
+    let mut diagonal = vec![pull; d];
+    diagonal.resize(d + m, 1.0);
+    diagonal.resize(d + m + slacks, 0.0);
+    for kind in [Kind::Nonnegative, Kind::SecondOrder] {
+        let begin = rhs.len();
+        for (place, block) in sets.blocks.iter().enumerate().filter(|(_, b)| b.kind == kind) {
+            first[place] = rhs.len();
+            for i in block.first..block.first + block.len {
+                let slack = block.soft.filter(|_| i == block.first).map(|weight| {
+                    diagonal[d + m + block.block] = 2.0 * weight / reduced.scale;
+                    (d + m + block.block, -1.0)
+                });
+                rows.push(sets.row(i).iter().copied().enumerate().chain(slack));
+                rhs.push(sets.at[i]);
+            }
+            if kind == Kind::SecondOrder {
+                cones.push(Cone::SecondOrder(block.len));
+            }
+        }
+        if kind == Kind::Nonnegative && rhs.len() > begin {
+            cones.push(Cone::Nonnegative(rhs.len() - begin));
+        }
+    }
+    let linear = vec![0.0; diagonal.len()];
+    Assembled { program: Program { diagonal, linear, rows, rhs, cones }, first }
+}
+
+/// Rows R and values with `|R u + values|^2 = |M u + at|^2` up to a constant: at most d of them.
+fn compressed(reduced: &LevelProblem) -> (Vec<f64>, Vec<f64>) {
+    let (d, m) = (reduced.sets.d, reduced.residual_at.len());
+    if m <= d || d == 0 {
+        return (reduced.residual.clone(), reduced.residual_at.clone());
+    }
+    let mut columns = vec![0.0; m * d];
+    for i in 0..m {
+        for j in 0..d {
+            columns[j * m + i] = reduced.residual[i * d + j];
+        }
+    }
+    let original = columns.clone();
+    let factor = Factor::new(&mut columns, m, &vec![1.0; d], 0.0, "cost columns");
+    let rank = factor.rank();
+    let mut rows = vec![0.0; rank * d];
+    for j in 0..d {
+        let mut turned = original[j * m..(j + 1) * m].to_vec();
+        factor.apply_transpose(&mut turned);
+        for i in 0..rank {
+            rows[i * d + j] = turned[i];
+        }
+    }
+    let mut values = reduced.residual_at.clone();
+    factor.apply_transpose(&mut values);
+    values.truncate(rank);
+    (rows, values)
 }
 
 fn push(rows: &mut SparseRows, entries: Entries, minus: Option<usize>) {
@@ -118,6 +197,9 @@ pub(super) struct LevelProblem {
     pub residual_length: Vec<f64>,
     /// Largest `2 w |a|^2`, the natural size of a cost gradient; 1 where there are no residuals.
     pub size: f64,
+    /// What the cost is divided by for the engine: the geometric mean of the largest and the smallest `2 w`, so that within a
+    /// wide range of weights the small ones are not lost under the engine's tolerance.
+    pub scale: f64,
 }
 
 /// Reduces a level to the coordinates of the system.
@@ -157,6 +239,9 @@ pub(super) fn reduce(system: &System, sets: Reduced, data: &LevelData) -> LevelP
     if problem.size == 0.0 {
         problem.size = 1.0;
     }
+    let weights = residuals.weight.iter().chain(data.soft.map_or(&[][..], |(_, w)| w));
+    let (least, most) = weights.fold((f64::INFINITY, 0.0f64), |(a, b), &w| (a.min(w), b.max(w)));
+    problem.scale = if most > 0.0 { 2.0 * least.sqrt() * most.sqrt() } else { 1.0 };
     problem
 }
 

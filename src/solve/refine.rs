@@ -16,8 +16,6 @@ use super::level::LevelProblem;
 use super::rank::{Factor, reference_lengths};
 use super::system::{Kind, ReducedBlock, inside};
 
-/// Rounds of taking rows into the active set and out of it.
-const MAX_ROUNDS: usize = 24;
 /// Newton steps per round.
 const MAX_STEPS: usize = 12;
 /// An equation counts as dependent below this relative length.
@@ -92,7 +90,7 @@ pub(super) fn classify(problem: &LevelProblem, u: Vec<f64>, z: Vec<f64>) -> Poin
         let range = block.first..block.first + block.len;
         let multiplier = &z[range.clone()];
         let head = block.soft.map_or(0.0, |weight| multiplier[0] / (2.0 * weight));
-        let size = problem.size;
+        let size = problem.scale;
         let s0 = slack[range.start] + head;
         let s_bar = norm(&slack[range.start + 1..range.end]);
         let (z0, z_bar) = (multiplier[0] / size, norm(&multiplier[1..]) / size);
@@ -141,9 +139,9 @@ fn cost_gradient(problem: &LevelProblem, u: &[f64]) -> Vec<f64> {
     gradient
 }
 
-/// Refines a point; `confirmed` tells whether the result may be used.
-pub(super) fn refine(problem: &LevelProblem, mut point: Point) -> Refined {
-    for _ in 0..MAX_ROUNDS {
+/// Refines a point in at most so many rounds of changing the active set; `confirmed` tells whether the result may be used.
+pub(super) fn refine(problem: &LevelProblem, mut point: Point, rounds: usize) -> Refined {
+    for _ in 0..rounds {
         let Some((held, pivots)) = newton(problem, &mut point) else { break };
         match revise(problem, &mut point) {
             Revision::Settled => {

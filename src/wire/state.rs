@@ -51,7 +51,7 @@ pub(super) struct BaseBody {
 #[serde(deny_unknown_fields)]
 #[schemars(rename = "JointState")]
 pub(super) struct JointStateBody {
-    /// Joint name as in the URDF.
+    /// Joint name as in the URDF (no unit).
     name: String,
     /// Position (rad, or m for a sliding joint).
     position: f64,

@@ -1,0 +1,26 @@
+"""Client of Underfoot, the reference solver for legged robots on ground that gives."""
+
+from . import build, limits, tasks
+from .answer import Answer, Dynamics, FrameTerms, Sole, Task
+from .client import Client, Model
+from .errors import Busy, Fault, Garbled, NotFinite, Refused, UnderfootError, Unreachable
+
+__all__ = [
+    "Answer",
+    "Busy",
+    "Client",
+    "Dynamics",
+    "Fault",
+    "FrameTerms",
+    "Garbled",
+    "Model",
+    "NotFinite",
+    "Refused",
+    "Sole",
+    "Task",
+    "UnderfootError",
+    "Unreachable",
+    "build",
+    "limits",
+    "tasks",
+]
