@@ -163,6 +163,18 @@ fn ground_warnings(question: &Question, ground: &answer::GroundReport, warnings:
             ),
         });
     }
+    for contact in &question.contacts {
+        let rigid = matches!(contact.ground.law, Law::Rigid { .. });
+        if rigid && contact.ground.measured.is_none() && contact.wrench_rate.is_some() {
+            warnings.push(Warning {
+                code: "wrench-rate-unused",
+                text: format!(
+                    "{}: the rate of the wrench is not limited, because the present wrench on a rigid sole is only known when it is measured",
+                    question.model.soles[contact.sole].name
+                ),
+            });
+        }
+    }
     let modelled_now = question.contacts.iter().any(|c| {
         matches!(c.ground.law, Law::Bonded(_)) && c.ground.measured.is_none() && !matches!(c.ground.rest, Rest::Carries(_))
     });
