@@ -123,7 +123,8 @@ fn answer() -> Answer {
         name: "dynamics", relative_to: "of the robot's weight", value: 1e-12, bound: 1e-9, worst: "r_hip".into(),
     };
     let level_check = LevelCheck {
-        priority: 1, stationarity: 1e-10, complementarity: 0.0, dual_violation: 0.0, bound: 1e-8,
+        priority: 1, stationarity: 1e-10, complementarity: 0.0, dual_violation: 0.0, feasibility: 0.0,
+        bound: 1e-8,
     };
     Answer {
         status: Status::Solved,
