@@ -1,6 +1,6 @@
 //! An answer as tables to read: drawn from the JSON document alone, as any client would.
 
-use super::table::{Side, Table, number, push_line, push_text};
+use super::table::{Side, Table, amount, number, push_line, push_text};
 use crate::wire::view::{Parsed, View};
 
 use Side::{Left, Right};
@@ -148,7 +148,7 @@ fn soles(out: &mut String, answer: View<'_>) {
             let wrench = sole.at(at);
             if !wrench.is_nothing() {
                 let numbers = [wrench.at("/force").numbers(), wrench.at("/moment").numbers()].concat();
-                let numbers = numbers.into_iter().map(|value| number(value, 2));
+                let numbers = numbers.into_iter().map(|value| amount(value, 2));
                 wrenches.row([name.clone(), label.to_owned()].into_iter().chain(numbers));
             }
         }
@@ -306,35 +306,47 @@ fn free(out: &mut String, answer: View<'_>) {
     }
 }
 
+/// What a figure is relative to, without the fine print.
+fn short(relative_to: View<'_>) -> String {
+    let long = relative_to.text().unwrap_or("-");
+    let end = [" (", " that "].iter().filter_map(|mark| long.find(mark)).min();
+    let short = end.and_then(|end| long.get(..end)).unwrap_or(long);
+    short.strip_prefix("of ").unwrap_or(short).to_owned()
+}
+
 fn certificate(out: &mut String, answer: View<'_>) {
-    let mut table = Table::new(&[("check", Left), ("figure", Right), ("bound", Right), ("", Left), ("worst at", Left)]);
+    let mut table = Table::new(&[("check", Left), ("figure", Right), ("bound", Right), ("relative to", Left), ("worst at", Left)]);
     for check in answer.at("/certificate/checks").items() {
         table.row([
             text(check.at("/name")),
             power(check.at("/value")),
             power(check.at("/bound")),
-            check.at("/relative_to").text().and_then(|long| long.split(" (").next()).unwrap_or("-").to_owned(),
+            short(check.at("/relative_to")),
             text(check.at("/worst")),
         ]);
     }
+    let mut levels = Table::new(&[
+        ("optimality, priority", Left),
+        ("stationarity", Right),
+        ("complementarity", Right),
+        ("multipliers", Right),
+        ("bound", Right),
+    ]);
     for level in answer.at("/certificate/levels").items() {
-        let priority = cell(level.at("/priority"), 0);
-        for (name, at) in [
-            ("stationarity", "/stationarity"),
-            ("complementarity", "/complementarity"),
-            ("multipliers", "/dual_violation"),
-        ] {
-            table.row([
-                format!("{name}, priority {priority}"),
-                power(level.at(at)),
-                power(level.at("/bound")),
-                "relative".to_owned(),
-            ]);
-        }
+        levels.row([
+            cell(level.at("/priority"), 0),
+            power(level.at("/stationarity")),
+            power(level.at("/complementarity")),
+            power(level.at("/dual_violation")),
+            power(level.at("/bound")),
+        ]);
     }
     let holds = answer.at("/certificate/holds").truth() == Some(true);
-    let title = if holds { "Certificate, recomputed without the solver: holds" } else { "Certificate, recomputed without the solver: DOES NOT HOLD" };
-    section(out, title, &table);
+    let title = if holds { "holds" } else { "DOES NOT HOLD" };
+    section(out, &format!("Certificate, recomputed without the solver: {title}"), &table);
+    if !levels.is_empty() {
+        levels.write(out);
+    }
 }
 
 fn ground(out: &mut String, answer: View<'_>) {

@@ -26,8 +26,6 @@ pub enum Errand {
 pub struct Document {
     /// The JSON text.
     pub body: Vec<u8>,
-    /// How a solve ended; none for other documents.
-    pub status: Option<Status>,
     /// Id of the model that was registered.
     pub model: Option<String>,
     /// Where the time went. Never part of the body, which is the same every time.
@@ -80,7 +78,7 @@ impl Catalogue {
         self.models.keep(Arc::clone(&model));
         let body = wire::write_model(&model);
         clock.lap("write");
-        Ok(Document { body, status: None, model: Some(model.id.clone()), timings: clock.laps })
+        Ok(Document { body, model: Some(model.id.clone()), timings: clock.laps })
     }
 
     fn dynamics(&self, body: &[u8]) -> Result<Document, Refusal> {
@@ -91,7 +89,7 @@ impl Catalogue {
         clock.lap("dynamics");
         let body = wire::write_dynamics(&question, &report, &wire::fingerprint(body));
         clock.lap("write");
-        Ok(Document { body, status: None, model: None, timings: clock.laps })
+        Ok(Document { body, model: None, timings: clock.laps })
     }
 
     fn solve(&self, body: &[u8], cancel: &Arc<AtomicBool>) -> Result<Document, Refusal> {
@@ -105,7 +103,7 @@ impl Catalogue {
         clock.lap("solve");
         let body = wire::write_answer(&question, &answer, &wire::fingerprint(body));
         clock.lap("write");
-        Ok(Document { body, status: Some(answer.status), model: None, timings: clock.laps })
+        Ok(Document { body, model: None, timings: clock.laps })
     }
 }
 

@@ -2,7 +2,7 @@
 //! ask for, and what the floor would make of it.
 
 use crate::cli::report::meaning;
-use crate::cli::table::{Side, Table, number, push_line, push_text};
+use crate::cli::table::{Side, Table, amount, number, push_line, push_text};
 use crate::wire::view::{Parsed, View};
 
 /// Joints shown: those whose torques differ most.
@@ -62,10 +62,10 @@ fn soles(out: &mut String, compliant: View<'_>, rigid: View<'_>) {
             table.row([
                 name.to_owned(),
                 (*axis).to_owned(),
-                number(now, 2),
-                number(*soft, 2),
-                number(hard, 2),
-                number(hard - now, 2),
+                amount(now, 2),
+                amount(*soft, 2),
+                amount(hard, 2),
+                amount(hard - now, 2),
             ]);
         }
     }
