@@ -9,12 +9,18 @@
 //!   they must vanish at an acceleration that moves the sole as prescribed, and fix the sole's
 //!   whole acceleration. Where the joints allow no such acceleration there is no answer to certify.
 //!
+//!
+//! Under the rule `held` the rows of all soft soles hold together, and friction is part of them: the points compared are then ticks
+//! played by `held` under the point's torques and a force of any size besides. There the contact rows must vanish, the rows of the dynamics
+//! must leave exactly that force, and the contact rows must be independent, as many as there are average and end wrenches.
+//!
 //! Columns are found by name: `acceleration:<..>` in the order of the generalised velocity,
-//! `torque:<joint>`, `wrench:<sole>:<fx..mz>`, `vertex:<sole>:<i>:<x|y|z>`; physical = scaled * scale.
+//! `torque:<joint>`, `wrench:<sole>:<fx..mz>`, `mean:<sole>:<fx..mz>` (`held`), `vertex:<sole>:<i>:<x|y|z>`; physical = scaled * scale.
 
 use nalgebra::{DMatrix, DVector};
 
 use super::friction::spread;
+use super::held::Played;
 use super::physics::{PHYSICS_BOUND, gathered, vertex_arms};
 use super::rows::row_size;
 use super::situation::Situation;
@@ -49,6 +55,7 @@ struct Columns {
     acceleration: Vec<usize>,
     torque: Vec<Option<usize>>,
     wrench: Vec<[Option<usize>; 6]>,
+    mean: Vec<[Option<usize>; 6]>,
     vertices: Vec<Vec<[usize; 3]>>,
     scale: Vec<f64>,
 }
@@ -66,18 +73,19 @@ impl Columns {
         let torque: Vec<Option<usize>> =
             model.joints.iter().map(|joint| at(format!("torque:{}", joint.name))).collect();
         let complete = torque.iter().zip(&model.joints).all(|(t, joint)| t.is_some() || !joint.actuated);
-        let (mut wrench, mut vertices) = (Vec::new(), Vec::new());
+        let (mut wrench, mut mean, mut vertices) = (Vec::new(), Vec::new(), Vec::new());
         for contact in &situation.question.contacts {
             let sole = situation.name(contact);
-            let part = |p: &str| at(format!("wrench:{sole}:{p}"));
-            wrench.push(["fx", "fy", "fz", "mx", "my", "mz"].map(part));
+            let part = |kind: &str| ["fx", "fy", "fz", "mx", "my", "mz"].map(|p| at(format!("{kind}:{sole}:{p}")));
+            wrench.push(part("wrench"));
+            mean.push(part("mean"));
             let listed = starting(&format!("vertex:{sole}:"));
             vertices.push(listed.chunks_exact(3).map(|c| [c[0], c[1], c[2]]).collect());
         }
         let forces = wrench.iter().all(|w| w[..3].iter().all(Option::is_some));
         let scale = hierarchy.columns.iter().map(|c| c.scale).collect();
         (acceleration.len() == model.velocities() && complete && forces)
-            .then_some(Columns { acceleration, torque, wrench, vertices, scale })
+            .then_some(Columns { acceleration, torque, wrench, mean, vertices, scale })
     }
 
     fn get(&self, x: &[f64], column: Option<usize>) -> f64 {
@@ -161,7 +169,11 @@ pub fn rows(situation: &Situation, hierarchy: &Hierarchy, x: &[f64]) -> Check {
         None => worst.record(f64::NAN, || "columns missing".into()),
         Some(columns) => {
             let probe = Probe { situation, hierarchy, columns: &columns, points: points(x) };
-            probe.dynamics(&mut worst);
+            if situation.is_held() {
+                probe.held(&mut worst);
+            } else {
+                probe.dynamics(&mut worst);
+            }
             for i in 0..situation.question.contacts.len() {
                 probe.contact(i, &mut worst);
                 probe.vertices(i, &mut worst);
@@ -192,7 +204,6 @@ impl Probe<'_> {
 
     fn dynamics(&self, worst: &mut Worst) {
         let rows = self.group("dynamics");
-        let names = &self.hierarchy.hard.names;
         if rows.len() != self.situation.question.model.velocities() {
             return worst.record(f64::NAN, || "dynamics rows missing".into());
         }
@@ -201,20 +212,109 @@ impl Probe<'_> {
         for x in &self.points {
             let ends: Vec<Wrench> = (0..self.columns.wrench.len()).map(|i| self.columns.wrench(x, i)).collect();
             let physics = self.situation.balance(&self.columns.acceleration(x), &self.columns.torques(x), &ends);
-            for (k, &i) in rows.iter().enumerate() {
-                let row = self.value(i, x) * names[i].scale;
-                let terms = row_size(&self.hierarchy.hard.matrix, &self.hierarchy.hard.rhs, i, x) * names[i].scale;
-                let size = self.situation.weight.max(terms);
-                for (sign, side) in [1.0, -1.0].iter().zip(signs.iter_mut()) {
-                    side.record((row - sign * physics[k]).abs() / size, || {
-                        format!("dynamics {}", self.situation.velocity_name(k))
-                    });
-                }
-            }
+            self.compare_dynamics(&rows, x, &physics, &mut signs);
         }
         let [plain, negated] = signs;
         let better = if negated.value < plain.value { negated } else { plain };
         worst.record(better.value, || better.place);
+    }
+
+    /// Rows of the dynamics against the balance, taken as it is and negated.
+    fn compare_dynamics(&self, rows: &[usize], x: &[f64], physics: &[f64], signs: &mut [Worst; 2]) {
+        let names = &self.hierarchy.hard.names;
+        for (k, &i) in rows.iter().enumerate() {
+            let row = self.value(i, x) * names[i].scale;
+            let terms = row_size(&self.hierarchy.hard.matrix, &self.hierarchy.hard.rhs, i, x) * names[i].scale;
+            let size = self.situation.weight.max(terms);
+            for (sign, side) in [1.0, -1.0].iter().zip(signs.iter_mut()) {
+                side.record((row - sign * physics[k]).abs() / size, || {
+                    format!("dynamics {}", self.situation.velocity_name(k))
+                });
+            }
+        }
+    }
+
+    /// The rows under the rule `held`, see the top of this file.
+    fn held(&self, worst: &mut Worst) {
+        let (rows, names) = (self.group("dynamics"), &self.hierarchy.hard.names);
+        let nv = self.situation.question.model.velocities();
+        let offset = self.situation.question.model.joint_offset();
+        if rows.len() != nv {
+            return worst.record(f64::NAN, || "dynamics rows missing".into());
+        }
+        let mut draw = Draw(31_337);
+        let forces: Vec<DVector<f64>> = self
+            .points
+            .iter()
+            .enumerate()
+            .map(|(p, x)| {
+                let torques = self.columns.torques(x);
+                let besides = if p == 0 { 0.0 } else { 1.0 };
+                DVector::from_fn(nv, |k, _| {
+                    let torque = if k < offset { 0.0 } else { torques[k - offset] };
+                    torque + besides * draw.next() * names[rows[k]].scale
+                })
+            })
+            .collect();
+        let Some(played) = self.situation.held.as_ref().and_then(|held| held.play(&forces)) else {
+            return worst.record(f64::NAN, || "the tick cannot be played".into());
+        };
+        let soft = self.soft_rows();
+        self.independent(&soft, worst);
+        let mut signs = [Worst::default(), Worst::default()];
+        for (point, played) in self.points.iter().zip(&played) {
+            let x = self.played_point(point, played);
+            for &r in &soft {
+                let size = row_size(&self.hierarchy.hard.matrix, &self.hierarchy.hard.rhs, r, &x).max(1.0);
+                worst.record(self.value(r, &x).abs() / size, || format!("{} {}", names[r].group, names[r].part));
+            }
+            let ends: Vec<Wrench> = (0..self.columns.wrench.len()).map(|i| self.columns.wrench(&x, i)).collect();
+            let physics = self.situation.held_balance(&played.acceleration, &self.columns.torques(&x), &ends, played);
+            self.compare_dynamics(&rows, &x, &physics, &mut signs);
+        }
+        let [plain, negated] = signs;
+        let better = if negated.value < plain.value { negated } else { plain };
+        worst.record(better.value, || better.place);
+    }
+
+    /// The point with accelerations and wrenches of soft soles as played.
+    fn played_point(&self, point: &[f64], played: &Played) -> Vec<f64> {
+        let mut x = point.to_vec();
+        for (&j, &a) in self.columns.acceleration.iter().zip(&played.acceleration) {
+            self.columns.set(&mut x, Some(j), a);
+        }
+        let pairs = [(&self.columns.wrench, &played.ends), (&self.columns.mean, &played.means)];
+        for (columns, wrenches) in pairs {
+            for (columns, wrench) in columns.iter().zip(wrenches) {
+                let Some(wrench) = wrench.map(|w| w.to_vec6()) else { continue };
+                columns.iter().zip(wrench.iter()).for_each(|(&c, &w)| self.columns.set(&mut x, c, w));
+            }
+        }
+        x
+    }
+
+    /// Rows of the contact groups of all soft soles.
+    fn soft_rows(&self) -> Vec<usize> {
+        let contacts = self.situation.question.contacts.iter();
+        let soft = contacts.filter(|c| !matches!(c.ground.law, Law::Rigid { .. }));
+        soft.flat_map(|c| self.group(&format!("contact:{}", self.situation.name(c)))).collect()
+    }
+
+    /// The rows are as many as the wrenches they have to fix, and independent.
+    fn independent(&self, rows: &[usize], worst: &mut Worst) {
+        let contacts = self.situation.question.contacts.iter().enumerate();
+        let soft = contacts.filter(|(_, c)| !matches!(c.ground.law, Law::Rigid { .. })).map(|(i, _)| i);
+        let wrenches: usize = soft.map(|i| 2 * self.columns.wrench[i].iter().flatten().count()).sum();
+        let matrix = &self.hierarchy.hard.matrix;
+        let mut block = DMatrix::zeros(rows.len(), self.columns.scale.len());
+        for (k, &r) in rows.iter().enumerate() {
+            let size = matrix.row(r).map(|e| e.1 * e.1).sum::<f64>().sqrt();
+            matrix.row(r).for_each(|(j, v)| block[(k, j)] += v / size);
+        }
+        let rank = if rows.is_empty() { Some(0) } else { decompose(block).map(|svd| svd.rank(MISSING * svd.singular_values.max())) };
+        if rank != Some(wrenches) || rows.len() != wrenches {
+            worst.record(f64::NAN, || "rows do not fix the wrenches of the soft soles".into());
+        }
     }
 
     fn contact(&self, i: usize, worst: &mut Worst) {
@@ -222,6 +322,9 @@ impl Probe<'_> {
         let name = format!("contact:{}", self.situation.name(contact));
         if matches!(contact.ground.law, Law::Rigid { .. }) {
             return self.rigid(i, &name, worst);
+        }
+        if self.situation.is_held() {
+            return;
         }
         self.implied(i, &name, worst, |x| {
             let motions = self.situation.motions(&self.columns.acceleration(x));

@@ -7,9 +7,9 @@
 
 use crate::contact::{Law, Material, Patch, SoleMotion, TickRule};
 use crate::spatial::polygon::SoleShape;
-use crate::spatial::{Mat3, Twist, Vec3, Wrench, exp_so3, left_jacobian_so3, skew};
+use crate::spatial::{Mat3, Twist, Vec3, Wrench, exp_so3, left_jacobian_so3, log_so3, skew};
 
-/// `(c, theta)` of a tick rule: pose advance `T v + c T^2 a`, `w_bar = (1 - theta) now + theta w+`.
+/// `(c, theta)` of a tick rule (`held` has none and is checked in `held.rs`): pose advance `T v + c T^2 a`, `w_bar = (1 - theta) now + theta w+`.
 pub fn rule_factors(rule: TickRule) -> (f64, f64) {
     match rule {
         TickRule::BackwardEuler => (1.0, 1.0),
@@ -239,6 +239,28 @@ impl Bed {
         let step = Twist { linear: a.linear * reach, angular: turn * reach };
         let kick = Twist { linear: a.linear * time, angular: a.angular * time };
         self.change(&self.advanced(tick, &Twist::zero()), &step, &kick)
+    }
+
+    /// Wrench at the end of the drift, the motion without acceleration.
+    pub fn drift(&self, time: f64) -> Wrench {
+        self.corrected(self.law(&self.drifted(time)))
+    }
+
+    /// Change of the wrench at the end of the drift, to first order, see `change`.
+    pub(super) fn change_at_drift(&self, time: f64, step: &Twist, kick: &Twist) -> Wrench {
+        self.change(&self.drifted(time), step, kick)
+    }
+
+    /// The law itself where the sole has come away from the end of its drift by `step`, its velocity changed by `kick`.
+    pub(super) fn end_away(&self, time: f64, step: &Twist, kick: &Twist) -> Wrench {
+        let twist = &self.motion.twist;
+        let turning = log_so3(&(exp_so3(&step.angular) * exp_so3(&(twist.angular * time))));
+        self.corrected(self.law(&self.instant(time, &(twist.linear * time + step.linear), &turning, kick)))
+    }
+
+    fn drifted(&self, time: f64) -> Instant {
+        let twist = &self.motion.twist;
+        self.instant(time, &(twist.linear * time), &(twist.angular * time), &Twist::zero())
     }
 
     /// Polar radius of the sole about its origin, `sqrt(int r^2 dA / A)` (m); one metre for a point foot.

@@ -4,7 +4,7 @@
 //! | check | what is recomputed, and how |
 //! |---|---|
 //! | `dynamics` | balance of every body, by Newton-Euler in world axes |
-//! | `contact` | tick-end wrench of every sole, by quadrature of the traction and of its derivative |
+//! | `contact` | tick-end wrench of every sole, by quadrature of the traction and of its derivative; under the rule `held` by carrying the motion through the tick from the torques alone |
 //! | `vertex-sum` | vertex forces against the wrench they stand for |
 //! | `limits` | every hard and decaying limit, from the question |
 //! | `must-hold`, `hard-rows` | every row no priority may break, at the answer |
@@ -20,6 +20,7 @@ mod assembled;
 mod faces;
 mod friction;
 mod ground;
+mod held;
 mod limits;
 mod motion;
 mod newton_euler;

@@ -20,7 +20,12 @@ pub fn claimed_wrenches(claim: &Claim) -> Vec<Wrench> {
 
 /// Balance of every body under the claimed motion, see `newton_euler`.
 pub fn dynamics(situation: &Situation, claim: &Claim) -> Check {
-    let rows = situation.balance(claim.acceleration, claim.torques, &claimed_wrenches(claim));
+    let ends = claimed_wrenches(claim);
+    let rows = if situation.is_held() {
+        situation.held_balance(claim.acceleration, claim.torques, &ends, &situation.play(claim.torques))
+    } else {
+        situation.balance(claim.acceleration, claim.torques, &ends)
+    };
     let mut worst = Worst::default();
     for (i, row) in rows.iter().enumerate() {
         worst.record(row.abs() / situation.weight, || situation.velocity_name(i));
@@ -32,14 +37,18 @@ pub fn dynamics(situation: &Situation, claim: &Claim) -> Check {
 /// `e = w+ - w_drift + G a` counts as the acceleration `(Z + G)^-1 e` that would explain it,
 /// `Z = m diag(1, 1, 1, r^2, r^2, r^2)`: where G is small that is `e` over the robot's mass, where the ground is
 /// stiff the error in the sole's acceleration. On rigid ground it is the distance from the prescribed
-/// acceleration. Angular parts times r (rigid point foot: linear part alone).
+/// acceleration. Angular parts times r (rigid point foot: linear part alone). Under the rule `held` the wrench is held against the one
+/// that the claimed torques lead to, over the robot's mass.
 pub fn contact(situation: &Situation, claim: &Claim) -> Check {
     let motions = situation.motions(claim.acceleration);
     let mut worst = Worst::default();
+    let played = situation.is_held().then(|| situation.play(claim.torques));
     for (i, contact) in situation.question.contacts.iter().enumerate() {
         let motion = situation.sole(contact, &motions);
         let claimed = claim.wrenches[i].unwrap_or_else(unknown_wrench);
+        let held = played.as_ref().and_then(|played| played.ends[i]);
         let error = match (&situation.beds[i], situation.prescribed(contact, &motion)) {
+            (Some(bed), _) if played.is_some() => held_error(situation, bed, &claimed, &held.unwrap_or_else(unknown_wrench)),
             (Some(bed), _) => soft_error(situation, bed, &claimed, &motion.acceleration),
             (None, Some(wanted)) => rigid_error(situation, contact, &claimed, &motion.acceleration, &wanted),
             (None, None) => Vec6::repeat(f64::NAN),
@@ -52,6 +61,12 @@ pub fn contact(situation: &Situation, claim: &Claim) -> Check {
 }
 
 const PARTS: [&str; 6] = ["fx", "fy", "fz", "mx", "my", "mz"];
+
+fn held_error(situation: &Situation, bed: &Bed, claimed: &Wrench, played: &Wrench) -> Vec6 {
+    let off = (claimed.to_vec6() - played.to_vec6()) / situation.question.model.mass();
+    let radius = bed.radius();
+    Vec6::from_fn(|i, _| if i < 3 { off[i] } else { off[i] / radius })
+}
 
 fn soft_error(situation: &Situation, bed: &Bed, claimed: &Wrench, acceleration: &Twist) -> Vec6 {
     let tick = situation.tick();
@@ -142,6 +157,7 @@ pub fn vertex_sum(situation: &Situation, claim: &Claim) -> Option<Check> {
 /// `[force (N), moment (N m)]`. What linearising the law over the tick costs; no part of the certificate's verdict.
 pub fn linearisation(situation: &Situation, claim: &Claim) -> Vec<Option<[f64; 2]>> {
     let motions = situation.motions(claim.acceleration);
+    let played = situation.is_held().then(|| situation.play(claim.torques));
     let contacts = situation.question.contacts.iter().enumerate();
     contacts
         .map(|(i, contact)| {
@@ -150,7 +166,15 @@ pub fn linearisation(situation: &Situation, claim: &Claim) -> Vec<Option<[f64; 2
             }
             let claimed = (*claim.wrenches.get(i)?)?;
             let bed = situation.beds[i].as_ref()?;
-            let exact = bed.end_exact(situation.tick(), &situation.sole(contact, &motions).acceleration);
+            let acceleration = situation.sole(contact, &motions).acceleration;
+            let exact = match &played {
+                None => bed.end_exact(situation.tick(), &acceleration),
+                Some(played) => {
+                    let time = situation.question.tick.length;
+                    let kick = Twist { linear: acceleration.linear * time, angular: acceleration.angular * time };
+                    bed.end_away(time, &played.shifts[i], &kick)
+                }
+            };
             Some([(exact.force - claimed.force).norm(), (exact.moment - claimed.moment).norm()])
         })
         .collect()

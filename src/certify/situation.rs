@@ -1,10 +1,11 @@
 //! The question made ready for checking: rest poses found, soles listed, sizes fixed.
 
 use super::ground::{Bed, rule_factors};
+use super::held::Held;
 use super::motion::{Motion, move_bodies};
 use super::newton_euler::{Load, residual};
 use super::rest;
-use crate::contact::{Law, Patch, SoleMotion};
+use crate::contact::{Law, Patch, SoleMotion, TickRule};
 use crate::problem::question::{Contact, Question};
 use crate::spatial::polygon::SoleShape;
 use crate::spatial::{Twist, Vec3, Wrench};
@@ -18,6 +19,8 @@ pub struct Situation<'a> {
     pub question: &'a Question,
     /// One bed per contact: none on rigid ground, and where no rest pose carries what it should.
     pub beds: Vec<Option<Bed>>,
+    /// The tick's motion under the rule `held`; none under other rules, or where it cannot be formed.
+    pub held: Option<Held>,
     /// Mass times gravity (N): forces are relative to it, moments to it times one metre.
     pub weight: f64,
     /// Gravity (m/s^2): accelerations are relative to it.
@@ -31,7 +34,7 @@ impl<'a> Situation<'a> {
         let strength = question.gravity.norm();
         let gravity = if strength > 0.0 { strength } else { STANDARD_GRAVITY };
         let motions = move_bodies(model, &question.state, &vec![0.0; model.velocities()]);
-        let mut situation = Situation { question, beds: Vec::new(), weight: model.mass() * gravity, gravity };
+        let mut situation = Situation { question, beds: Vec::new(), held: None, weight: model.mass() * gravity, gravity };
         situation.beds = question
             .contacts
             .iter()
@@ -41,7 +44,15 @@ impl<'a> Situation<'a> {
                 rest::bed(&patch, &at_present(&situation.sole(contact, &motions)))
             })
             .collect();
+        if situation.is_held() {
+            situation.held = Held::new(&situation);
+        }
         situation
+    }
+
+    /// True under the rule `held`.
+    pub fn is_held(&self) -> bool {
+        self.question.tick.rule == TickRule::Held
     }
 
     /// Length and rule of the tick.
@@ -118,13 +129,19 @@ impl<'a> Situation<'a> {
     /// What is left of the balance of forces and moments for any acceleration, torques and tick-end wrenches (one
     /// per contact), see [`residual`].
     pub fn balance(&self, acceleration: &[f64], torques: &[f64], ends: &[Wrench]) -> Vec<f64> {
+        let acting: Vec<Wrench> = ends.iter().enumerate().map(|(i, end)| self.acting(i, end)).collect();
+        self.balance_under(acceleration, torques, &acting)
+    }
+
+    /// The same under the wrenches that act during the tick.
+    pub fn balance_under(&self, acceleration: &[f64], torques: &[f64], acting: &[Wrench]) -> Vec<f64> {
         let question = self.question;
         let motions = self.motions(acceleration);
         let mut loads: Vec<Load> = Vec::new();
-        for (i, (contact, end)) in question.contacts.iter().zip(ends).enumerate() {
+        for (contact, &wrench) in question.contacts.iter().zip(acting) {
             let point = self.sole(contact, &motions).pose.translation;
             let body = question.model.soles[contact.sole].body;
-            loads.push(Load { body, point, wrench: self.acting(i, end) });
+            loads.push(Load { body, point, wrench });
         }
         for external in &question.external {
             let frame = &question.model.frames[external.frame];
