@@ -54,7 +54,7 @@ def torques(problem, outcome, joints):
 @pytest.mark.parametrize("levels", [False, True], ids=["one level", "three levels"])
 @pytest.mark.parametrize(("facets", "method"), [(8, "active set"), (None, "cone"), ("wrench", "cone")], ids=["pyramid", "cones", "wrench set"])
 def test_torques_agree(client, walker, rng, factor, row, levels, facets, method):
-    worst, checked, statuses = 0.0, 0, {}
+    worst, checked, beyond, statuses = 0.0, 0, 0, {}
     for i in range(4 * factor):
         stance = walker_stance(rng, speed=0.1 * (i % 4) / 3, spread=0.1)
         friction = [0.6, 0.3, 0.1, 0.05][i % 4]
@@ -63,11 +63,16 @@ def test_torques_agree(client, walker, rng, factor, row, levels, facets, method)
         if not answer.solved:
             continue
         problem = exported(answer.document["problem"])
-        outcome = hierarchy.solve(problem, method)
-        assert outcome.residual < OUR_OPTIMALITY, f"the checker itself did not converge: {outcome.residual}"
-        gap = np.abs(torques(problem, outcome, answer.joints) - answer.torques).max() / max(1.0, np.abs(answer.torques).max())
+        outcome, again = (hierarchy.solve(problem, method, proximal) for proximal in ((1e-6, 1e-8, 1e-10), (1e-7, 1e-9)))
+        ours = torques(problem, outcome, answer.joints)
+        spread = np.abs(ours - torques(problem, again, answer.joints)).max() / max(1.0, np.abs(ours).max())
+        if max(outcome.residual, again.residual) > OUR_OPTIMALITY or spread > BOUND / 4:
+            # Two runs of the checker that differ by more than the bound can judge nobody.
+            beyond += 1
+            continue
+        gap = np.abs(ours - answer.torques).max() / max(1.0, np.abs(answer.torques).max())
         worst = max(worst, gap)
         checked += 1
         assert gap < BOUND, (i, gap, outcome.costs, [level["cost"] for level in answer.levels])
-    row(f"{facets or 'cones'}, {'three levels' if levels else 'one level'}: torques against {method}, {checked} solved of {statuses}", f"{worst:.1e}")
-    assert checked >= 2 * factor, statuses
+    row(f"{facets or 'cones'}, {'three levels' if levels else 'one level'}: torques against {method}, {checked} of {statuses}, {beyond} beyond the checker", f"{worst:.1e}")
+    assert checked >= 2 * factor and beyond <= factor, (statuses, checked, beyond)
