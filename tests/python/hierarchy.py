@@ -26,7 +26,7 @@ import scipy.sparse as sparse
 Array = np.ndarray
 RANK = 1e-9  # relative threshold of the rank decisions; the rows are scaled to order one
 SWEEPS = 60  # bound on proximal steps
-ROOM = 1e-11  # by which the active-set solver sees limits relaxed
+ROOM = (1e-11, 1e-9, 1e-7)  # by which the active-set solver sees limits relaxed
 FEASIBLE = 1e-8  # by which a limit that cannot move any more may be exceeded
 
 
@@ -229,8 +229,13 @@ def minimise(a: Array, b: Array, la: Array, lb: Array, blocks, start: Array, met
     assert (lb[~alive] > -FEASIBLE).all(), "a frozen limit is violated"
     la, lb = la[alive], lb[alive]
     blocks = [(ba, bb) for ba, bb in blocks if np.abs(ba).max(initial=0.0) > RANK]
+    # Residuals that are decided already.
+    open_rows = np.abs(a).max(axis=1, initial=0.0) > RANK
+    a, b = a[open_rows], b[open_rows]
+    if not len(b):
+        return start, violation(la, lb, blocks, start)
     h = a.T @ a
-    curvature = max(1e-300, np.abs(np.diag(h)).max(initial=0.0))
+    curvature = np.abs(np.diag(h)).max()
     found = []
     for weight in proximal:
         y, dual = start.copy(), None
@@ -247,7 +252,7 @@ def minimise(a: Array, b: Array, la: Array, lb: Array, blocks, start: Array, met
             y, score = polish(a, b, la, lb, blocks, y, dual / curvature)
             cost = float(((a @ y - b) ** 2).sum())
             # Steps of 1e-12 of the data's size count as equal, then the better conditions decide.
-            step = 1e-12 * max(1e-300, float((b**2).sum()))
+            step = 1e-12 * max(1e-12, float((b**2).sum()))
             found.append((violation(la, lb, blocks, y) > 1e-10, round(cost / step), score, len(found), y))
     assert found, f"no proximal weight of {proximal} led anywhere"
     best = min(found, key=lambda entry: entry[:4])
@@ -261,8 +266,13 @@ def quadratic(p: Array, q: Array, la: Array, lb: Array, blocks, method: str) -> 
         if not len(lb):
             return np.linalg.solve(p, -q), np.zeros(0)
         # A hair of room, so that rounding does not make frozen limits contradict each other; polishing removes it.
-        out = quadprog.solve_qp(p, -q, -la.T, -(lb + ROOM))
-        return out[0], out[4]
+        for room in ROOM:
+            try:
+                out = quadprog.solve_qp(p, -q, -la.T, -(lb + room))
+                return out[0], out[4]
+            except ValueError:
+                continue
+        raise ValueError("the active-set solver found its own limits inconsistent")
     return cone_solver(p, q, la, lb, blocks)
 
 
