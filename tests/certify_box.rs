@@ -571,7 +571,7 @@ fn what_linearising_costs_is_told_apart() {
             acceleration: &spoken.acceleration,
             torques: &spoken.torques,
             wrenches: &wrenches,
-            vertex_forces: &[spoken.forces.clone()],
+            vertex_forces: std::slice::from_ref(&spoken.forces),
         };
         linearisation_error(&case.question, &claim)[0].expect("soft")
     };

@@ -56,7 +56,7 @@ fn hard(random: &mut Random, load: f64) -> ConicRows {
     }
     for sole in 0..2 {
         let at = |v: usize, c: usize| VERTEX + 12 * sole + 3 * v + c;
-        let corner = |v: usize| (if v < 2 { 0.5 } else { -0.5 }, if v % 2 == 0 { 0.25 } else { -0.25 });
+        let corner = |v: usize| (if v < 2 { 0.5 } else { -0.5 }, if v.is_multiple_of(2) { 0.25 } else { -0.25 });
         for c in 0..3 {
             let mut row: Vec<(usize, f64)> = (0..4).map(|v| (at(v, c), 1.0)).collect();
             row.push((WRENCH + 6 * sole + c, -1.0));
@@ -184,11 +184,41 @@ fn three_levels_far_targets() {
     assert!(solved >= 20 && unrefined * 20 <= solved);
 }
 
+/// A lifted sole (derived): no normal force means every vertex force of it is at its apex, zero; a hard set without interior,
+/// but nothing that moves like a square root.
+#[test]
+fn a_lifted_sole_has_no_vertex_forces() {
+    for seed in 0..10 {
+        let mut problem = robot(seed, 3, 0.3);
+        problem.hard.rhs[SPEEDS + 6..SPEEDS + 12].fill(0.0);
+        add(&mut problem.hard, vec![(WRENCH + 8, 1.0)], 0.0);
+        problem.hard.cones.push(Cone::Zero(1));
+        let found = solve(&problem, &Options::default(), None).expect("well formed");
+        assert_eq!(found.status, Status::Solved, "seed {seed}");
+        close(&found.x[VERTEX + 12..], &[0.0; 12], 1e-9);
+        close(&found.x[WRENCH + 6..WRENCH + 12], &[0.0; 6], 1e-9);
+        let worst = breach_of_all(&problem, &found);
+        assert!(worst < 1e-9, "seed {seed}: {worst:e}");
+        assert_eq!(found.hard_faces.len(), 4, "seed {seed}: {:?}", found.hard_faces);
+    }
+}
+
 #[test]
 fn one_level_with_weights() {
     let (solved, unrefined, infeasible) = campaign(0..30, 1, 1.0);
     println!("{solved} solved, {unrefined} not refined, {infeasible} infeasible");
     assert!(solved >= 20 && unrefined * 20 <= solved);
+}
+
+/// The long campaign: `cargo test --test solve_contact -- --ignored long`.
+#[test]
+#[ignore = "a minute"]
+fn long() {
+    for (levels, reach) in [(3, 0.3), (3, 1.0), (3, 4.0), (1, 0.3), (1, 4.0)] {
+        let (solved, unrefined, infeasible) = campaign(1000..1400, levels, reach);
+        println!("{levels} levels, reach {reach}: {solved} solved, {unrefined} not refined, {infeasible} infeasible");
+        assert!(unrefined * 50 <= solved);
+    }
 }
 
 /// Not a test of speed: prints what a solve takes here.

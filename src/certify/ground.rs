@@ -13,7 +13,7 @@ use crate::spatial::{Mat3, Twist, Vec3, Wrench, exp_so3, left_jacobian_so3, skew
 pub fn rule_factors(rule: TickRule) -> (f64, f64) {
     match rule {
         TickRule::BackwardEuler => (1.0, 1.0),
-        TickRule::Trapezoid => (0.5, 0.5),
+        TickRule::Trapezoid | TickRule::Held => (0.5, 0.5),
         TickRule::Explicit => (0.0, 0.0),
     }
 }

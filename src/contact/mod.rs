@@ -4,6 +4,7 @@
 
 pub mod error;
 pub mod friction;
+pub mod held;
 pub mod law;
 mod moments;
 pub mod predict;
@@ -27,6 +28,9 @@ pub enum TickRule {
     Trapezoid,
     /// c = 0, theta = 0: the present wrench acts all through the tick.
     Explicit,
+    /// The torques are held, and the frozen contact motion of all soft soles is solved exactly: see [`held`]. The accelerations
+    /// of the problem are averages over the tick.
+    Held,
 }
 
 /// Stiffness and damping, normal and tangential. Per area (N/m^3, N s/m^3) under a polygon, per

@@ -19,22 +19,25 @@ use crate::spatial::polygon::SoleShape;
 use crate::spatial::{Mat6, Pose, Twist, Vec3, Vec6, exp_so3, left_jacobian_so3};
 
 impl TickRule {
-    /// c: the share of `T^2 a` in the tick-end position.
+    /// c: the share of `T^2 a` in the tick-end position. Under `held` the position follows from the exact motion; one half
+    /// is what it would be with a constant acceleration.
     pub fn position_weight(self) -> f64 {
         match self {
             TickRule::BackwardEuler => 1.0,
-            TickRule::Trapezoid => 0.5,
+            TickRule::Trapezoid | TickRule::Held => 0.5,
             TickRule::Explicit => 0.0,
         }
     }
 
-    /// theta: the share of the tick-end wrench in the one that acts during the tick.
+    /// theta: the share of the tick-end wrench in the one that acts during the tick. Under `held` the average wrench is an
+    /// unknown of its own, and no mix stands in for it.
     pub fn wrench_weight(self) -> f64 {
         self.position_weight()
     }
 }
 
-/// The map of one sole over one tick.
+/// The map of one sole over one tick. Under [`TickRule::Held`] the present and the drift wrench, stiffness and damping of a soft sole are
+/// what [`super::held::coupled_map`] needs; its contact equality and `theta` are not used.
 ///
 /// `tick` is T (s), `mass` (kg) the mass that Z weighs the wrench against (the robot's), which
 /// changes the scaling of the contact equality and nothing else.

@@ -2,6 +2,7 @@
 //! task and limit, assembly.
 
 pub mod assemble;
+pub mod coupled;
 pub mod layout;
 pub mod limits;
 mod physics;

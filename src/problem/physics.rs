@@ -2,8 +2,12 @@
 //!
 //! - `M nu_dot - S' tau - sum J' w_bar = external - h - friction`, `w_bar = (1 - theta) now + theta w_plus`;
 //! - `acceleration_part (J nu_dot + J_dot nu) + wrench_part w_plus = right_side` for each sole;
+//! - under the rule `held`, w_bar of a soft sole is an unknown, and the soles' equality is coupled (`contact::held`);
 //! - `w_plus = sum X_i f_i` where a friction set speaks of vertex forces.
 
+use nalgebra::DMatrix;
+
+use super::coupled::CoupledRows;
 use super::layout::{Layout, force_unit, velocity_names};
 use super::question::Question;
 use super::rows::{Entries, PhysicalRow, Scaler};
@@ -16,8 +20,11 @@ const PARTS: [&str; 6] = ["x", "y", "z", "rx", "ry", "rz"];
 /// Adds every physics row.
 pub fn push(question: &Question, scene: &Scene, layout: &Layout, scaler: &Scaler, out: &mut ConicRows) {
     push_dynamics(question, scene, layout, scaler, out);
-    for (sole, columns) in scene.soles.iter().zip(&layout.contacts) {
+    for (sole, columns) in scene.soles.iter().zip(&layout.contacts).filter(|(_, columns)| columns.mean.is_none()) {
         push_contact(sole, columns, layout, scaler, out);
+    }
+    if let Some(map) = &scene.coupled {
+        push_coupled(map, scene, layout, scaler, out);
     }
     for (index, contact) in question.contacts.iter().enumerate() {
         push_vertex_sum(question, contact.sole, &scene.soles[index], &layout.contacts[index], layout, scaler, out);
@@ -35,13 +42,16 @@ fn push_dynamics(question: &Question, scene: &Scene, layout: &Layout, scaler: &S
         }
         let mut rhs = scene.external[i] - ws.bias[i] - ws.friction[i];
         for (sole, columns) in scene.soles.iter().zip(&layout.contacts) {
-            let theta = sole.map.theta;
+            let (acting, theta) = columns.mean.map_or((columns.wrench, sole.map.theta), |mean| (mean, 1.0));
             let now = sole.map.now.to_vec6();
             for k in 0..columns.dimension {
                 let lever = sole.jacobian[(k, i)];
-                entries.push((columns.wrench + k, -theta * lever));
+                entries.push((acting + k, -theta * lever));
                 rhs += (1.0 - theta) * lever * now[k];
             }
+        }
+        if let Some(rows) = &scene.coupled {
+            push_friction(i, rows, layout, &mut entries, &mut rhs);
         }
         let row = PhysicalRow { entries, rhs, part: name, unit: force_unit(model, i) };
         scaler.push_cone(out, Cone::Zero(1), "dynamics", true, layout.dynamics_scale[i], &[row]);
@@ -72,6 +82,45 @@ fn push_contact(
         let row = PhysicalRow { entries, rhs: map.right_side[k] - drift, part: PARTS[k].into(), unit };
         scaler.push_cone(out, Cone::Zero(1), &group, true, scale, &[row]);
     }
+}
+
+/// Mean and end rows of every soft sole under the rule `held`, see `contact::held`.
+fn push_coupled(rows: &CoupledRows, scene: &Scene, layout: &Layout, scaler: &Scaler, out: &mut ConicRows) {
+    let coordinates = soft_coordinates(layout);
+    for (i, &(contact, _, _, k)) in coordinates.iter().enumerate() {
+        let group = format!("contact:{}", scene.soles[contact].name);
+        let radius = layout.contacts[contact].radius;
+        let (unit, scale) = if k < 3 { ("m/s^2", 9.80665) } else { ("rad/s^2", 9.80665 / radius) };
+        let mut push = |part: String, entries: Entries, rhs: f64| {
+            let row = PhysicalRow { entries, rhs, part, unit };
+            scaler.push_cone(out, Cone::Zero(1), &group, true, scale, &[row]);
+        };
+        let on_acceleration = |m: &DMatrix<f64>| (0..layout.velocities).map(|j| (j, m[(i, j)])).collect::<Entries>();
+        let mut entries = on_acceleration(&rows.mean_acceleration);
+        entries.extend(coordinates.iter().enumerate().map(|(l, c)| (c.1, rows.mean_mean[(i, l)])));
+        push(format!("mean {}", PARTS[k]), entries, rows.mean_right[i]);
+        let mut entries = on_acceleration(&rows.end_acceleration);
+        entries.extend(coordinates.iter().enumerate().map(|(l, c)| (c.1, rows.end_mean[(i, l)])));
+        entries.extend(coordinates.iter().enumerate().map(|(l, c)| (c.2, rows.end_end[(i, l)])));
+        push(format!("end {}", PARTS[k]), entries, rows.end_right[i]);
+    }
+}
+
+/// For each coordinate of the coupled rows: its contact, its average-wrench column, its end-wrench column, its part.
+fn soft_coordinates(layout: &Layout) -> Vec<(usize, usize, usize, usize)> {
+    let contacts = layout.contacts.iter().enumerate();
+    contacts
+        .filter_map(|(i, columns)| columns.mean.map(|mean| (i, mean, columns)))
+        .flat_map(|(i, mean, columns)| (0..columns.dimension).map(move |k| (i, mean + k, columns.wrench + k, k)))
+        .collect()
+}
+
+/// What the change of friction over the tick adds to row i of the dynamics, and to its right side.
+fn push_friction(i: usize, rows: &CoupledRows, layout: &Layout, entries: &mut Entries, rhs: &mut f64) {
+    let Some(f) = rows.damped.iter().position(|&row| row == i) else { return };
+    entries.extend((0..layout.velocities).map(|j| (j, -rows.friction_acceleration[(f, j)])));
+    entries.extend(soft_coordinates(layout).iter().enumerate().map(|(l, c)| (c.1, -rows.friction_mean[(f, l)])));
+    *rhs += rows.friction_right[f];
 }
 
 fn push_vertex_sum(

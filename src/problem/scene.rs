@@ -2,8 +2,9 @@
 
 use nalgebra::DMatrix;
 
+use super::coupled::CoupledRows;
 use super::question::Question;
-use crate::contact::{ContactError, Patch, SoleMotion, TickMap, tick};
+use crate::contact::{ContactError, Patch, SoleMotion, TickMap, TickRule, tick};
 use crate::dynamics::{self, Workspace};
 use crate::spatial::{Vec3, Vec6, Wrench};
 
@@ -33,6 +34,9 @@ pub struct Scene {
     pub external: nalgebra::DVector<f64>,
     /// External wrenches in the world: point, its velocity, load about the point.
     pub loads: Vec<PlacedLoad>,
+    /// Under the rule `held`, the contact equality of all soft soles together; it takes the place of theirs in [`SoleScene::map`].
+    /// None under other rules, and where there is neither a soft sole nor a damped joint.
+    pub coupled: Option<CoupledRows>,
 }
 
 /// An external wrench in the world.
@@ -59,6 +63,12 @@ pub enum SceneError {
         /// What is wrong.
         source: ContactError,
     },
+    /// The soft soles together, under the rule `held`.
+    #[error("soft soles coupled by the rule held: {0}")]
+    Coupled(ContactError),
+    /// The mass matrix is not positive definite, so that accelerations do not follow from wrenches.
+    #[error("soft soles coupled by the rule held: the mass matrix is not positive definite")]
+    NoMobility,
 }
 
 impl Scene {
@@ -100,7 +110,22 @@ impl Scene {
             dynamics::external_generalised_force(model, &ws, frame.body, &point, &load.wrench, &mut external);
             loads.push(PlacedLoad { point, velocity, wrench: load.wrench });
         }
-        Ok(Scene { dynamics: ws, soles, external, loads })
+        let held = question.tick.rule == TickRule::Held;
+        let coupled = if held { CoupledRows::new(question, &ws, &soles)? } else { None };
+        Ok(Scene { dynamics: ws, soles, external, loads, coupled })
+    }
+
+    /// For each contact, where its rows start in [`Scene::coupled`]; none on rigid ground or without coupling.
+    pub fn coupled_starts(&self) -> Vec<Option<usize>> {
+        let mut next = 0;
+        self.soles
+            .iter()
+            .map(|sole| {
+                let own = (self.coupled.is_some() && !sole.map.rigid).then_some(next);
+                next += own.map_or(0, |_| sole.map.dimension);
+                own
+            })
+            .collect()
     }
 
     /// Rate of momentum under the present wrenches (N; N m about the centre of mass): `sum X w + m g`.

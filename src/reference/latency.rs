@@ -10,6 +10,7 @@ use nalgebra::{DMatrix, DVector};
 use super::Trouble;
 use crate::contact::{Law, Patch, Rest, TickRule, rest, tick};
 use crate::dynamics;
+use crate::problem::coupled::CoupledRows;
 use crate::problem::question::{Latency, Question};
 use crate::problem::scene::Scene;
 use crate::spatial::{Vec6, Wrench};
@@ -67,33 +68,64 @@ fn advance(question: &mut Question, latency: &Latency) -> Result<(), Trouble> {
     Ok(())
 }
 
+/// What given torques lead to over the tick.
+pub struct Response {
+    /// Generalised acceleration (nv); under the rule `held` its average.
+    pub acceleration: DVector<f64>,
+    /// Wrench of each contact at the tick's end.
+    pub wrenches: Vec<Wrench>,
+    /// Wrench that acts during the tick, on average.
+    pub over_tick: Vec<Wrench>,
+}
+
 /// Accelerations (nv) and tick-end wrenches that given torques (joint order) lead to: the physics rows solved with the torques known.
 pub fn respond(question: &Question, scene: &Scene, torques: &[f64]) -> Result<(DVector<f64>, Vec<Wrench>), Trouble> {
+    response(question, scene, torques).map(|r| (r.acceleration, r.wrenches))
+}
+
+/// As [`respond`], with the average wrenches too.
+pub fn response(question: &Question, scene: &Scene, torques: &[f64]) -> Result<Response, Trouble> {
     let model = &*question.model;
     let ws = &scene.dynamics;
     let nv = model.velocities();
-    let dimension = nv + scene.soles.iter().map(|s| s.map.dimension).sum::<usize>();
+    let starts = scene.coupled_starts();
+    let (end_size, mean_size) = (
+        scene.soles.iter().map(|s| s.map.dimension).sum::<usize>(),
+        scene.coupled.as_ref().map_or(0, |map| map.mean_right.len()),
+    );
+    // Columns: accelerations, end wrenches, average wrenches under `held`; rows: balance, end rows, mean rows.
+    let dimension = nv + end_size + mean_size;
     let mut matrix = DMatrix::zeros(dimension, dimension);
     let mut right = DVector::zeros(dimension);
     matrix.view_mut((0, 0), (nv, nv)).copy_from(&ws.mass_matrix);
     for i in 0..nv {
         right[i] = scene.external[i] - ws.bias[i] - ws.friction[i];
     }
-    for (j, joint) in model.joints.iter().enumerate().filter(|(_, joint)| joint.actuated) {
-        debug_assert!(joint.actuated);
+    for (j, _) in model.joints.iter().enumerate().filter(|(_, joint)| joint.actuated) {
         right[model.joint_offset() + j] += torques[j];
     }
     // Wrenches count in body weights, so that forces and accelerations are of one size.
     let unit = ws.mass * 10.0;
     let mut at = nv;
-    for sole in &scene.soles {
+    let mut ends: Vec<usize> = Vec::with_capacity(mean_size);
+    for (sole, start) in scene.soles.iter().zip(&starts) {
         let (d, map) = (sole.map.dimension, &sole.map);
+        let (acting, theta) = start.map_or((at, map.theta), |start| (nv + end_size + start, 1.0));
         let now = map.now.to_vec6();
         for k in 0..d {
             for j in 0..nv {
                 let lever = sole.jacobian[(k, j)];
-                matrix[(j, at + k)] -= map.theta * lever * unit;
-                right[j] += (1.0 - map.theta) * lever * now[k];
+                matrix[(j, acting + k)] -= theta * lever * unit;
+                right[j] += (1.0 - theta) * lever * now[k];
+            }
+        }
+        if start.is_some() {
+            ends.extend(at..at + d);
+            at += d;
+            continue;
+        }
+        for k in 0..d {
+            for j in 0..nv {
                 matrix[(at + k, j)] = (0..d).map(|l| map.acceleration_part[(k, l)] * sole.jacobian[(l, j)]).sum();
             }
             for l in 0..d {
@@ -104,16 +136,53 @@ pub fn respond(question: &Question, scene: &Scene, torques: &[f64]) -> Result<(D
         }
         at += d;
     }
-    let solution = matrix.lu().solve(&right).filter(|x| x.iter().all(|v| v.is_finite())).ok_or(Trouble::Latency)?;
-    let mut wrenches = Vec::with_capacity(scene.soles.len());
-    let mut at = nv;
-    for sole in &scene.soles {
-        let mut w = Vec6::zeros();
-        for k in 0..sole.map.dimension {
-            w[k] = solution[at + k] * unit;
-        }
-        at += sole.map.dimension;
-        wrenches.push(Wrench::from_vec6(&w));
+    if let Some(map) = &scene.coupled {
+        coupled_rows(map, &ends, (nv, nv + end_size, unit), &mut matrix, &mut right);
     }
-    Ok((solution.rows(0, nv).into_owned(), wrenches))
+    let solution = matrix.lu().solve(&right).filter(|x| x.iter().all(|v| v.is_finite())).ok_or(Trouble::Latency)?;
+    let (mut wrenches, mut over_tick) = (Vec::with_capacity(scene.soles.len()), Vec::with_capacity(scene.soles.len()));
+    let mut at = nv;
+    for (sole, start) in scene.soles.iter().zip(&starts) {
+        let d = sole.map.dimension;
+        let read = |first: usize| Wrench::from_vec6(&Vec6::from_fn(|k, _| if k < d { solution[first + k] * unit } else { 0.0 }));
+        let (end, now, theta) = (read(at), sole.map.now, sole.map.theta);
+        wrenches.push(end);
+        over_tick.push(start.map_or_else(|| now.mixed(&end, theta), |start| read(nv + end_size + start)));
+        at += d;
+    }
+    Ok(Response { acceleration: solution.rows(0, nv).into_owned(), wrenches, over_tick })
+}
+
+/// Rows of the rule `held`. `ends`: the end-wrench column (and row) of each soft coordinate; `places`: number of accelerations, first
+/// average-wrench column (and row), unit of wrenches.
+fn coupled_rows(
+    rows: &CoupledRows,
+    ends: &[usize],
+    places: (usize, usize, f64),
+    matrix: &mut DMatrix<f64>,
+    right: &mut DVector<f64>,
+) {
+    let (nv, mean, unit) = places;
+    for (i, &end_row) in ends.iter().enumerate() {
+        for j in 0..nv {
+            matrix[(mean + i, j)] = rows.mean_acceleration[(i, j)];
+            matrix[(end_row, j)] = rows.end_acceleration[(i, j)];
+        }
+        for (l, &end) in ends.iter().enumerate() {
+            matrix[(mean + i, mean + l)] = rows.mean_mean[(i, l)] * unit;
+            matrix[(end_row, mean + l)] = rows.end_mean[(i, l)] * unit;
+            matrix[(end_row, end)] = rows.end_end[(i, l)] * unit;
+        }
+        right[mean + i] = rows.mean_right[i];
+        right[end_row] = rows.end_right[i];
+    }
+    for (f, &row) in rows.damped.iter().enumerate() {
+        for j in 0..nv {
+            matrix[(row, j)] -= rows.friction_acceleration[(f, j)];
+        }
+        for l in 0..ends.len() {
+            matrix[(row, mean + l)] -= rows.friction_mean[(f, l)] * unit;
+        }
+        right[row] += rows.friction_right[f];
+    }
 }

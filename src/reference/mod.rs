@@ -20,6 +20,7 @@ use crate::problem::scene::{Scene, SceneError};
 use crate::problem::{Assembly, assemble};
 use crate::solve::{self, HierarchySolution, SolveError};
 use answer::{Answer, DynamicsReport, Status, Warning};
+pub use latency::Response;
 
 /// Above this `omega_max T` the tick is long for the bed, and the answer warns.
 pub const TICK_WARNING: f64 = 0.3;
@@ -71,6 +72,15 @@ pub fn solve(question: &Question, cancel: &Arc<AtomicBool>) -> Result<Answer, Tr
     let solution = solve::solve(&assembly.hierarchy, &solve::Options::default(), Some(cancel))?;
     let work = Work { question, scene, assembly, solution };
     Ok(answer(work))
+}
+
+/// What given torques (joint order, N m or N) lead to over `question`'s tick, by its rule. A latency in the question is not
+/// looked at: the state is the one the tick starts from.
+///
+/// # Errors
+/// [`Trouble::Scene`]; [`Trouble::Latency`] where rigid soles that fight leave the wrenches undetermined.
+pub fn respond(question: &Question, torques: &[f64]) -> Result<Response, Trouble> {
+    latency::response(question, &Scene::new(question)?, torques)
 }
 
 /// Rigid-body terms of a state.

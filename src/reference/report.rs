@@ -116,9 +116,10 @@ fn sole(work: &Work, found: Option<&Found>, index: usize) -> SoleAnswer {
         crate::spatial::polygon::SoleShape::Point => None,
     };
     let center = in_sole.as_ref().filter(|_| polygon.is_some()).and_then(center_of_pressure);
-    let over_tick = wrench.map(|w| {
-        let theta = scene.map.theta;
-        Wrench { force: mix(&scene.map.now.force, &w.force, theta), moment: mix(&scene.map.now.moment, &w.moment, theta) }
+    let columns = &work.assembly.layout.contacts[index];
+    let over_tick = found.zip(wrench).map(|(f, w)| match columns.mean {
+        None => scene.map.now.mixed(&w, scene.map.theta),
+        Some(first) => Wrench::from_vec6(&Vec6::from_fn(|k, _| if k < columns.dimension { f.x[first + k] } else { 0.0 })),
     });
     let acceleration = found.map(|f| {
         let nu_dot = nalgebra::DVector::from_column_slice(&f.x[..work.assembly.layout.velocities]);
@@ -141,10 +142,6 @@ fn sole(work: &Work, found: Option<&Found>, index: usize) -> SoleAnswer {
         acceleration,
         linearisation_error: found.and_then(|f| f.linearisation[index]),
     }
-}
-
-fn mix(now: &Vec3, later: &Vec3, theta: f64) -> Vec3 {
-    now * (1.0 - theta) + later * theta
 }
 
 /// One entry per task.

@@ -4,24 +4,16 @@ use super::answer::*;
 use super::check::check;
 use super::dense::largest;
 use super::engine::{Ended, EngineAnswer, Program, run};
-use super::faces::{ensure_interior, exposed, interior_program, restrict};
+use super::faces::{ensure_interior, interior_program};
 use super::free::free_directions;
 use super::infeasible::{certify, certify_equality, project_dual};
 use super::level::{LevelData, LevelProblem, assemble, assemble_reduced, reduce};
 use super::refine::{CONFIRMED, Mode, Point, Refined, classify, optimality, refine};
-use super::system::{Contradiction, DEPENDENT, DEPENDENT_FACE, Kind, Reduced, System};
+use super::system::{Contradiction, Kind, Reduced, System};
 use crate::conic::Hierarchy;
 use std::sync::Arc;
 use std::sync::atomic::{AtomicBool, Ordering};
 
-/// A multiplier below this part of the problem's size exposes nothing; the interior test decides instead.
-const EXPOSING: f64 = 1e-10;
-/// The same where the point is the engine's own.
-const EXPOSING_UNREFINED: f64 = 1e-5;
-/// A multiplier this close to the boundary of the dual cone (relative) lies on it.
-const ON_BOUNDARY: f64 = 1e-9;
-/// The same where the point is the engine's own.
-const ON_BOUNDARY_UNREFINED: f64 = 1e-5;
 /// Rounds of taking rows into the active set and out of it, from the engine's point.
 const ROUNDS: usize = 24;
 /// The same without the engine: beyond a few, the engine is quicker.
@@ -38,7 +30,7 @@ const PULL: f64 = 1e-8;
 const MAX_RESTARTS: usize = 4;
 
 /// Why the cascade ended early.
-enum Stop {
+pub(super) enum Stop {
     Cancelled,
     Infeasible(Option<InfeasibilityCertificate>),
     Failed(SolveError),
@@ -50,31 +42,32 @@ impl From<SolveError> for Stop {
     }
 }
 
-struct Cascade<'a> {
-    hierarchy: &'a Hierarchy,
-    options: &'a Options,
-    cancel: Option<&'a Arc<AtomicBool>>,
-    system: System,
+/// The state of the descent.
+pub(super) struct Cascade<'a> {
+    pub(super) hierarchy: &'a Hierarchy,
+    pub(super) options: &'a Options,
+    pub(super) cancel: Option<&'a Arc<AtomicBool>>,
+    pub(super) system: System,
     /// Live blocks at `system.x`, where known.
-    sets: Option<Reduced>,
-    interior_known: bool,
-    hard_faces: Vec<FaceDecision>,
-    ill_posed: bool,
-    inaccurate: bool,
-    x_bound: f64,
+    pub(super) sets: Option<Reduced>,
+    pub(super) interior_known: bool,
+    pub(super) hard_faces: Vec<FaceDecision>,
+    pub(super) ill_posed: bool,
+    pub(super) inaccurate: bool,
+    pub(super) x_bound: f64,
 }
 
 /// A level at its optimum, in the coordinates of the system.
-struct Solved {
-    problem: LevelProblem,
-    point: Point,
-    optimality: Optimality,
-    refined: bool,
+pub(super) struct Solved {
+    pub(super) problem: LevelProblem,
+    pub(super) point: Point,
+    pub(super) optimality: Optimality,
+    pub(super) refined: bool,
     /// Refined, or at least the engine's own full accuracy.
-    trusted: bool,
-    bound: f64,
-    cost_pivot: f64,
-    iterations: u32,
+    pub(super) trusted: bool,
+    pub(super) bound: f64,
+    pub(super) cost_pivot: f64,
+    pub(super) iterations: u32,
 }
 
 /// Solves a hierarchy: lexicographically, each level over everything that leaves the levels before it
@@ -232,7 +225,8 @@ impl Cascade<'_> {
     /// Newton steps from the point of the level before, or from the shortest point where nothing is unequal.
     fn without_engine(&self, problem: &LevelProblem) -> Option<Solved> {
         let unconstrained = problem.sets.blocks.is_empty();
-        if !unconstrained && !(self.options.warm && self.interior_known) {
+        let tried = self.options.warm && self.interior_known;
+        if !(unconstrained || tried) {
             return None;
         }
         let d = problem.sets.d;
@@ -357,138 +351,5 @@ impl Cascade<'_> {
             }
         }
         Ok((None, None))
-    }
-
-    fn move_to(&mut self, solved: &Solved) {
-        self.system.space.add_expanded(&solved.point.u, &mut self.system.x);
-        self.system.return_to_equalities();
-        self.sets = None;
-    }
-
-    /// What the answer says about a level, before it is frozen.
-    fn report(&mut self, data: &LevelData, solved: &Solved) -> LevelOutcome {
-        let system = &self.system;
-        let mut x = system.x.clone();
-        system.space.add_expanded(&solved.point.u, &mut x);
-        let residuals = data.residuals;
-        let residual: Vec<f64> = (0..residuals.rhs.len()).map(|i| residuals.matrix.row_dot(i, &x) - residuals.rhs[i]).collect();
-        let mut gradient = vec![0.0; x.len()];
-        let pull: Vec<f64> = residual.iter().zip(&residuals.weight).map(|(r, w)| 2.0 * w * r).collect();
-        residuals.matrix.add_transpose_times(&pull, &mut gradient);
-        let mut cost: f64 = residual.iter().zip(&residuals.weight).map(|(r, w)| w * r * r).sum();
-        let mut by_row = vec![0.0; system.rhs.len()];
-        let soft_rows = data.soft.map_or(0, |(rows, _)| rows.rhs.len());
-        let (mut soft_slack, mut soft_multipliers) = (Vec::new(), vec![0.0; soft_rows]);
-        for block in &solved.problem.sets.blocks {
-            let z = &solved.point.z[block.first..block.first + block.len];
-            if let (Some(weight), Some((soft, _))) = (block.soft, data.soft) {
-                let first = solved.problem.soft_first[block.block];
-                soft_multipliers[first..first + block.len].copy_from_slice(z);
-                let t = z[0] / (2.0 * weight);
-                cost += weight * t * t;
-                soft_slack.push(t);
-                for (k, row) in (first..first + block.len).enumerate() {
-                    soft.matrix.row(row).for_each(|(j, v)| gradient[j] += v * z[k]);
-                }
-            } else {
-                let first = system.blocks[block.block].first;
-                by_row[first..first + block.len].copy_from_slice(z);
-                for (k, row) in (first..first + block.len).enumerate() {
-                    system.matrix.row(row).for_each(|(j, v)| gradient[j] += v * z[k]);
-                }
-            }
-        }
-        for (&row, y) in system.pivots.iter().zip(system.space.multipliers(&gradient)) {
-            by_row[row] = -y;
-        }
-        self.x_bound += solved.bound / solved.cost_pivot.max(f64::MIN_POSITIVE);
-        let (shown, origin) = system.snapshot();
-        LevelOutcome {
-            priority: data.priority,
-            x,
-            system: shown,
-            multipliers: origin.iter().map(|&row| by_row[row]).collect(),
-            soft_slack,
-            soft_multipliers,
-            cost: cost + 0.0,
-            residual,
-            rank: Vec::new(),
-            faces: Vec::new(),
-            refined: solved.refined,
-            bound: solved.bound,
-            optimality: solved.optimality,
-            iterations: solved.iterations,
-        }
-    }
-
-    /// Fixes what a level decided: its residuals, its slacks, the faces its multipliers expose.
-    fn freeze(&mut self, index: usize, data: &LevelData, solved: &Solved, outcome: &mut LevelOutcome) -> Result<(), Stop> {
-        self.move_to(solved);
-        let mut rows = Vec::new();
-        for row in 0..data.residuals.rhs.len() {
-            let entries: Vec<(usize, f64)> = data.residuals.matrix.row(row).collect();
-            let value = data.residuals.matrix.row_dot(row, &self.system.x);
-            rows.push((entries, value, RowSource::Frozen { level: index, row }));
-        }
-        outcome.rank.push(self.fix_independent(rows, "residuals of the level"));
-        let faces = self.expose(index, data, solved);
-        let fixed: Vec<usize> = faces.iter().flat_map(|(block, face)| restrict(&mut self.system, *block, &face.kind)).collect();
-        if !fixed.is_empty() {
-            outcome.rank.push(self.system.fix(&fixed, DEPENDENT_FACE, "faces of the level"));
-        }
-        outcome.faces.extend(faces.into_iter().map(|(_, face)| face));
-        self.system.return_to_equalities();
-        let interior = ensure_interior(&mut self.system, self.options, self.cancel)?;
-        if interior.cancelled {
-            return Err(Stop::Cancelled);
-        }
-        self.ill_posed |= interior.ill_posed;
-        self.inaccurate |= interior.negative;
-        outcome.faces.extend(interior.faces);
-        outcome.rank.extend(interior.rank);
-        self.sets = Some(interior.sets);
-        Ok(())
-    }
-
-    /// Appends the independent ones of some equality rows.
-    fn fix_independent(&mut self, rows: Vec<(Vec<(usize, f64)>, f64, RowSource)>, what: &'static str) -> RankDecision {
-        let entries: Vec<_> = rows.iter().map(|(row, _, _)| row.iter().copied()).collect();
-        let (kept, decision) = self.system.space.append(&entries, DEPENDENT, what);
-        for index in kept {
-            let (row, value, source) = &rows[index];
-            self.system.push_row(row.iter().copied(), *value, *source);
-            self.system.close_block(1, Kind::Equality);
-            self.system.pivots.push(self.system.rhs.len() - 1);
-        }
-        decision
-    }
-
-    /// Appends the soft limits relaxed by their slacks, and lists the faces the level's multipliers expose.
-    fn expose(&mut self, index: usize, data: &LevelData, solved: &Solved) -> Vec<(usize, FaceDecision)> {
-        let (tolerance, boundary) = if solved.refined {
-            (EXPOSING.max(1e3 * solved.optimality.worst()) * solved.problem.size, ON_BOUNDARY)
-        } else {
-            (EXPOSING_UNREFINED * solved.problem.size, ON_BOUNDARY_UNREFINED)
-        };
-        let mut faces = Vec::new();
-        for block in &solved.problem.sets.blocks {
-            let z = &solved.point.z[block.first..block.first + block.len];
-            let at = match (block.soft, data.soft) {
-                (Some(weight), Some((soft, _))) => {
-                    let first = solved.problem.soft_first[block.block];
-                    for (k, row) in (first..first + block.len).enumerate() {
-                        let relaxed = soft.rhs[row] + if k == 0 { z[0] / (2.0 * weight) } else { 0.0 };
-                        self.system.push_row(soft.matrix.row(row), relaxed, RowSource::Soft { level: index, row });
-                    }
-                    self.system.close_block(block.len, block.kind)
-                }
-                _ => block.block,
-            };
-            if let Some(kind) = exposed(block.kind, z, tolerance, boundary) {
-                let source = self.system.source[self.system.blocks[at].first];
-                faces.push((at, FaceDecision { source, kind, exposed: Exposed::ByMultiplier, multiplier: z.to_vec() }));
-            }
-        }
-        faces
     }
 }

@@ -132,7 +132,7 @@ pub(super) fn ensure_interior(
         }
         let t = answer.x.get(sets.d).copied().unwrap_or(0.0);
         found.negative |= t < -THIN;
-        if t > NO_INTERIOR || t < -THIN {
+        if !(-THIN..=NO_INTERIOR).contains(&t) {
             found.ill_posed |= t < THIN && t > 0.0;
             break;
         }

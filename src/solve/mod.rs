@@ -11,6 +11,7 @@ mod dense;
 mod engine;
 mod faces;
 mod free;
+mod freeze;
 mod infeasible;
 mod level;
 mod rank;

@@ -113,6 +113,14 @@ impl Wrench {
         Wrench { force: head(v), moment: tail(v) }
     }
 
+    /// `(1 - share) self + share other`.
+    pub fn mixed(&self, other: &Wrench, share: f64) -> Wrench {
+        Wrench {
+            force: self.force * (1.0 - share) + other.force * share,
+            moment: self.moment * (1.0 - share) + other.moment * share,
+        }
+    }
+
     /// The same load in other axes: each part multiplied by `rotation`.
     pub fn rotated(&self, rotation: &Mat3) -> Wrench {
         Wrench { force: rotation * self.force, moment: rotation * self.moment }

@@ -63,8 +63,8 @@ pub(super) struct AnswerOut<'a> {
     binding: Vec<BindingOut<'a>>,
     /// Room left to each limit, each in its own unit.
     margins: Vec<MarginOut<'a>>,
-    /// Directions the question left free before the least-effort tie-break, each part in its own
-    /// unit; empty where the answer is unique.
+    /// Directions the question left free before the least-effort tie-break, parts in the unit each
+    /// names (N m, rad/s^2, N and others); empty where the answer is unique.
     free: Vec<FreeOut<'a>>,
     /// What was verified without the solver (figures without unit); null where there was nothing to
     /// verify.
@@ -132,8 +132,8 @@ struct SoleOut<'a> {
     vertex_forces: Vec<Tuple<3>>,
     /// Acceleration of the sole, world axes (m/s^2, rad/s^2); null where nothing was found.
     acceleration: Option<LinearAngularOut>,
-    /// How far the linear map is from the law itself at the predicted state; null where nothing was
-    /// found, or on rigid ground.
+    /// How far the linear map is from the law itself at the predicted state (N, N m); null where
+    /// nothing was found, or on rigid ground.
     linearisation_error: Option<LinearisationOut>,
 }
 

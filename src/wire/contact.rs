@@ -7,6 +7,7 @@ use super::common::{NumberOr, WrenchBody, pose};
 use super::friction::{FrictionBody, NormalForceBody, WrenchRateBody};
 use super::gate::{At, Gate, listed, quoted};
 use super::kinds::{KindRule, KindTable, given};
+use super::strict::MAX_MAGNITUDE;
 use crate::contact::{Ground, Law, Material, Rest, TickRule};
 use crate::dynamics::{Workspace, frame_pose};
 use crate::model::{Model, Sole, State};
@@ -240,6 +241,7 @@ impl ContactBody {
         if body.axes != Some(WrenchAxes::Sole) || !gate.clean() {
             return Some(wrench);
         }
+        // Only a state that was found good fits the model, which the kinematics rely on.
         let mut workspace = Workspace::new(scene.model);
         workspace.update(scene.model, scene.state, &Vec3::zeros());
         let pose = frame_pose(scene.model, &workspace, sole.body, &sole.placement);
@@ -307,11 +309,19 @@ impl LawBody {
         if tick.rule == TickRule::Explicit {
             explicit_needs(gate, at.name("damping"), [(kn, bn), (kt, bt)], tick.length);
         }
+        let mut spread = |name: &'static str, value: f64| {
+            let value = value / area;
+            if value > MAX_MAGNITUDE || !value.is_finite() {
+                let expected = "at most 1e15 per area once divided by the area of the sole";
+                gate.fault(at.name(name), expected, format!("{value}, the area being {area} m^2"));
+            }
+            value
+        };
         Law::Bonded(Material {
-            normal_stiffness: kn / area,
-            tangential_stiffness: kt / area,
-            normal_damping: bn / area,
-            tangential_damping: bt / area,
+            normal_stiffness: spread("stiffness", kn),
+            tangential_stiffness: spread("stiffness", kt),
+            normal_damping: spread("damping", bn),
+            tangential_damping: spread("damping", bt),
         })
     }
 }

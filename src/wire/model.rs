@@ -4,7 +4,7 @@ use schemars::JsonSchema;
 use serde::Deserialize;
 
 use super::common::{Format, pose};
-use super::gate::{At, Gate};
+use super::gate::{At, Gate, push_token};
 use super::refusal::{Fault, Refusal};
 use crate::model::{
     JointSpec, Model, ModelError, ModelOptions, SoleSpec, Subject, TorqueSpeedLine, read_urdf,
@@ -263,15 +263,14 @@ impl JointBody {
 
 /// A refused description as a refused request.
 fn refusal(error: &ModelError, at: At<'_>) -> Refusal {
-    let (list, urdf) = match error.subject {
-        Subject::Urdf { .. } => (at, at.name("urdf")),
-        Subject::Sole(_) => (at.name("soles"), at),
-        Subject::Joint(_) => (at.name("joints"), at),
+    let (mut pointer, line) = match error.subject {
+        Subject::Urdf { line, .. } => (at.name("urdf").pointer(), u32::try_from(line).ok()),
+        Subject::Sole(i) => (at.name("soles").index(i).pointer(), None),
+        Subject::Joint(i) => (at.name("joints").index(i).pointer(), None),
     };
-    let (pointer, line) = match error.subject {
-        Subject::Urdf { line, .. } => (urdf.pointer(), u32::try_from(line).ok()),
-        Subject::Sole(i) | Subject::Joint(i) => (list.index(i).pointer(), None),
-    };
+    for token in error.member().into_iter().flat_map(|member| member.split('.')) {
+        push_token(&mut pointer, token);
+    }
     Refusal {
         status: 422,
         code: error.code(),

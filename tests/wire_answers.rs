@@ -1,0 +1,285 @@
+//! Documents on their way out follow their schemas, hold no number that is not finite, and are the
+//! same bytes each time.
+
+mod wire_common;
+
+use std::sync::Arc;
+
+use serde_json::{Value, json};
+use underfoot::certify::{Certificate, Check, LevelCheck};
+use underfoot::conic::{Column, Cone, ConicRows, Hierarchy, Level, ResidualRows, RowName};
+use underfoot::model::Model;
+use underfoot::problem::question::Question;
+use underfoot::reference::answer::{
+    Answer, Binding, Blocking, DynamicsReport, FrameReport, FreeDirection, GroundReport, LevelAnswer,
+    Margin, Motion, Rocking, SoleAnswer, SoleGround, Status, TaskAnswer, Warning,
+};
+use underfoot::spatial::{Vec3, Wrench};
+use underfoot::wire::{
+    ModelSource, fingerprint, read_dynamics, read_model, read_solve, schema, write_answer, write_dynamics,
+    write_model, write_refusal,
+};
+use wire_common::{Nothing, bytes, dynamics_request, model_request, solve_request};
+
+fn follows(name: &str, document: &[u8]) -> Value {
+    let schema: Value = serde_json::from_str(&schema(name).expect("a schema")).expect("JSON");
+    let validator = jsonschema::validator_for(&schema).expect("a schema that can be used");
+    let value: Value = serde_json::from_slice(document).expect("JSON");
+    let errors: Vec<String> =
+        validator.iter_errors(&value).map(|e| format!("{}: {e}", e.instance_path())).collect();
+    assert!(errors.is_empty(), "{name}: {errors:#?}");
+    value
+}
+
+fn question() -> Question {
+    read_solve(&bytes(&solve_request()), &Nothing).expect("the request is good")
+}
+
+fn rows() -> ConicRows {
+    let mut rows = ConicRows::new(2);
+    rows.matrix.push([(0, 1.0), (1, -2.0)]);
+    rows.matrix.push([]);
+    rows.matrix.push([(1, 3.0)]);
+    rows.rhs = vec![1.0, 0.0, 2.0];
+    rows.cones = vec![Cone::Zero(1), Cone::SecondOrder(2)];
+    rows.names = vec![row(), row(), row()];
+    rows
+}
+
+fn row() -> RowName {
+    RowName { group: "torque".into(), part: "r_hip".into(), unit: "N m", scale: 10.0, physics: false }
+}
+
+fn hierarchy() -> Hierarchy {
+    let mut residuals = ResidualRows::new(2);
+    residuals.matrix.push([(1, 1.0)]);
+    residuals.rhs = vec![0.5];
+    residuals.weight = vec![1.0];
+    residuals.names = vec![row()];
+    Hierarchy {
+        columns: vec![
+            Column { name: "torque:r_hip".into(), unit: "N m", scale: 10.0 },
+            Column { name: "wrench:left:fz".into(), unit: "N", scale: 100.0 },
+        ],
+        hard: rows(),
+        levels: vec![Level { priority: 1, residuals: residuals.clone(), soft: rows(), soft_weight: vec![1.0] }],
+        tie_break: residuals,
+        auxiliary: vec![1],
+    }
+}
+
+fn report() -> DynamicsReport {
+    let two = [Vec3::x(), Vec3::y()];
+    DynamicsReport {
+        mass: 20.0,
+        velocities: vec!["base:vx".into(), "r_hip".into()],
+        mass_matrix: vec![vec![20.0, 0.1], vec![0.1, 1.0]],
+        bias: vec![0.0, 1.0],
+        friction: vec![0.0, 0.1],
+        center_of_mass: Vec3::z(),
+        center_of_mass_velocity: Vec3::zeros(),
+        momentum: two,
+        momentum_matrix: vec![vec![1.0, 0.0]; 6],
+        momentum_bias: two,
+        kinetic_energy: 1.0,
+        potential_energy: 2.0,
+        frames: vec![FrameReport {
+            name: "left".into(),
+            position: Vec3::x(),
+            orientation: [0.0, 0.0, 0.0, 1.0],
+            twist: two,
+            jacobian: vec![vec![1.0, 0.0]; 6],
+            bias_acceleration: two,
+        }],
+    }
+}
+
+fn sole() -> SoleAnswer {
+    let wrench = Some(Wrench { force: Vec3::z() * 100.0, moment: Vec3::x() });
+    SoleAnswer {
+        contact: 0,
+        name: "left".into(),
+        wrench,
+        wrench_in_sole_axes: wrench,
+        wrench_over_tick: wrench,
+        present: wrench,
+        present_in_sole_axes: None,
+        normal_force: Some(100.0),
+        center_of_pressure: Some([0.01, 0.0]),
+        friction_use: Some(0.2),
+        edge_distance: None,
+        vertex_forces: vec![Vec3::z()],
+        acceleration: Some([Vec3::x(), Vec3::y()]),
+        linearisation_error: Some([0.1, 0.01]),
+    }
+}
+
+fn answer() -> Answer {
+    let level = LevelAnswer {
+        priority: 1, cost: 0.1, rows: 6, rank: 5, smallest_kept: Some(0.1), largest_dropped: None,
+        freedom_left: 3, faces: vec!["friction:left".into()], refined: true, error_bound: 1e-9, iterations: 9,
+    };
+    let check = Check {
+        name: "dynamics", relative_to: "of the robot's weight", value: 1e-12, bound: 1e-9, worst: "r_hip".into(),
+    };
+    let level_check = LevelCheck {
+        priority: 1, stationarity: 1e-10, complementarity: 0.0, dual_violation: 0.0, bound: 1e-8,
+    };
+    Answer {
+        status: Status::Solved,
+        motion: Some(Motion {
+            torques: vec![1.0; 6],
+            joint_accelerations: vec![-0.5; 6],
+            base_acceleration: Some([Vec3::x(), Vec3::y()]),
+        }),
+        soles: vec![sole()],
+        tasks: vec![TaskAnswer {
+            name: "momentum".into(), unit: "N/s", priority: Some(1), rows: vec!["x".into()], units: vec!["N/s"],
+            desired: vec![1.0], achieved: vec![1.5], residual: vec![0.5],
+        }],
+        levels: vec![level],
+        binding: vec![Binding {
+            limit: "torque".into(), part: "r_hip".into(), priority: 1, multiplier: 0.5, unit: "N m",
+        }],
+        margins: vec![Margin { limit: "torque".into(), part: "r_hip".into(), margin: 0.0, unit: "N m" }],
+        free: vec![FreeDirection { parts: vec![("torque:r_hip".into(), 1.0, "N m")] }],
+        certificate: Some(Certificate { holds: true, checks: vec![check], levels: vec![level_check] }),
+        blocking: vec![Blocking { group: "torque".into(), share: 1.0 }],
+        ground: GroundReport {
+            omega_max: 100.0,
+            omega_max_tick: 0.5,
+            soles: vec![SoleGround {
+                name: "left".into(), damping_time: Some(0.01), tick_stiffness_over_damping: Some(0.5), sink: None,
+            }],
+            rocking: Some(Rocking { bed: 500.0, weight: 200.0 }),
+        },
+        warnings: vec![Warning { code: "coarse-tick", text: "omega_max T is 0.5".into() }],
+        problem: Some(Box::new(hierarchy())),
+        dynamics: Some(Box::new(report())),
+    }
+}
+
+#[test]
+fn answers_follow_their_schema() {
+    let (question, answer) = (question(), answer());
+    let document = follows("solve-answer", &write_answer(&question, &answer, "f00d"));
+    assert_eq!(document["status"], "solved");
+    assert_eq!(document["fingerprint"], "f00d");
+    assert_eq!(document["velocity_axes"], json!({ "linear": "world", "angular": "base" }));
+    assert_eq!(document["joints"][1], json!({ "name": "r_knee", "torque": 1.0, "acceleration": -0.5 }));
+    let matrix = &document["problem"]["hard"]["matrix"];
+    assert_eq!(
+        *matrix,
+        json!({ "rows": 3, "columns": 2, "row": [0, 0, 2], "column": [0, 1, 1], "value": [1.0, -2.0, 3.0] })
+    );
+    assert_eq!(document["problem"]["hard"]["cones"][1], json!({ "kind": "second_order", "rows": 2 }));
+    for (status, word) in [
+        (Status::Infeasible, "infeasible"), (Status::NotReachable, "not_reachable"),
+        (Status::IllPosed, "ill_posed"), (Status::Inaccurate, "inaccurate"), (Status::Cancelled, "cancelled"),
+    ] {
+        let empty = Answer {
+            status, motion: None, soles: vec![], certificate: None, problem: None, dynamics: None,
+            ..answer.clone()
+        };
+        let document = follows("solve-answer", &write_answer(&question, &empty, ""));
+        assert_eq!(document["status"], word);
+        assert_eq!(document["joints"], Value::Null);
+        assert!(document.get("problem").is_none());
+    }
+}
+
+#[test]
+fn same_answer_same_bytes() {
+    let (question, answer) = (question(), answer());
+    let first = write_answer(&question, &answer, "");
+    for _ in 0..100 {
+        assert_eq!(write_answer(&question, &answer, ""), first);
+    }
+}
+
+/// Every double that is written reads back as the same double.
+#[test]
+fn doubles_survive() {
+    let question = question();
+    let mut answer = answer();
+    let torques = vec![0.1 + 0.2, 5e-324, -1.7976931348623157e308, 1.0 / 3.0, -0.0, 6.02214076e23];
+    if let Some(motion) = &mut answer.motion {
+        motion.torques.clone_from(&torques);
+    }
+    let document = follows("solve-answer", &write_answer(&question, &answer, ""));
+    for (i, torque) in torques.iter().enumerate() {
+        let read = document["joints"][i]["torque"].as_f64().expect("a number");
+        assert_eq!(read.to_bits(), torque.to_bits());
+    }
+}
+
+/// A number that is not finite never passes as null: the answer is withheld and says so.
+#[test]
+fn numbers_that_are_not_finite_withhold_the_answer() {
+    let question = question();
+    let spoil: [fn(&mut Answer); 6] = [
+        |a| a.motion.as_mut().expect("motion").torques[3] = f64::NAN,
+        |a| a.soles[0].normal_force = Some(f64::INFINITY),
+        |a| a.tasks[0].residual[0] = f64::NEG_INFINITY,
+        |a| a.ground.omega_max = f64::NAN,
+        |a| a.problem.as_mut().expect("problem").hard.rhs[0] = f64::NAN,
+        |a| a.dynamics.as_mut().expect("dynamics").mass_matrix[1][1] = f64::NAN,
+    ];
+    for spoil in spoil {
+        let mut answer = answer();
+        spoil(&mut answer);
+        let document = follows("solve-answer", &write_answer(&question, &answer, "f00d"));
+        assert_eq!(document["status"], "inaccurate");
+        assert_eq!(document["joints"], Value::Null);
+        let warnings = document["warnings"].as_array().expect("warnings");
+        assert!(warnings.iter().any(|warning| warning["code"] == "not-finite"), "{document}");
+    }
+}
+
+#[test]
+fn dynamics_follow_their_schema() {
+    let request = bytes(&dynamics_request());
+    let question = read_dynamics(&request, &Nothing).expect("the request is good");
+    let mut report = report();
+    let document = follows("dynamics-answer", &write_dynamics(&question, &report, &fingerprint(&request)));
+    assert_eq!(document["dynamics"]["mass_matrix"], json!([[20.0, 0.1], [0.1, 1.0]]));
+    report.bias[0] = f64::NAN;
+    let document = follows("dynamics-answer", &write_dynamics(&question, &report, ""));
+    assert_eq!(document["dynamics"], Value::Null);
+}
+
+/// A registered model stands for itself: by its id the same question comes out.
+#[test]
+fn a_model_can_be_named_by_its_id() {
+    struct One(Arc<Model>);
+    impl ModelSource for One {
+        fn find(&self, id: &str) -> Option<Arc<Model>> {
+            (id == self.0.id).then(|| self.0.clone())
+        }
+    }
+    let model = read_model(&bytes(&model_request())).expect("the request is good");
+    let document = follows("model", &write_model(&model));
+    assert_eq!(document["joints"].as_array().map(Vec::len), Some(6));
+    assert_eq!(document["soles"][2]["vertices"], json!([]));
+    let mut request = solve_request();
+    request["model"] = document["id"].clone();
+    let by_id = read_solve(&bytes(&request), &One(Arc::new(model))).expect("the request is good");
+    let inline = question();
+    assert_eq!(by_id.model, inline.model);
+    assert_eq!(by_id.tasks, inline.tasks);
+}
+
+#[test]
+fn refusals_follow_their_schema() {
+    let mut request = model_request();
+    request["urdf"] = json!("<robot name='r'>\n<link/></robot>");
+    let refusal = read_model(&bytes(&request)).expect_err("a bad model");
+    let document = follows("problem", &write_refusal(&refusal, "/v1/models"));
+    assert_eq!(document["status"], 422);
+    assert_eq!(document["instance"], "/v1/models");
+    assert_eq!(document["faults"][0]["line"], 2);
+    let refusal = read_solve(b"{", &Nothing).err().expect("no JSON");
+    let document = follows("problem", &write_refusal(&refusal, "/v1/solve"));
+    assert_eq!((&document["status"], &document["code"]), (&json!(400), &json!("not-json")));
+    assert!(document["faults"][0].get("line").is_none());
+}
