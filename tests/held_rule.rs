@@ -319,13 +319,24 @@ fn the_certificate_refuses_other_physics() {
 
 #[test]
 fn probe() {
-    for (what, n_tasks, fr, lim) in [("none", 0, false, false), ("none+fr", 0, true, false), ("none+lim",0,false,true), ("1", 1, false, false), ("1+fr", 1, true, false), ("1+lim", 1, false, true), ("all", 4, true, true), ("all free", 5, false, false)] {
+    for rule in [TickRule::BackwardEuler, TickRule::Held] {
+    for (what, n_tasks, fr, nf, lim) in [("fr+lim", 0, true, false, true),("fr+nf", 0, true, true, false), ("1+fr+lim", 1, true, false, true), ("2+fr+nf", 2, true, true, false), ("1 nf lim", 1, false, true, true), ("all", 5, true, true, true)] {
         let mut q = held(2e6);
+        q.tick.rule = rule;
         if !lim { q.limits.clear(); }
-        for c in &mut q.contacts { if !fr { c.friction = None; c.normal_force = None; } }
+        for c in &mut q.contacts { if !fr { c.friction = None; } if !nf { c.normal_force = None; } }
         q.tasks.truncate(n_tasks);
         let a = reference::solve(&q, &Arc::new(AtomicBool::new(false))).unwrap();
-        println!("{what}: {:?} blocking {:?} levels {:?}", a.status, a.blocking, a.levels.iter().map(|l| (l.cost, l.iterations, l.refined, l.rank)).collect::<Vec<_>>());
-        if let Some(m) = &a.motion { println!("   tau {:?}", m.torques.iter().map(|t| t.round()).collect::<Vec<_>>()); println!("  w {:?} mean {:?}", a.soles[0].wrench, a.soles[0].wrench_over_tick); }
-    }
+        println!("{rule:?} {what}: {:?} levels {:?}", a.status, a.levels.iter().map(|l| (l.cost, l.iterations, l.refined, l.rank)).collect::<Vec<_>>());
+        if n_tasks == 5 {
+            let scene = Scene::new(&q).unwrap();
+            let h = assemble(&q, &scene, &vec![0.0; 2]).hierarchy;
+            let rows: Vec<usize> = (0..h.hard.names.len()).filter(|&i| h.hard.names[i].physics).collect();
+            let mut m = DMatrix::<f64>::zeros(rows.len(), h.columns.len());
+            for (k, &r) in rows.iter().enumerate() { for (j, v) in h.hard.matrix.row(r) { m[(k, j)] += v; } }
+            for (k, &r) in rows.iter().enumerate() { println!("  {} {} norm {:.2e} max {:.2e} rhs {:.2e}", h.hard.names[r].group, h.hard.names[r].part, m.row(k).norm(), m.row(k).amax(), h.hard.rhs[r]); }
+            let sv = m.singular_values();
+            println!("  sv {:?} .. {:?}", sv.max(), sv.min());
+        }
+    } }
 }

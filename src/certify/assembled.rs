@@ -12,10 +12,10 @@
 //!
 //! Under the rule `held` the rows of all soft soles hold together, and friction is part of them: the points compared are then ticks
 //! played by `held` under the point's torques and a force of any size besides. There the contact rows must vanish, the rows of the dynamics
-//! must leave exactly that force, and the contact rows must be independent, as many as there are average and end wrenches.
+//! must leave exactly that force, and the contact rows must be independent, as many as there are wrenches.
 //!
 //! Columns are found by name: `acceleration:<..>` in the order of the generalised velocity,
-//! `torque:<joint>`, `wrench:<sole>:<fx..mz>`, `mean:<sole>:<fx..mz>` (`held`), `vertex:<sole>:<i>:<x|y|z>`; physical = scaled * scale.
+//! `torque:<joint>`, `wrench:<sole>:<fx..mz>`, `vertex:<sole>:<i>:<x|y|z>`; physical = scaled * scale.
 
 use nalgebra::{DMatrix, DVector};
 
@@ -55,7 +55,6 @@ struct Columns {
     acceleration: Vec<usize>,
     torque: Vec<Option<usize>>,
     wrench: Vec<[Option<usize>; 6]>,
-    mean: Vec<[Option<usize>; 6]>,
     vertices: Vec<Vec<[usize; 3]>>,
     scale: Vec<f64>,
 }
@@ -73,19 +72,18 @@ impl Columns {
         let torque: Vec<Option<usize>> =
             model.joints.iter().map(|joint| at(format!("torque:{}", joint.name))).collect();
         let complete = torque.iter().zip(&model.joints).all(|(t, joint)| t.is_some() || !joint.actuated);
-        let (mut wrench, mut mean, mut vertices) = (Vec::new(), Vec::new(), Vec::new());
+        let (mut wrench, mut vertices) = (Vec::new(), Vec::new());
         for contact in &situation.question.contacts {
             let sole = situation.name(contact);
-            let part = |kind: &str| ["fx", "fy", "fz", "mx", "my", "mz"].map(|p| at(format!("{kind}:{sole}:{p}")));
-            wrench.push(part("wrench"));
-            mean.push(part("mean"));
+            let part = |p: &str| at(format!("wrench:{sole}:{p}"));
+            wrench.push(["fx", "fy", "fz", "mx", "my", "mz"].map(part));
             let listed = starting(&format!("vertex:{sole}:"));
             vertices.push(listed.chunks_exact(3).map(|c| [c[0], c[1], c[2]]).collect());
         }
         let forces = wrench.iter().all(|w| w[..3].iter().all(Option::is_some));
         let scale = hierarchy.columns.iter().map(|c| c.scale).collect();
         (acceleration.len() == model.velocities() && complete && forces)
-            .then_some(Columns { acceleration, torque, wrench, mean, vertices, scale })
+            .then_some(Columns { acceleration, torque, wrench, vertices, scale })
     }
 
     fn get(&self, x: &[f64], column: Option<usize>) -> f64 {
@@ -283,12 +281,9 @@ impl Probe<'_> {
         for (&j, &a) in self.columns.acceleration.iter().zip(&played.acceleration) {
             self.columns.set(&mut x, Some(j), a);
         }
-        let pairs = [(&self.columns.wrench, &played.ends), (&self.columns.mean, &played.means)];
-        for (columns, wrenches) in pairs {
-            for (columns, wrench) in columns.iter().zip(wrenches) {
-                let Some(wrench) = wrench.map(|w| w.to_vec6()) else { continue };
-                columns.iter().zip(wrench.iter()).for_each(|(&c, &w)| self.columns.set(&mut x, c, w));
-            }
+        for (columns, wrench) in self.columns.wrench.iter().zip(&played.ends) {
+            let Some(wrench) = wrench.map(|w| w.to_vec6()) else { continue };
+            columns.iter().zip(wrench.iter()).for_each(|(&c, &w)| self.columns.set(&mut x, c, w));
         }
         x
     }
@@ -304,7 +299,7 @@ impl Probe<'_> {
     fn independent(&self, rows: &[usize], worst: &mut Worst) {
         let contacts = self.situation.question.contacts.iter().enumerate();
         let soft = contacts.filter(|(_, c)| !matches!(c.ground.law, Law::Rigid { .. })).map(|(i, _)| i);
-        let wrenches: usize = soft.map(|i| 2 * self.columns.wrench[i].iter().flatten().count()).sum();
+        let wrenches: usize = soft.map(|i| self.columns.wrench[i].iter().flatten().count()).sum();
         let matrix = &self.hierarchy.hard.matrix;
         let mut block = DMatrix::zeros(rows.len(), self.columns.scale.len());
         for (k, &r) in rows.iter().enumerate() {

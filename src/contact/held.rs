@@ -26,12 +26,17 @@
 //! P a - P W (w_bar - w0) + (w_plus - w0)         = E Delta         (end rows)
 //! ```
 //! with `M nu_dot + h = S' tau + sum J' w_bar` over all coordinates. The mean rows of the friction coordinates are solved for their w_bar, which
-//! then stands nowhere else; E of damping alone is positive definite, `(1 - e^-y)/y` for a joint of its own. The w_bar of soles could be eliminated
-//! only where their E has an inverse: an undamped sole of frequency omega has E = sin(omega T)/(omega T), zero at omega T = pi, where no torque
-//! changes the average acceleration. So it is an unknown. On soft ground E = I and P, Q are small: the rows prescribe wrenches.
-//! On ever stiffer ground E goes to zero and Q to W^-1: they prescribe the acceleration, as rigid ground does. Without stiffness and
-//! damping P = Q = 0 and the wrench stays what it is. The rows of soles are multiplied by `(Z + Q)^-1` and `(Z + P)^-1`, which matters for wrenches
-//! that move nothing (W u = 0, two soles pushing against each other through one body): P and Q grow with the stiffness there.
+//! then stands nowhere else; E of damping alone is positive definite, `(1 - e^-y)/y` for a joint of its own. On soft ground E = I and P, Q are
+//! small: the rows prescribe wrenches. On ever stiffer ground E goes to zero and Q to W^-1: they prescribe the acceleration, as rigid ground
+//! does. Without stiffness and damping P = Q = 0 and the wrench stays what it is. The rows of soles are multiplied by `(Z + Q)^-1` and
+//! `(Z + P)^-1`, Z = m N^-2 (N below), which matters for wrenches that move nothing (W u = 0, two soles pushing against each other through one
+//! body): P and Q grow with the stiffness there.
+//!
+//! Neither kind of row alone can be solved for the soles' w_bar: an undamped sole of frequency omega has `E = sin(omega T)/(omega T)`, zero at
+//! omega T = pi, where no torque changes the average acceleration, and `P W = 1 - cos(omega T)`, small on soft ground. Both together can:
+//! the 2n rows are `B w_bar + (terms in a and w_plus) = right`, B has full rank, and with `B = Q1 R` the rows Q1' give w_bar and
+//! the rows Q2' (the complement) are n contact equalities in a and w_plus. Only where an undamped sole swings a whole number of times
+//! within the tick is B singular; that is refused.
 //!
 //! The step responses are phi functions of the matrix exponential, `phi_k(z) = int_0^1 e^(z (1-s)) s^(k-1)/(k-1)! ds`: a Taylor
 //! series at `z / 2^n` and the doubling rule `2^k phi_k(2z) = e^z phi_k(z) + sum_(j=1..k) phi_j(z)/(k-j)!`
@@ -45,6 +50,8 @@ use super::{ContactError, TickMap};
 const TAYLOR_TERMS: usize = 16;
 /// Norm up to which the series is used.
 const TAYLOR_NORM: f64 = 0.5;
+/// Pivots of B below this share of the largest count as zero.
+const SMALLEST_PIVOT: f64 = 1e-10;
 /// Most doublings: a bed that rings 1e12 times in a tick is refused.
 const MOST_DOUBLINGS: usize = 60;
 
@@ -69,40 +76,40 @@ pub struct Damper {
 /// The coupled equality. n is the sum of the soles' dimensions, f the number of dampers; accelerations a are those of all n + f
 /// coordinates (soles in the order given, linear before angular, then dampers), wrenches those of the n sole coordinates. Physical units:
 /// ```text
-/// mean_acceleration a + mean_mean w_bar                 = mean_right      (m/s^2, rad/s^2)
-/// end_acceleration a  + end_mean w_bar + end_end w_plus = end_right       (m/s^2, rad/s^2)
-/// change = damper_acceleration a + damper_mean w_bar + damper_right       (N, N m)
+/// contact_acceleration a + contact_wrench w_plus = contact_right                      (accelerations)
+/// w_bar  = mean_start + mean_acceleration a + mean_wrench w_plus                      (N, N m)
+/// change = damper_start + damper_acceleration a + damper_wrench w_plus                (N, N m)
 /// ```
-/// `change` is by how much the damper's average force differs from the one at the start of the tick.
+/// `change` is by how much the damper's average force differs from the one at the start of the tick. A row of the contact equality belongs
+/// to all soles together.
 #[derive(Debug, Clone, PartialEq)]
 pub struct CoupledMap {
     /// n x (n + f), on the average accelerations (of soles: classical, of their origins).
+    pub contact_acceleration: DMatrix<f64>,
+    /// n x n, on the wrenches at the tick's end.
+    pub contact_wrench: DMatrix<f64>,
+    /// n.
+    pub contact_right: DVector<f64>,
+    /// n.
+    pub mean_start: DVector<f64>,
+    /// n x (n + f).
     pub mean_acceleration: DMatrix<f64>,
-    /// n x n, on the average wrench.
-    pub mean_mean: DMatrix<f64>,
-    /// n.
-    pub mean_right: DVector<f64>,
-    /// n x (n + f), on the average accelerations.
-    pub end_acceleration: DMatrix<f64>,
-    /// n x n, on the average wrench.
-    pub end_mean: DMatrix<f64>,
-    /// n x n, on the wrench at the tick's end.
-    pub end_end: DMatrix<f64>,
-    /// n.
-    pub end_right: DVector<f64>,
-    /// f x (n + f), on the average accelerations.
-    pub damper_acceleration: DMatrix<f64>,
-    /// f x n, on the average wrench.
-    pub damper_mean: DMatrix<f64>,
+    /// n x n.
+    pub mean_wrench: DMatrix<f64>,
     /// f.
-    pub damper_right: DVector<f64>,
+    pub damper_start: DVector<f64>,
+    /// f x (n + f).
+    pub damper_acceleration: DMatrix<f64>,
+    /// f x n.
+    pub damper_wrench: DMatrix<f64>,
 }
 
 /// The coupled equality of `soles` (soft ones) and `dampers` whose accelerations answer their wrenches through `mobility` (W, symmetric;
 /// m/s^2 per N and so on), over a tick of length `tick` (s). `mass` (kg) is the mass that Z weighs wrenches against (the robot's).
 ///
 /// # Errors
-/// `NotPositive`; `Degenerate` where numbers overflow or a block of rows has no inverse.
+/// `NotPositive`; `Degenerate` where numbers overflow, a block of rows has no inverse, or an undamped sole swings a whole number of
+/// times within the tick.
 pub fn coupled_map(
     soles: &[HeldSole],
     dampers: &[Damper],
@@ -183,18 +190,42 @@ impl Terms {
         let (mean_mean, end_mean) = (&mean_scale * mean_mean, &end_scale * end_mean);
         let mean_right = &mean_mean * &now + &mean_scale * mean_start;
         let end_right = &end_mean * &now + &end_scale * (&now + end_start);
-        let damper_right = damper_start - &damper_mean * &now;
+
+        // Both kinds of rows, one under the other: on w_bar, and on (a, w_plus, 1).
+        let mut on_mean = DMatrix::zeros(2 * n, n);
+        on_mean.rows_mut(0, n).copy_from(&mean_mean);
+        on_mean.rows_mut(n, n).copy_from(&end_mean);
+        let mut others = DMatrix::zeros(2 * n, n + f + n + 1);
+        others.view_mut((0, 0), (n, n + f)).copy_from(&(&mean_scale * mean_acceleration));
+        others.view_mut((n, 0), (n, n + f)).copy_from(&(&end_scale * end_acceleration));
+        others.view_mut((n, n + f), (n, n)).copy_from(&end_scale);
+        others.view_mut((0, 2 * n + f), (n, 1)).copy_from(&mean_right);
+        others.view_mut((n, 2 * n + f), (n, 1)).copy_from(&end_right);
+        let mut mean = DMatrix::zeros(0, 2 * n + f + 1);
+        if n > 0 {
+            let factors = on_mean.qr();
+            let triangle = factors.r();
+            let pivots = triangle.diagonal().abs();
+            // Written so that a pivot that is no number fails too.
+            if !(pivots.min() > SMALLEST_PIVOT * pivots.max()) {
+                return None;
+            }
+            factors.q_tr_mul(&mut others);
+            mean = triangle.solve_upper_triangular(&others.rows(0, n))?;
+        }
+        let contact = block(&others, (n.min(others.nrows()), n), (0, 2 * n + f + 1));
+        let (mean_acceleration, mean_wrench) = (-mean.columns(0, n + f), -mean.columns(n + f, n));
+        let mean_start = mean.column(2 * n + f).into_owned();
         Some(CoupledMap {
-            mean_acceleration: units.on_acceleration(&mean_scale * mean_acceleration),
-            mean_mean: units.on_wrench(mean_mean),
-            mean_right: units.side(mean_right),
-            end_acceleration: units.on_acceleration(&end_scale * end_acceleration),
-            end_mean: units.on_wrench(end_mean),
-            end_end: units.on_wrench(end_scale),
-            end_right: units.side(end_right),
-            damper_acceleration: units.force_on_acceleration(damper_acceleration),
-            damper_mean: units.force_on_wrench(damper_mean),
-            damper_right: units.force(damper_right),
+            contact_acceleration: units.on_acceleration(contact.columns(0, n + f).into_owned()),
+            contact_wrench: units.on_wrench(contact.columns(n + f, n).into_owned()),
+            contact_right: units.side(contact.column(2 * n + f).into_owned()),
+            damper_acceleration: units.force_on_acceleration(n, damper_acceleration + &damper_mean * &mean_acceleration),
+            damper_wrench: units.force_on_wrench(n, &damper_mean * &mean_wrench),
+            damper_start: units.force(n, damper_start + &damper_mean * (&mean_start - &now)),
+            mean_acceleration: units.force_on_acceleration(0, mean_acceleration),
+            mean_wrench: units.force_on_wrench(0, mean_wrench),
+            mean_start: units.force(0, mean_start),
         })
     }
 }
@@ -206,15 +237,14 @@ fn inverse(matrix: DMatrix<f64>) -> Option<DMatrix<f64>> {
 impl CoupledMap {
     fn is_finite(&self) -> bool {
         let matrices = [
+            &self.contact_acceleration,
+            &self.contact_wrench,
             &self.mean_acceleration,
-            &self.mean_mean,
-            &self.end_acceleration,
-            &self.end_mean,
-            &self.end_end,
+            &self.mean_wrench,
             &self.damper_acceleration,
-            &self.damper_mean,
+            &self.damper_wrench,
         ];
-        let sides = [&self.mean_right, &self.end_right, &self.damper_right];
+        let sides = [&self.contact_right, &self.mean_start, &self.damper_start];
         matrices.iter().all(|m| m.iter().all(|v| v.is_finite())) && sides.iter().all(|v| v.iter().all(|x| x.is_finite()))
     }
 }
@@ -292,20 +322,20 @@ impl Units {
         DVector::from_fn(right.len(), |i, _| right[i] / self.lengths[i])
     }
 
-    /// Scaled damper forces from `N a`, as forces from a.
-    fn force_on_acceleration(&self, rows: DMatrix<f64>) -> DMatrix<f64> {
+    /// Scaled forces on coordinates from `first` on, from `N a`, as forces from a.
+    fn force_on_acceleration(&self, first: usize, rows: DMatrix<f64>) -> DMatrix<f64> {
         let l = &self.lengths;
-        DMatrix::from_fn(rows.nrows(), rows.ncols(), |i, j| rows[(i, j)] * self.mass * l[self.soles + i] * l[j])
+        DMatrix::from_fn(rows.nrows(), rows.ncols(), |i, j| rows[(i, j)] * self.mass * l[first + i] * l[j])
     }
 
-    /// Scaled damper forces from `N^-1 w / m`, as forces from w.
-    fn force_on_wrench(&self, rows: DMatrix<f64>) -> DMatrix<f64> {
+    /// The same from `N^-1 w / m`, as forces from w.
+    fn force_on_wrench(&self, first: usize, rows: DMatrix<f64>) -> DMatrix<f64> {
         let l = &self.lengths;
-        DMatrix::from_fn(rows.nrows(), rows.ncols(), |i, j| rows[(i, j)] * l[self.soles + i] / l[j])
+        DMatrix::from_fn(rows.nrows(), rows.ncols(), |i, j| rows[(i, j)] * l[first + i] / l[j])
     }
 
-    fn force(&self, right: DVector<f64>) -> DVector<f64> {
-        DVector::from_fn(right.len(), |i, _| right[i] * self.mass * self.lengths[self.soles + i])
+    fn force(&self, first: usize, right: DVector<f64>) -> DVector<f64> {
+        DVector::from_fn(right.len(), |i, _| right[i] * self.mass * self.lengths[first + i])
     }
 }
 

@@ -19,37 +19,34 @@ const STATED_TWICE: f64 = 1e-11;
 /// Sweeps of the singular value decomposition.
 const MOST_SWEEPS: usize = 10_000;
 
-/// The coupled equality over nu_dot (nv) and the wrenches of the soft soles (n, stacked in contact order):
+/// The coupled equality over nu_dot (nv) and the tick-end wrenches of the soft soles (n, stacked in contact order):
 /// ```text
-/// mean_acceleration nu_dot + mean_mean w_bar                 = mean_right
-/// end_acceleration nu_dot  + end_mean w_bar + end_end w_plus = end_right
-/// change of friction = friction_acceleration nu_dot + friction_mean w_bar + friction_right   (on damped joints, N m or N)
-/// M nu_dot + h + friction - S' tau - sum J' w_bar - change of friction = external
+/// contact_acceleration nu_dot + contact_wrench w_plus = contact_right
+/// w_bar = mean_start + mean_acceleration nu_dot + mean_wrench w_plus                (stacked like w_plus)
+/// force = force_start + force_acceleration nu_dot + force_wrench w_plus             (nv)
+/// M nu_dot + h + friction - S' tau - force - sum over rigid soles J' w = external
 /// ```
+/// `force` holds `J' w_bar` of the soft soles and what the tick changes of the joints' average friction.
 #[derive(Debug, Clone, PartialEq)]
 pub struct CoupledRows {
     /// n x nv.
+    pub contact_acceleration: DMatrix<f64>,
+    /// n x n.
+    pub contact_wrench: DMatrix<f64>,
+    /// n.
+    pub contact_right: DVector<f64>,
+    /// n.
+    pub mean_start: DVector<f64>,
+    /// n x nv.
     pub mean_acceleration: DMatrix<f64>,
     /// n x n.
-    pub mean_mean: DMatrix<f64>,
-    /// n.
-    pub mean_right: DVector<f64>,
-    /// n x nv.
-    pub end_acceleration: DMatrix<f64>,
-    /// n x n.
-    pub end_mean: DMatrix<f64>,
-    /// n x n.
-    pub end_end: DMatrix<f64>,
-    /// n.
-    pub end_right: DVector<f64>,
-    /// Rows of the generalised velocity that are damped.
-    pub damped: Vec<usize>,
-    /// One row per damped joint, x nv.
-    pub friction_acceleration: DMatrix<f64>,
-    /// One row per damped joint, x n.
-    pub friction_mean: DMatrix<f64>,
-    /// One entry per damped joint.
-    pub friction_right: DVector<f64>,
+    pub mean_wrench: DMatrix<f64>,
+    /// nv.
+    pub force_start: DVector<f64>,
+    /// nv x nv.
+    pub force_acceleration: DMatrix<f64>,
+    /// nv x n.
+    pub force_wrench: DMatrix<f64>,
 }
 
 impl CoupledRows {
@@ -77,24 +74,32 @@ impl CoupledRows {
         let (jacobian, bias) = coordinates(soles, &damped, model.velocities());
         let mobility = mobility(&ws.mass_matrix, soles, &jacobian).ok_or(SceneError::NoMobility)?;
         let map = coupled_map(&held, &dampers, &mobility, question.tick.length, ws.mass).map_err(SceneError::Coupled)?;
-        Ok(Some(CoupledRows::over(map, &jacobian, &bias, damped)))
+        Ok(Some(CoupledRows::over(&map, &jacobian, &bias)))
     }
 
     /// From rows on the coordinates' accelerations to rows on nu_dot: `a = J nu_dot + J_dot nu`.
-    fn over(map: CoupledMap, jacobian: &DMatrix<f64>, bias: &DVector<f64>, damped: Vec<usize>) -> CoupledRows {
+    fn over(map: &CoupledMap, jacobian: &DMatrix<f64>, bias: &DVector<f64>) -> CoupledRows {
+        let n = map.mean_start.len();
+        let mean_acceleration = &map.mean_acceleration * jacobian;
+        let mean_start = &map.mean_start + &map.mean_acceleration * bias;
+        // The unit rows of damped joints carry their forces to their own row.
+        let (sole, damper) = (jacobian.rows(0, n).transpose(), jacobian.rows(n, jacobian.nrows() - n).transpose());
         CoupledRows {
-            mean_acceleration: &map.mean_acceleration * jacobian,
-            mean_mean: map.mean_mean,
-            mean_right: map.mean_right - &map.mean_acceleration * bias,
-            end_acceleration: &map.end_acceleration * jacobian,
-            end_mean: map.end_mean,
-            end_end: map.end_end,
-            end_right: map.end_right - &map.end_acceleration * bias,
-            damped,
-            friction_acceleration: &map.damper_acceleration * jacobian,
-            friction_mean: map.damper_mean,
-            friction_right: map.damper_right + &map.damper_acceleration * bias,
+            contact_acceleration: &map.contact_acceleration * jacobian,
+            contact_wrench: map.contact_wrench.clone(),
+            contact_right: &map.contact_right - &map.contact_acceleration * bias,
+            force_acceleration: &sole * &mean_acceleration + &damper * (&map.damper_acceleration * jacobian),
+            force_wrench: &sole * &map.mean_wrench + &damper * &map.damper_wrench,
+            force_start: &sole * &mean_start + &damper * (&map.damper_start + &map.damper_acceleration * bias),
+            mean_acceleration,
+            mean_wrench: map.mean_wrench.clone(),
+            mean_start,
         }
+    }
+
+    /// Average wrenches of the soft soles, stacked.
+    pub fn mean(&self, acceleration: &DVector<f64>, ends: &DVector<f64>) -> DVector<f64> {
+        &self.mean_start + &self.mean_acceleration * acceleration + &self.mean_wrench * ends
     }
 }
 

@@ -1,8 +1,7 @@
 //! Where each unknown sits, and how it is scaled.
 //!
 //! Order: accelerations (nv), torques of actuated joints, wrench of each contact at the tick's end
-//! (6, or 3 under a point), vertex forces where a friction set needs them, and under the rule `held` the average wrench of each
-//! soft contact.
+//! (6, or 3 under a point), vertex forces where a friction set needs them.
 //!
 //! Scaling follows the mass matrix: with `c = g sqrt(m)`, coordinate i is measured in `c / sqrt(M_ii)`
 //! and its row of the dynamics in `c sqrt(M_ii)`, so that the scaled mass matrix has ones on its
@@ -18,8 +17,7 @@ use crate::spatial::polygon::SoleShape;
 
 /// Standard acceleration used for scaling only (m/s^2), whatever gravity the request has.
 const SCALE_ACCELERATION: f64 = 9.80665;
-/// Names of the parts of a wrench among the columns.
-pub const FORCE_PARTS: [&str; 6] = ["fx", "fy", "fz", "mx", "my", "mz"];
+const FORCE_PARTS: [&str; 6] = ["fx", "fy", "fz", "mx", "my", "mz"];
 const AXES: [&str; 3] = ["x", "y", "z"];
 
 /// Columns of one contact.
@@ -29,8 +27,6 @@ pub struct ContactColumns {
     pub wrench: usize,
     /// 6, or 3 under a point.
     pub dimension: usize,
-    /// First column of the average wrench over the tick, as many as `dimension`: under the rule `held`, on soft ground.
-    pub mean: Option<usize>,
     /// First vertex-force column, where the friction set has vertices.
     pub vertices: Option<usize>,
     /// Number of vertices (of forces), zero without.
@@ -88,11 +84,7 @@ impl Layout {
         let contacts = question
             .contacts
             .iter()
-            .zip(&scene.soles)
-            .map(|(contact, sole)| {
-                let with_mean = scene.coupled.is_some() && !sole.map.rigid;
-                contact_columns(question, contact, weight, with_mean, &mut columns)
-            })
+            .map(|contact| contact_columns(question, contact, weight, &mut columns))
             .collect();
         Layout { velocities, torque, contacts, columns, dynamics_scale, weight }
     }
@@ -116,7 +108,6 @@ fn contact_columns(
     question: &Question,
     contact: &super::question::Contact,
     weight: f64,
-    with_mean: bool,
     columns: &mut Vec<Column>,
 ) -> ContactColumns {
     let sole = &question.model.soles[contact.sole];
@@ -127,7 +118,11 @@ fn contact_columns(
             (6, ((m.second[0] + m.second[1]) / m.area).sqrt(), polygon.vertices().len())
         }
     };
-    let wrench = push_wrench("wrench", &sole.name, dimension, weight, radius, columns);
+    let wrench = columns.len();
+    for (k, part) in FORCE_PARTS.iter().enumerate().take(dimension) {
+        let (unit, scale) = if k < 3 { ("N", weight) } else { ("N m", weight * radius) };
+        columns.push(Column { name: format!("wrench:{}:{part}", sole.name), unit, scale });
+    }
     let with_vertices = corners > 0 && contact.friction.is_some_and(|f| f.set == FrictionSet::Vertex);
     let vertices = with_vertices.then_some(columns.len());
     let vertex_count = if with_vertices { corners } else { 0 };
@@ -140,17 +135,7 @@ fn contact_columns(
             });
         }
     }
-    let mean = with_mean.then(|| push_wrench("mean", &sole.name, dimension, weight, radius, columns));
-    ContactColumns { wrench, dimension, mean, vertices, vertex_count, radius }
-}
-
-fn push_wrench(kind: &str, sole: &str, dimension: usize, weight: f64, radius: f64, columns: &mut Vec<Column>) -> usize {
-    let first = columns.len();
-    for (k, part) in FORCE_PARTS.iter().enumerate().take(dimension) {
-        let (unit, scale) = if k < 3 { ("N", weight) } else { ("N m", weight * radius) };
-        columns.push(Column { name: format!("{kind}:{sole}:{part}"), unit, scale });
-    }
-    first
+    ContactColumns { wrench, dimension, vertices, vertex_count, radius }
 }
 
 /// Names of the generalised velocities: `base:vx` ... `base:wz` on a floating base, then joints.

@@ -2,10 +2,8 @@
 //!
 //! - `M nu_dot - S' tau - sum J' w_bar = external - h - friction`, `w_bar = (1 - theta) now + theta w_plus`;
 //! - `acceleration_part (J nu_dot + J_dot nu) + wrench_part w_plus = right_side` for each sole;
-//! - under the rule `held`, w_bar of a soft sole is an unknown, and the soles' equality is coupled (`contact::held`);
+//! - under the rule `held` all soft soles have one equality, and their w_bar follows from nu_dot and w_plus (`contact::held`);
 //! - `w_plus = sum X_i f_i` where a friction set speaks of vertex forces.
-
-use nalgebra::DMatrix;
 
 use super::coupled::CoupledRows;
 use super::layout::{Layout, force_unit, velocity_names};
@@ -20,11 +18,13 @@ const PARTS: [&str; 6] = ["x", "y", "z", "rx", "ry", "rz"];
 /// Adds every physics row.
 pub fn push(question: &Question, scene: &Scene, layout: &Layout, scaler: &Scaler, out: &mut ConicRows) {
     push_dynamics(question, scene, layout, scaler, out);
-    for (sole, columns) in scene.soles.iter().zip(&layout.contacts).filter(|(_, columns)| columns.mean.is_none()) {
+    let starts = scene.coupled_starts();
+    let contacts = scene.soles.iter().zip(&layout.contacts).zip(&starts);
+    for ((sole, columns), _) in contacts.filter(|(_, start)| start.is_none()) {
         push_contact(sole, columns, layout, scaler, out);
     }
-    if let Some(map) = &scene.coupled {
-        push_coupled(map, scene, layout, scaler, out);
+    if let Some(rows) = &scene.coupled {
+        push_coupled(rows, scene, layout, scaler, out);
     }
     for (index, contact) in question.contacts.iter().enumerate() {
         push_vertex_sum(question, contact.sole, &scene.soles[index], &layout.contacts[index], layout, scaler, out);
@@ -35,23 +35,27 @@ fn push_dynamics(question: &Question, scene: &Scene, layout: &Layout, scaler: &S
     let model = &*question.model;
     let ws = &scene.dynamics;
     let offset = model.joint_offset();
+    let (starts, ends) = (scene.coupled_starts(), soft_columns(scene, layout));
     for (i, name) in velocity_names(model).into_iter().enumerate() {
         let mut entries: Entries = (0..layout.velocities).map(|j| (j, ws.mass_matrix[(i, j)])).collect();
         if let Some(column) = i.checked_sub(offset).and_then(|j| layout.torque[j]) {
             entries.push((column, -1.0));
         }
         let mut rhs = scene.external[i] - ws.bias[i] - ws.friction[i];
-        for (sole, columns) in scene.soles.iter().zip(&layout.contacts) {
-            let (acting, theta) = columns.mean.map_or((columns.wrench, sole.map.theta), |mean| (mean, 1.0));
+        let contacts = scene.soles.iter().zip(&layout.contacts).zip(&starts);
+        for ((sole, columns), _) in contacts.filter(|(_, start)| start.is_none()) {
+            let theta = sole.map.theta;
             let now = sole.map.now.to_vec6();
             for k in 0..columns.dimension {
                 let lever = sole.jacobian[(k, i)];
-                entries.push((acting + k, -theta * lever));
+                entries.push((columns.wrench + k, -theta * lever));
                 rhs += (1.0 - theta) * lever * now[k];
             }
         }
         if let Some(rows) = &scene.coupled {
-            push_friction(i, rows, layout, &mut entries, &mut rhs);
+            entries.extend((0..layout.velocities).map(|j| (j, -rows.force_acceleration[(i, j)])));
+            entries.extend(ends.iter().enumerate().map(|(l, &column)| (column, -rows.force_wrench[(i, l)])));
+            rhs += rows.force_start[i];
         }
         let row = PhysicalRow { entries, rhs, part: name, unit: force_unit(model, i) };
         scaler.push_cone(out, Cone::Zero(1), "dynamics", true, layout.dynamics_scale[i], &[row]);
@@ -84,43 +88,24 @@ fn push_contact(
     }
 }
 
-/// Mean and end rows of every soft sole under the rule `held`, see `contact::held`.
+/// The equality of all soft soles under the rule `held`. Every row belongs to all of them; the names go by place.
 fn push_coupled(rows: &CoupledRows, scene: &Scene, layout: &Layout, scaler: &Scaler, out: &mut ConicRows) {
-    let coordinates = soft_coordinates(layout);
-    for (i, &(contact, _, _, k)) in coordinates.iter().enumerate() {
-        let group = format!("contact:{}", scene.soles[contact].name);
-        let radius = layout.contacts[contact].radius;
+    let ends = soft_columns(scene, layout);
+    let soft = scene.soles.iter().zip(&layout.contacts).filter(|(sole, _)| !sole.map.rigid);
+    let places = soft.flat_map(|(sole, columns)| (0..columns.dimension).map(move |k| (&sole.name, columns.radius, k)));
+    for (i, (name, radius, k)) in places.enumerate() {
         let (unit, scale) = if k < 3 { ("m/s^2", 9.80665) } else { ("rad/s^2", 9.80665 / radius) };
-        let mut push = |part: String, entries: Entries, rhs: f64| {
-            let row = PhysicalRow { entries, rhs, part, unit };
-            scaler.push_cone(out, Cone::Zero(1), &group, true, scale, &[row]);
-        };
-        let on_acceleration = |m: &DMatrix<f64>| (0..layout.velocities).map(|j| (j, m[(i, j)])).collect::<Entries>();
-        let mut entries = on_acceleration(&rows.mean_acceleration);
-        entries.extend(coordinates.iter().enumerate().map(|(l, c)| (c.1, rows.mean_mean[(i, l)])));
-        push(format!("mean {}", PARTS[k]), entries, rows.mean_right[i]);
-        let mut entries = on_acceleration(&rows.end_acceleration);
-        entries.extend(coordinates.iter().enumerate().map(|(l, c)| (c.1, rows.end_mean[(i, l)])));
-        entries.extend(coordinates.iter().enumerate().map(|(l, c)| (c.2, rows.end_end[(i, l)])));
-        push(format!("end {}", PARTS[k]), entries, rows.end_right[i]);
+        let mut entries: Entries = (0..layout.velocities).map(|j| (j, rows.contact_acceleration[(i, j)])).collect();
+        entries.extend(ends.iter().enumerate().map(|(l, &column)| (column, rows.contact_wrench[(i, l)])));
+        let row = PhysicalRow { entries, rhs: rows.contact_right[i], part: PARTS[k].into(), unit };
+        scaler.push_cone(out, Cone::Zero(1), &format!("contact:{name}"), true, scale, &[row]);
     }
 }
 
-/// For each coordinate of the coupled rows: its contact, its average-wrench column, its end-wrench column, its part.
-fn soft_coordinates(layout: &Layout) -> Vec<(usize, usize, usize, usize)> {
-    let contacts = layout.contacts.iter().enumerate();
-    contacts
-        .filter_map(|(i, columns)| columns.mean.map(|mean| (i, mean, columns)))
-        .flat_map(|(i, mean, columns)| (0..columns.dimension).map(move |k| (i, mean + k, columns.wrench + k, k)))
-        .collect()
-}
-
-/// What the change of friction over the tick adds to row i of the dynamics, and to its right side.
-fn push_friction(i: usize, rows: &CoupledRows, layout: &Layout, entries: &mut Entries, rhs: &mut f64) {
-    let Some(f) = rows.damped.iter().position(|&row| row == i) else { return };
-    entries.extend((0..layout.velocities).map(|j| (j, -rows.friction_acceleration[(f, j)])));
-    entries.extend(soft_coordinates(layout).iter().enumerate().map(|(l, c)| (c.1, -rows.friction_mean[(f, l)])));
-    *rhs += rows.friction_right[f];
+/// Wrench columns of all soft soles, one after the other.
+fn soft_columns(scene: &Scene, layout: &Layout) -> Vec<usize> {
+    let soft = scene.soles.iter().zip(&layout.contacts).filter(|(sole, _)| !sole.map.rigid);
+    soft.flat_map(|(_, columns)| columns.wrench..columns.wrench + columns.dimension).collect()
 }
 
 fn push_vertex_sum(

@@ -1,6 +1,6 @@
 //! The question's state worked out: dynamics, soles, and the map from acceleration to wrench.
 
-use nalgebra::DMatrix;
+use nalgebra::{DMatrix, DVector};
 
 use super::coupled::CoupledRows;
 use super::question::Question;
@@ -124,6 +124,30 @@ impl Scene {
                 let own = (self.coupled.is_some() && !sole.map.rigid).then_some(next);
                 next += own.map_or(0, |_| sole.map.dimension);
                 own
+            })
+            .collect()
+    }
+
+    /// Wrench that acts during the tick on average, per contact, for given accelerations (nv) and tick-end wrenches.
+    pub fn over_tick(&self, acceleration: &DVector<f64>, ends: &[Wrench]) -> Vec<Wrench> {
+        let starts = self.coupled_starts();
+        let means = self.coupled.as_ref().map(|rows| {
+            let mut stacked = DVector::zeros(rows.mean_start.len());
+            for ((sole, start), end) in self.soles.iter().zip(&starts).zip(ends) {
+                if let Some(start) = start {
+                    let end = end.to_vec6();
+                    (0..sole.map.dimension).for_each(|k| stacked[start + k] = end[k]);
+                }
+            }
+            rows.mean(acceleration, &stacked)
+        });
+        let soles = self.soles.iter().zip(starts).zip(ends);
+        soles
+            .map(|((sole, start), end)| match (start, &means) {
+                (Some(start), Some(means)) => Wrench::from_vec6(&Vec6::from_fn(|k, _| {
+                    if k < sole.map.dimension { means[start + k] } else { 0.0 }
+                })),
+                _ => sole.map.now.mixed(end, sole.map.theta),
             })
             .collect()
     }

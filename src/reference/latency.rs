@@ -12,7 +12,7 @@ use crate::contact::{Law, Patch, Rest, TickRule, rest, tick};
 use crate::dynamics;
 use crate::problem::coupled::CoupledRows;
 use crate::problem::question::{Latency, Question};
-use crate::problem::scene::Scene;
+use crate::problem::scene::{Scene, SoleScene};
 use crate::spatial::{Vec6, Wrench};
 
 /// Longest substep (s).
@@ -89,12 +89,7 @@ pub fn response(question: &Question, scene: &Scene, torques: &[f64]) -> Result<R
     let ws = &scene.dynamics;
     let nv = model.velocities();
     let starts = scene.coupled_starts();
-    let (end_size, mean_size) = (
-        scene.soles.iter().map(|s| s.map.dimension).sum::<usize>(),
-        scene.coupled.as_ref().map_or(0, |map| map.mean_right.len()),
-    );
-    // Columns: accelerations, end wrenches, average wrenches under `held`; rows: balance, end rows, mean rows.
-    let dimension = nv + end_size + mean_size;
+    let dimension = nv + scene.soles.iter().map(|s| s.map.dimension).sum::<usize>();
     let mut matrix = DMatrix::zeros(dimension, dimension);
     let mut right = DVector::zeros(dimension);
     matrix.view_mut((0, 0), (nv, nv)).copy_from(&ws.mass_matrix);
@@ -107,82 +102,71 @@ pub fn response(question: &Question, scene: &Scene, torques: &[f64]) -> Result<R
     // Wrenches count in body weights, so that forces and accelerations are of one size.
     let unit = ws.mass * 10.0;
     let mut at = nv;
-    let mut ends: Vec<usize> = Vec::with_capacity(mean_size);
-    for (sole, start) in scene.soles.iter().zip(&starts) {
-        let (d, map) = (sole.map.dimension, &sole.map);
-        let (acting, theta) = start.map_or((at, map.theta), |start| (nv + end_size + start, 1.0));
-        let now = map.now.to_vec6();
-        for k in 0..d {
-            for j in 0..nv {
-                let lever = sole.jacobian[(k, j)];
-                matrix[(j, acting + k)] -= theta * lever * unit;
-                right[j] += (1.0 - theta) * lever * now[k];
-            }
-        }
-        if start.is_some() {
-            ends.extend(at..at + d);
-            at += d;
-            continue;
-        }
-        for k in 0..d {
-            for j in 0..nv {
-                matrix[(at + k, j)] = (0..d).map(|l| map.acceleration_part[(k, l)] * sole.jacobian[(l, j)]).sum();
-            }
-            for l in 0..d {
-                matrix[(at + k, at + l)] = map.wrench_part[(k, l)] * unit;
-            }
-            let drift: f64 = (0..d).map(|l| map.acceleration_part[(k, l)] * sole.bias_acceleration[l]).sum();
-            right[at + k] = map.right_side[k] - drift;
-        }
-        at += d;
-    }
-    if let Some(map) = &scene.coupled {
-        coupled_rows(map, &ends, (nv, nv + end_size, unit), &mut matrix, &mut right);
-    }
-    let solution = matrix.lu().solve(&right).filter(|x| x.iter().all(|v| v.is_finite())).ok_or(Trouble::Latency)?;
-    let (mut wrenches, mut over_tick) = (Vec::with_capacity(scene.soles.len()), Vec::with_capacity(scene.soles.len()));
-    let mut at = nv;
+    let mut ends: Vec<usize> = Vec::new();
     for (sole, start) in scene.soles.iter().zip(&starts) {
         let d = sole.map.dimension;
-        let read = |first: usize| Wrench::from_vec6(&Vec6::from_fn(|k, _| if k < d { solution[first + k] * unit } else { 0.0 }));
-        let (end, now, theta) = (read(at), sole.map.now, sole.map.theta);
-        wrenches.push(end);
-        over_tick.push(start.map_or_else(|| now.mixed(&end, theta), |start| read(nv + end_size + start)));
+        match start {
+            Some(_) => ends.extend(at..at + d),
+            None => own_rows(sole, at, (nv, unit), &mut matrix, &mut right),
+        }
         at += d;
     }
-    Ok(Response { acceleration: solution.rows(0, nv).into_owned(), wrenches, over_tick })
+    if let Some(rows) = &scene.coupled {
+        coupled_rows(rows, &ends, (nv, unit), &mut matrix, &mut right);
+    }
+    let solution = matrix.lu().solve(&right).filter(|x| x.iter().all(|v| v.is_finite())).ok_or(Trouble::Latency)?;
+    let mut wrenches = Vec::with_capacity(scene.soles.len());
+    let mut at = nv;
+    for sole in &scene.soles {
+        let mut w = Vec6::zeros();
+        for k in 0..sole.map.dimension {
+            w[k] = solution[at + k] * unit;
+        }
+        at += sole.map.dimension;
+        wrenches.push(Wrench::from_vec6(&w));
+    }
+    let acceleration = solution.rows(0, nv).into_owned();
+    let over_tick = scene.over_tick(&acceleration, &wrenches);
+    Ok(Response { acceleration, wrenches, over_tick })
 }
 
-/// Rows of the rule `held`. `ends`: the end-wrench column (and row) of each soft coordinate; `places`: number of accelerations, first
-/// average-wrench column (and row), unit of wrenches.
-fn coupled_rows(
-    rows: &CoupledRows,
-    ends: &[usize],
-    places: (usize, usize, f64),
-    matrix: &mut DMatrix<f64>,
-    right: &mut DVector<f64>,
-) {
-    let (nv, mean, unit) = places;
-    for (i, &end_row) in ends.iter().enumerate() {
+/// Force and equality of a sole by itself, its wrench in columns (and rows) from `at` on, counted in `unit`.
+fn own_rows(sole: &SoleScene, at: usize, (nv, unit): (usize, f64), matrix: &mut DMatrix<f64>, right: &mut DVector<f64>) {
+    let (d, map) = (sole.map.dimension, &sole.map);
+    let now = map.now.to_vec6();
+    for k in 0..d {
         for j in 0..nv {
-            matrix[(mean + i, j)] = rows.mean_acceleration[(i, j)];
-            matrix[(end_row, j)] = rows.end_acceleration[(i, j)];
+            let lever = sole.jacobian[(k, j)];
+            matrix[(j, at + k)] -= map.theta * lever * unit;
+            right[j] += (1.0 - map.theta) * lever * now[k];
+            matrix[(at + k, j)] = (0..d).map(|l| map.acceleration_part[(k, l)] * sole.jacobian[(l, j)]).sum();
+        }
+        for l in 0..d {
+            matrix[(at + k, at + l)] = map.wrench_part[(k, l)] * unit;
+        }
+        let drift: f64 = (0..d).map(|l| map.acceleration_part[(k, l)] * sole.bias_acceleration[l]).sum();
+        right[at + k] = map.right_side[k] - drift;
+    }
+}
+
+/// Force and equality of all soft soles under the rule `held`; `ends` are their wrench columns (and rows).
+fn coupled_rows(rows: &CoupledRows, ends: &[usize], (nv, unit): (usize, f64), matrix: &mut DMatrix<f64>, right: &mut DVector<f64>) {
+    for i in 0..nv {
+        for j in 0..nv {
+            matrix[(i, j)] -= rows.force_acceleration[(i, j)];
         }
         for (l, &end) in ends.iter().enumerate() {
-            matrix[(mean + i, mean + l)] = rows.mean_mean[(i, l)] * unit;
-            matrix[(end_row, mean + l)] = rows.end_mean[(i, l)] * unit;
-            matrix[(end_row, end)] = rows.end_end[(i, l)] * unit;
+            matrix[(i, end)] -= rows.force_wrench[(i, l)] * unit;
         }
-        right[mean + i] = rows.mean_right[i];
-        right[end_row] = rows.end_right[i];
+        right[i] += rows.force_start[i];
     }
-    for (f, &row) in rows.damped.iter().enumerate() {
+    for (i, &row) in ends.iter().enumerate() {
         for j in 0..nv {
-            matrix[(row, j)] -= rows.friction_acceleration[(f, j)];
+            matrix[(row, j)] = rows.contact_acceleration[(i, j)];
         }
-        for l in 0..ends.len() {
-            matrix[(row, mean + l)] -= rows.friction_mean[(f, l)] * unit;
+        for (l, &end) in ends.iter().enumerate() {
+            matrix[(row, end)] = rows.contact_wrench[(i, l)] * unit;
         }
-        right[row] += rows.friction_right[f];
+        right[row] = rows.contact_right[i];
     }
 }

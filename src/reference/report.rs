@@ -27,6 +27,8 @@ pub(super) struct Found {
     pub wrenches: Vec<Wrench>,
     /// Vertex forces, per contact.
     pub vertex_forces: Vec<Vec<Vec3>>,
+    /// Average wrench over the tick, per contact.
+    pub over_tick: Vec<Wrench>,
     linearisation: Vec<Option<[f64; 2]>>,
 }
 
@@ -35,7 +37,7 @@ impl Found {
         let layout = &work.assembly.layout;
         let x = layout.physical(&work.solution.x);
         let torques = layout.torque.iter().map(|column| column.map_or(0.0, |c| x[c])).collect();
-        let wrenches = layout
+        let wrenches: Vec<Wrench> = layout
             .contacts
             .iter()
             .map(|c| Wrench::from_vec6(&Vec6::from_fn(|k, _| if k < c.dimension { x[c.wrench + k] } else { 0.0 })))
@@ -48,7 +50,9 @@ impl Found {
                 (0..c.vertex_count).map(|i| Vec3::from_fn(|k, _| x[start + 3 * i + k])).collect()
             })
             .collect();
-        let mut found = Found { x, torques, wrenches, vertex_forces, linearisation: Vec::new() };
+        let acceleration = nalgebra::DVector::from_column_slice(&x[..layout.velocities]);
+        let over_tick = work.scene.over_tick(&acceleration, &wrenches);
+        let mut found = Found { x, torques, wrenches, vertex_forces, over_tick, linearisation: Vec::new() };
         found.linearisation = found.with_claim(work, |claim| certify::linearisation_error(&work.question, claim));
         found
     }
@@ -116,11 +120,7 @@ fn sole(work: &Work, found: Option<&Found>, index: usize) -> SoleAnswer {
         crate::spatial::polygon::SoleShape::Point => None,
     };
     let center = in_sole.as_ref().filter(|_| polygon.is_some()).and_then(center_of_pressure);
-    let columns = &work.assembly.layout.contacts[index];
-    let over_tick = found.zip(wrench).map(|(f, w)| match columns.mean {
-        None => scene.map.now.mixed(&w, scene.map.theta),
-        Some(first) => Wrench::from_vec6(&Vec6::from_fn(|k, _| if k < columns.dimension { f.x[first + k] } else { 0.0 })),
-    });
+    let over_tick = found.map(|f| f.over_tick[index]);
     let acceleration = found.map(|f| {
         let nu_dot = nalgebra::DVector::from_column_slice(&f.x[..work.assembly.layout.velocities]);
         let a: Vec6 = (&scene.jacobian * nu_dot + scene.bias_acceleration).fixed_rows::<6>(0).into_owned();
