@@ -60,6 +60,8 @@ pub(super) struct Program {
     pub soft: Vec<usize>,
     /// Rows of the relaxed must-hold tasks.
     pub residuals: Vec<usize>,
+    /// What each row of the original hierarchy was multiplied by.
+    pub factor: Vec<f64>,
 }
 
 /// The hard rows of a hierarchy by blame.
@@ -113,10 +115,21 @@ impl<'a> Blame<'a> {
         self.blocks.iter().filter(|b| self.role(b, roles) == Role::Relax)
     }
 
-    /// Weight of the scaled excess of a row, so that the cost is `(excess / size)^2` however the row is divided.
-    pub fn weight(&self, row: usize) -> f64 {
-        let ratio = self.hierarchy.hard.names[row].scale / self.sizes[row];
-        ratio * ratio
+    /// What a scaled excess of one in this row is worth relative to its natural size.
+    pub fn ratio(&self, row: usize) -> f64 {
+        self.hierarchy.hard.names[row].scale / self.sizes[row]
+    }
+
+    /// Factor of a block in the programs made here, so that they are the same however the rows were divided: named rows
+    /// are measured in their natural size, physics rows have a largest entry of 1.
+    pub fn factor(&self, block: &Block) -> f64 {
+        if block.group.is_some() {
+            return self.ratio(block.first);
+        }
+        let matrix = &self.hierarchy.hard.matrix;
+        let rows = block.first..block.first + block.len;
+        let largest = rows.flat_map(|row| matrix.row(row)).fold(0.0f64, |m, (_, v)| m.max(v.abs()));
+        if largest > 0.0 { 1.0 / largest } else { 1.0 }
     }
 
     /// The hierarchy in which groups are held, dropped, or relaxed at a cost of `sum (excess / size)^2`.
@@ -130,26 +143,28 @@ impl<'a> Blame<'a> {
             soft: ConicRows::new(columns),
             soft_weight: Vec::new(),
         };
-        let (mut held, mut soft, mut residuals) = (Vec::new(), Vec::new(), Vec::new());
+        let (mut held, mut soft, mut residuals, mut factors) = (Vec::new(), Vec::new(), Vec::new(), Vec::new());
         for block in &self.blocks {
+            let factor = self.factor(block);
+            factors.extend(std::iter::repeat_n(factor, block.len));
             match (self.role(block, roles), block.kind) {
                 (Role::Drop, _) => {}
                 (Role::Hold, _) => {
-                    copy_block(source, block, &mut hard);
+                    copy_block(source, block, factor, &mut hard);
                     held.extend(block.first..block.first + block.len);
                 }
                 (Role::Relax, Kind::Equality) => {
                     let row = block.first;
                     residuals.push(row);
-                    level.residuals.matrix.push(source.matrix.row(row));
-                    level.residuals.rhs.push(source.rhs[row]);
-                    level.residuals.weight.push(self.weight(row));
+                    level.residuals.matrix.push(source.matrix.row(row).map(|(j, v)| (j, factor * v)));
+                    level.residuals.rhs.push(factor * source.rhs[row]);
+                    level.residuals.weight.push(1.0);
                     level.residuals.names.push(source.names[row].clone());
                 }
                 (Role::Relax, _) => {
-                    copy_block(source, block, &mut level.soft);
+                    copy_block(source, block, factor, &mut level.soft);
                     soft.extend(block.first..block.first + block.len);
-                    level.soft_weight.push(self.weight(block.first));
+                    level.soft_weight.push(1.0);
                 }
             }
         }
@@ -161,7 +176,7 @@ impl<'a> Blame<'a> {
             tie_break: self.hierarchy.tie_break.clone(),
             auxiliary: self.hierarchy.auxiliary.clone(),
         };
-        Program { hierarchy, held, soft, residuals }
+        Program { hierarchy, held, soft, residuals, factor: factors }
     }
 
     /// Solves and counts.
@@ -177,10 +192,11 @@ pub(super) fn run(hierarchy: &Hierarchy, cancel: Option<&Arc<AtomicBool>>) -> Re
     if solution.status == Status::Cancelled { Err(ExplainError::Cancelled) } else { Ok(solution) }
 }
 
-pub(super) fn copy_block(from: &ConicRows, block: &Block, to: &mut ConicRows) {
+/// Appends a block, its rows multiplied by `factor`.
+pub(super) fn copy_block(from: &ConicRows, block: &Block, factor: f64, to: &mut ConicRows) {
     for row in block.first..block.first + block.len {
-        to.matrix.push(from.matrix.row(row));
-        to.rhs.push(from.rhs[row]);
+        to.matrix.push(from.matrix.row(row).map(|(j, v)| (j, factor * v)));
+        to.rhs.push(factor * from.rhs[row]);
         to.names.push(from.names.get(row).cloned().unwrap_or_else(unnamed));
     }
     let cone = match block.kind {

@@ -2,16 +2,24 @@
 //!
 //! For z in the dual cone and any x with `s = b - A x` in the cone, `0 <= z's = b'z - (A'z)'x`. So if
 //! `b'z + sum_j |A'z|_j X_j < 0`, no x with every `|x_j| <= X_j` satisfies the rows. The multipliers are first projected
-//! onto the dual cone, then every sum is formed in twice the working precision.
+//! onto the dual cone, then every sum is formed in twice the working precision. Where the spill is not small beside the value,
+//! the multipliers are corrected by least squares to make it smaller, and projected again.
 
 use super::blame::{Kind, pieces};
 use super::sums::Sum;
 use crate::conic::Hierarchy;
+use nalgebra::{DMatrix, DVector};
 
 /// No acceleration a legged robot has is larger than this (m/s^2, rad/s^2).
 pub const LARGEST_ACCELERATION: f64 = 1e4;
 /// No torque, force or moment is larger than this (N m, N).
 pub const LARGEST_FORCE: f64 = 1e6;
+/// A spill above this part of the value is worth a correction.
+const SMALL_SPILL: f64 = 1e-6;
+/// Equalities count as dependent below this relative singular value when multipliers are corrected.
+const DEPENDENT: f64 = 1e-10;
+/// Blocks with a multiplier above this part of the largest take part in a correction.
+const CARRIES: f64 = 1e-6;
 /// Multipliers below this part of the largest are not listed.
 const LISTED: f64 = 1e-9;
 
@@ -55,17 +63,14 @@ pub fn verify(hierarchy: &Hierarchy, multipliers: &[f64]) -> Farkas {
     for (first, len, kind) in pieces(&hard.cones) {
         project(kind, &mut z[first..first + len]);
     }
-    let mut value = Sum::default();
-    let mut gradient = vec![Sum::default(); hierarchy.columns.len()];
-    for (row, &multiplier) in z.iter().enumerate() {
-        value.add_product(hard.rhs[row], multiplier);
-        for (column, entry) in hard.matrix.row(row) {
-            gradient[column].add_product(entry, multiplier);
+    let (mut value, mut spill, gradient) = weigh(hierarchy, &z);
+    if spill > SMALL_SPILL * value.abs()
+        && let Some(corrected) = correct(hierarchy, &z, &gradient)
+    {
+        let (new_value, new_spill, _) = weigh(hierarchy, &corrected);
+        if new_value + new_spill < value + spill {
+            (z, value, spill) = (corrected, new_value, new_spill);
         }
-    }
-    let mut spill = Sum::default();
-    for (sum, column) in gradient.iter().zip(&hierarchy.columns) {
-        spill.add_product(sum.value().abs(), bound(column.unit) / column.scale);
     }
     let largest = z.iter().fold(0.0f64, |m, v| m.max(v.abs()));
     let carried = z
@@ -74,14 +79,62 @@ pub fn verify(hierarchy: &Hierarchy, multipliers: &[f64]) -> Farkas {
         .filter(|(v, _)| v.abs() > LISTED * largest)
         .map(|(&value, name)| Multiplier { group: name.group.clone(), part: name.part.clone(), physics: name.physics, value });
     Farkas {
-        value: value.value(),
-        spill: spill.value(),
-        holds: value.value() + spill.value() < 0.0,
+        value,
+        spill,
+        holds: value + spill < 0.0,
         acceleration_bound: LARGEST_ACCELERATION,
         force_bound: LARGEST_FORCE,
         multipliers: carried.collect(),
         projected: z.clone(),
     }
+}
+
+/// (`b'z`, `sum_j |A'z|_j X_j`, `A'z`).
+fn weigh(hierarchy: &Hierarchy, z: &[f64]) -> (f64, f64, Vec<f64>) {
+    let hard = &hierarchy.hard;
+    let mut value = Sum::default();
+    let mut gradient = vec![Sum::default(); hierarchy.columns.len()];
+    for (row, &multiplier) in z.iter().enumerate() {
+        value.add_product(hard.rhs[row], multiplier);
+        for (column, entry) in hard.matrix.row(row) {
+            gradient[column].add_product(entry, multiplier);
+        }
+    }
+    let gradient: Vec<f64> = gradient.into_iter().map(Sum::value).collect();
+    let mut spill = Sum::default();
+    for (entry, column) in gradient.iter().zip(&hierarchy.columns) {
+        spill.add_product(entry.abs(), bound(column.unit) / column.scale);
+    }
+    (value.value(), spill.value(), gradient)
+}
+
+/// Changes the multipliers of equalities, and of the blocks that carry the proof, by least squares so that `A'z`, weighted by
+/// the bounds X, shrinks; then projects again.
+fn correct(hierarchy: &Hierarchy, z: &[f64], gradient: &[f64]) -> Option<Vec<f64>> {
+    let hard = &hierarchy.hard;
+    let mut rows = Vec::new();
+    let largest = z.iter().fold(0.0f64, |m, v| m.max(v.abs()));
+    for (first, len, kind) in pieces(&hard.cones) {
+        if kind == Kind::Equality || z[first] > CARRIES * largest {
+            rows.extend(first..first + len);
+        }
+    }
+    let weight = |j: usize| bound(hierarchy.columns[j].unit) / hierarchy.columns[j].scale;
+    let mut matrix = DMatrix::zeros(hierarchy.columns.len(), rows.len());
+    for (k, &row) in rows.iter().enumerate() {
+        hard.matrix.row(row).for_each(|(j, v)| matrix[(j, k)] = v * weight(j));
+    }
+    let target = DVector::from_iterator(gradient.len(), gradient.iter().enumerate().map(|(j, g)| -g * weight(j)));
+    let size = matrix.amax();
+    let step = matrix.svd(true, true).solve(&target, DEPENDENT * size).ok()?;
+    let mut corrected = z.to_vec();
+    for (&row, change) in rows.iter().zip(step.iter()) {
+        corrected[row] += change;
+    }
+    for (first, len, kind) in pieces(&hard.cones) {
+        project(kind, &mut corrected[first..first + len]);
+    }
+    Some(corrected)
 }
 
 /// X of a column by its unit.

@@ -82,7 +82,7 @@ pub fn feasible_without(
     for (first, len, kind) in pieces(&hierarchy.hard.cones) {
         let name = hierarchy.hard.names.get(first);
         if name.is_none_or(|n| !(n.physics && released.contains(&n.group))) {
-            copy_block(&hierarchy.hard, &super::blame::Block { first, len, kind, group: None }, &mut freed.hard);
+            copy_block(&hierarchy.hard, &super::blame::Block { first, len, kind, group: None }, 1.0, &mut freed.hard);
         }
     }
     let sizes = natural_sizes(&freed);

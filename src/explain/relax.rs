@@ -82,7 +82,7 @@ pub(super) fn least(blame: &mut Blame, roles: &[Role]) -> Result<Option<Relaxati
     let (mut slacks, mut residuals) = (level.soft_slack.iter(), level.residual.iter());
     for block in blame.relaxed(roles) {
         let next = if block.kind == Kind::Equality { residuals.next() } else { slacks.next() };
-        deltas[block.first] = next.copied().unwrap_or(0.0);
+        deltas[block.first] = next.copied().unwrap_or(0.0) / program.factor[block.first];
     }
     let exact = level.refined || level.optimality.worst() < 1e-8;
     let z = multipliers(blame, &program, level);
@@ -94,15 +94,15 @@ fn multipliers(blame: &Blame, program: &Program, level: &LevelOutcome) -> Vec<f6
     let mut z = vec![0.0; blame.hierarchy.hard.rhs.len()];
     for (source, &value) in level.system.source.iter().zip(&level.multipliers) {
         if let RowSource::Hard { row } | RowSource::HardFace { row } = *source {
-            z[program.held[row]] += value;
+            z[program.held[row]] += value * program.factor[program.held[row]];
         }
     }
     for (&row, &value) in program.soft.iter().zip(&level.soft_multipliers) {
-        z[row] = value;
+        z[row] = value * program.factor[row];
     }
-    // cost w delta^2 with delta = a x - b: the row's multiplier is 2 w delta.
+    // cost r^2 with r = f (a x - b): the row's multiplier is 2 r.
     for (&row, &residual) in program.residuals.iter().zip(&level.residual) {
-        z[row] = 2.0 * blame.weight(row) * residual;
+        z[row] = 2.0 * residual * program.factor[row];
     }
     z
 }
@@ -111,7 +111,7 @@ fn multipliers(blame: &Blame, program: &Program, level: &LevelOutcome) -> Vec<f6
 fn proved(blame: &Blame, z: &[f64], roles: &[Role]) -> (f64, Vec<f64>) {
     let checked = verify(blame.hierarchy, z);
     let excess = -(checked.value + checked.spill);
-    let size: f64 = blame.relaxed(roles).map(|b| checked.projected[b.first].powi(2) / blame.weight(b.first)).sum();
+    let size: f64 = blame.relaxed(roles).map(|b| (checked.projected[b.first] / blame.ratio(b.first)).powi(2)).sum();
     let bound = if excess > 0.0 && size > 0.0 { excess * excess / size } else { 0.0 };
     (bound, checked.projected)
 }

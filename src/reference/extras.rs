@@ -15,8 +15,8 @@ use crate::problem::question::Question;
 use crate::solve;
 
 /// What every limit that gives way is granted beyond the least relaxation, relative to its natural size, so that the
-/// answer at the relaxation is a point of a set with an interior.
-const RELAXED_SLACK: f64 = 1e-6;
+/// answer at the relaxation is a point of a set with an interior (the solver calls thinner ones than 1e-6 ill posed).
+const RELAXED_SLACK: f64 = 5e-5;
 
 /// Adds to `answer` what the question asks for beyond it. `original` is the question before its latency was dealt with.
 pub(super) fn add(answer: &mut Answer, original: &Question, work: &Work, cancel: &Arc<AtomicBool>) -> Result<(), Trouble> {
