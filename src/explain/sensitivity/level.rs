@@ -16,7 +16,8 @@ use super::data::{Data, Source};
 
 /// Equations count as dependent below this relative singular value.
 const DEPENDENT: f64 = 1e-10;
-/// Curvature counts as none below this part of the largest.
+/// Curvature counts as none below this part of the Hessian's largest entry: where the equations leave a level nothing to
+/// decide, what is left of its Hessian is rounding.
 const FLAT: f64 = 1e-13;
 /// A gradient below this part of the Hessian is rounding.
 const ROUNDING: f64 = 1e-9;
@@ -152,7 +153,7 @@ fn solve(
     let mut inner = &cost.hessian - &range * range.tr_mul(&cost.hessian);
     inner = &inner - (&inner * &range) * range.transpose();
     let eigen = SymmetricEigen::new((&inner + inner.transpose()) * 0.5);
-    let top = eigen.eigenvalues.iter().fold(0.0f64, |m, v| m.max(v.abs()));
+    let top = cost.hessian.amax();
     let dx = (0..cost.change.len())
         .map(|p| {
             let c = DVector::from_iterator(equations.len(), equations.iter().map(|q| q.change[p]));

@@ -12,6 +12,10 @@ use crate::solve::{Exposed, FaceDecision, FaceKind, HierarchySolution, LevelOutc
 
 /// A multiplier of the tie-break above this part of the largest belongs to a block that binds.
 const BINDS: f64 = 1e-8;
+/// Rows of the data, and of faces, count as dependent below this relative length.
+const DEPENDENT: f64 = 1e-7;
+/// Rows that the cascade has found independent count as dependent below this.
+const DEPENDENT_FROZEN: f64 = 1e-9;
 /// A dual point this close (relative) to the boundary of its cone lies on it.
 const ON_BOUNDARY: f64 = 1e-6;
 
@@ -51,6 +55,8 @@ struct Walk<'a> {
     data: &'a Data<'a>,
     x: &'a [f64],
     fixed: Vec<Equation>,
+    /// Orthonormal basis of the gradients of `fixed`.
+    basis: Vec<DVector<f64>>,
     /// Blocks that some equation holds, by source and first row.
     held: Vec<(Source, usize)>,
     near: Vec<NearChange>,
@@ -60,7 +66,7 @@ struct Walk<'a> {
 /// Walks the cascade; none where a cone is held at a point without direction.
 pub(super) fn walk(data: &Data, solution: &HierarchySolution) -> Option<Walked> {
     let mut walk =
-        Walk { data, x: &solution.x, fixed: Vec::new(), held: Vec::new(), near: Vec::new(), unexplained: 0.0 };
+        Walk { data, x: &solution.x, fixed: Vec::new(), basis: Vec::new(), held: Vec::new(), near: Vec::new(), unexplained: 0.0 };
     for (first, _, kind) in pieces(&data.base.hard.cones) {
         if kind == Kind::Equality {
             walk.hold(Source::Hard, first, 1);
@@ -122,8 +128,28 @@ fn block_of(rows: &ConicRows, row: usize) -> Option<(usize, usize, usize)> {
 
 impl Walk<'_> {
     fn hold(&mut self, source: Source, first: usize, len: usize) {
-        self.fixed.extend((first..first + len).map(|row| Equation::flat(self.data, source, row, self.x)));
+        for row in first..first + len {
+            self.fix(Equation::flat(self.data, source, row, self.x), DEPENDENT);
+        }
         self.held.push((source, first));
+    }
+
+    /// Adds an equation where it is independent of those before it. A row that a level exposed by its multiplier is a combination
+    /// of what the level froze, so it moves along with that by itself; adding it would add rounding as an equation.
+    fn fix(&mut self, equation: Equation, threshold: f64) {
+        let mut rest = equation.gradient(self.data);
+        let length = rest.norm();
+        for _ in 0..2 {
+            for direction in &self.basis {
+                let along = direction.dot(&rest);
+                rest.axpy(-along, direction, 1.0);
+            }
+        }
+        let left = rest.norm();
+        if left > threshold * length {
+            self.basis.push(rest / left);
+            self.fixed.push(equation);
+        }
     }
 
     fn rows(&self, source: Source) -> Option<&ConicRows> {
@@ -195,18 +221,18 @@ impl Walk<'_> {
             if let RowSource::Frozen { level, row } = *source
                 && level == index
             {
-                self.fixed.push(Equation::frozen(self.data, Source::Residual(index), row, &step.dx));
+                self.fix(Equation::frozen(self.data, Source::Residual(index), row, &step.dx), DEPENDENT_FROZEN);
             }
         }
         for block in own {
             match block {
                 Own::Flat { source, first, len } => self.hold(*source, *first, *len),
                 Own::Boundary(boundary) => {
-                    self.fixed.extend(boundary.ray(&step.dx, &[]));
+                    boundary.ray(&step.dx, &[]).into_iter().for_each(|e| self.fix(e, DEPENDENT));
                     self.held.push((boundary.source, boundary.first));
                 }
                 Own::SoftRow { row, .. } => {
-                    self.fixed.push(Equation::frozen(self.data, Source::Soft(index), *row, &step.dx));
+                    self.fix(Equation::frozen(self.data, Source::Soft(index), *row, &step.dx), DEPENDENT);
                     self.held.push((Source::Soft(index), *row));
                 }
                 Own::SoftBoundary { boundary, .. } => {
@@ -214,7 +240,7 @@ impl Walk<'_> {
                     let gradient = equation.gradient(self.data);
                     let excess: Vec<f64> =
                         equation.change.iter().zip(&step.dx).map(|(change, d)| change + gradient.dot(d)).collect();
-                    self.fixed.extend(boundary.ray(&step.dx, &excess));
+                    boundary.ray(&step.dx, &excess).into_iter().for_each(|e| self.fix(e, DEPENDENT));
                     self.held.push((boundary.source, boundary.first));
                 }
             }
