@@ -7,7 +7,8 @@
 //! [ E  0  ] [dy] = - [ d_p c              ],     d_p at fixed x and y.
 //! ```
 //! Where E or H leave directions open (rows that depend on one another, a level that does not care), the shortest step
-//! is taken: what the level decides, its residuals, does not depend on that choice.
+//! is taken: what the level decides, its residuals, does not depend on that choice. But where the parameter pulls along a direction
+//! in which the level has no curvature, its optimum does not move, it jumps: there is no derivative, and that is said.
 
 use nalgebra::{DMatrix, DVector, SymmetricEigen};
 
@@ -19,6 +20,8 @@ const DEPENDENT: f64 = 1e-10;
 /// Curvature counts as none below this part of the Hessian's largest entry: where the equations leave a level nothing to
 /// decide, what is left of its Hessian is rounding.
 const FLAT: f64 = 1e-13;
+/// A pull along directions without curvature counts above this part of the whole (the differences of the data leave about 1e-8).
+const UNOPPOSED: f64 = 3e-7;
 /// A gradient below this part of the Hessian is rounding.
 const ROUNDING: f64 = 1e-9;
 
@@ -38,6 +41,8 @@ pub(super) enum Own {
 pub(super) struct Step {
     /// Change of x, per parameter (the shortest among those that keep the level optimal).
     pub dx: Vec<DVector<f64>>,
+    /// Per parameter: the optimum jumps when it changes.
+    pub jumps: Vec<bool>,
     /// Multiplier of each own block that is held: (first row, size of the multiplier).
     pub multipliers: Vec<(Source, usize, f64)>,
     /// `|grad f + E'y|` relative to `|grad f|`: near zero where the equations explain the level's optimum.
@@ -132,7 +137,7 @@ fn solve(
     let svd = e.clone().svd(true, true);
     let (Some(u), Some(vt)) = (&svd.u, &svd.v_t) else {
         let dx = vec![DVector::zeros(n); cost.change.len()];
-        return Step { dx, multipliers: Vec::new(), unexplained: f64::INFINITY, gradient: 0.0, gradient_counts: true };
+        return Step { dx, jumps: vec![false; cost.change.len()], multipliers: Vec::new(), unexplained: f64::INFINITY, gradient: 0.0, gradient_counts: true };
     };
     let largest = svd.singular_values.iter().fold(0.0f64, |m, v| m.max(*v));
     let kept: Vec<usize> = (0..svd.singular_values.len()).filter(|&i| svd.singular_values[i] > DEPENDENT * largest).collect();
@@ -154,7 +159,7 @@ fn solve(
     inner = &inner - (&inner * &range) * range.transpose();
     let eigen = SymmetricEigen::new((&inner + inner.transpose()) * 0.5);
     let top = cost.hessian.amax();
-    let dx = (0..cost.change.len())
+    let (dx, jumps) = (0..cost.change.len())
         .map(|p| {
             let c = DVector::from_iterator(equations.len(), equations.iter().map(|q| q.change[p]));
             let onto = &range * (-(&right * c)).component_mul(&inverse);
@@ -163,13 +168,13 @@ fn solve(
                 pull.axpy(y[k], &equation.gradient_change(data, p), 1.0);
             }
             let along = eigen.eigenvectors.tr_mul(&project(&pull));
-            let step = DVector::from_iterator(
-                n,
-                (0..n).map(|i| if eigen.eigenvalues[i] > FLAT * top { -along[i] / eigen.eigenvalues[i] } else { 0.0 }),
-            );
-            onto + project(&(&eigen.eigenvectors * step))
+            let curved = |i: usize| eigen.eigenvalues[i] > FLAT * top;
+            let step = DVector::from_iterator(n, (0..n).map(|i| if curved(i) { -along[i] / eigen.eigenvalues[i] } else { 0.0 }));
+            let unopposed = (0..n).filter(|&i| !curved(i)).map(|i| along[i].abs()).fold(0.0, f64::max);
+            let jumps = unopposed > UNOPPOSED * pull.norm() && pull.norm() > ROUNDING * top;
+            (onto + project(&(&eigen.eigenvectors * step)), jumps)
         })
-        .collect();
+        .unzip();
     let gradient = cost.gradient.norm();
-    Step { dx, multipliers, unexplained, gradient, gradient_counts: gradient > ROUNDING * cost.hessian.amax() }
+    Step { dx, jumps, multipliers, unexplained, gradient, gradient_counts: gradient > ROUNDING * cost.hessian.amax() }
 }

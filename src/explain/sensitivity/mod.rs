@@ -23,7 +23,7 @@ use nalgebra::DVector;
 /// Relative step of the central differences of the data.
 const STEP: f64 = 1e-5;
 /// A multiplier below this part of its level's largest is about to leave the active set.
-pub const NEAR_MULTIPLIER: f64 = 1e-3;
+pub const NEAR_MULTIPLIER: f64 = 1e-4;
 /// An inactive row or cone with less (scaled) slack than this is about to enter the active set.
 pub const NEAR_SLACK: f64 = 1e-4;
 /// A level whose gradient the active set leaves unexplained by more than this part is not differentiated.
@@ -75,6 +75,9 @@ pub struct NearChange {
 pub struct Sensitivity {
     /// Per contact: stiffness and damping (both parts together, then each), friction. Empty where there are none, see `why_not`.
     pub derivatives: Vec<Derivative>,
+    /// Parameters by which there is no derivative: the answer jumps when one of them changes alone (a priority that does not care
+    /// how it reaches its optimum, until the parameter makes it care).
+    pub undefined: Vec<Parameter>,
     /// Where the active set is about to change.
     pub near: Vec<NearChange>,
     /// Why there are no derivatives, where there are none.
@@ -83,7 +86,7 @@ pub struct Sensitivity {
 
 impl Sensitivity {
     fn none(why: &'static str) -> Sensitivity {
-        Sensitivity { derivatives: Vec::new(), near: Vec::new(), why_not: Some(why) }
+        Sensitivity { derivatives: Vec::new(), undefined: Vec::new(), near: Vec::new(), why_not: Some(why) }
     }
 }
 
@@ -115,12 +118,18 @@ pub fn differentiate<E: From<ExplainError>>(
     if walked.unexplained > UNEXPLAINED {
         return Ok(Sensitivity::none("the active set does not explain the answer to the accuracy derivatives need"));
     }
-    let mut derivatives = Vec::with_capacity(parameters.len());
+    let mut parts = Vec::with_capacity(parameters.len());
     for (p, &parameter) in parameters.iter().enumerate() {
         let moved = Moved { base, dx: &walked.dx[p], limits: &varied_limits[p] };
-        derivatives.push(moved.report(parameter, question, walked.reaches[p]));
+        parts.push(moved.report(parameter, question, walked.reaches[p]));
     }
-    Ok(Sensitivity { derivatives: with_sums(question, &derivatives, &walked.slacks), near: walked.near, why_not: None })
+    let jumping: Vec<Parameter> =
+        parameters.iter().zip(&walked.jumps).filter(|(_, jumps)| **jumps).map(|(p, _)| *p).collect();
+    let (undefined, derivatives): (Vec<_>, Vec<_>) = with_sums(question, &parts, &walked.slacks)
+        .into_iter()
+        .partition(|d| jumping.iter().any(|j| j.contact == d.parameter.contact && part_of(j.kind, d.parameter.kind)));
+    let undefined = undefined.into_iter().map(|d| d.parameter).collect();
+    Ok(Sensitivity { derivatives, undefined, near: walked.near, why_not: None })
 }
 
 /// The parameters that are differentiated one by one.
@@ -176,6 +185,16 @@ fn margin(block: &LimitBlock, x: &[f64]) -> f64 {
     let slack = |i: usize| block.rows[i].rhs - block.rows[i].entries.iter().map(|&(c, v)| v * x[c]).sum::<f64>();
     let beyond = (1..block.rows.len()).map(|i| slack(i).powi(2)).sum::<f64>().sqrt();
     if block.rows.is_empty() { 0.0 } else { slack(0) - beyond }
+}
+
+/// Whether `kind` moves with `whole`.
+fn part_of(kind: ParameterKind, whole: ParameterKind) -> bool {
+    use ParameterKind::*;
+    match whole {
+        Stiffness => matches!(kind, NormalStiffness | TangentialStiffness),
+        Damping => matches!(kind, NormalDamping | TangentialDamping),
+        other => kind == other,
+    }
 }
 
 /// Adds stiffness and damping as a whole: the sums of their parts.

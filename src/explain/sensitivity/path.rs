@@ -23,6 +23,8 @@ const ON_BOUNDARY: f64 = 1e-6;
 pub(super) struct Walked {
     /// Change of the answer (scaled), per parameter.
     pub dx: Vec<DVector<f64>>,
+    /// Per parameter: some level's optimum jumps with it.
+    pub jumps: Vec<bool>,
     pub near: Vec<NearChange>,
     /// Per parameter, see `Derivative::reaches`.
     pub reaches: Vec<Option<f64>>,
@@ -60,13 +62,22 @@ struct Walk<'a> {
     /// Blocks that some equation holds, by source and first row.
     held: Vec<(Source, usize)>,
     near: Vec<NearChange>,
+    jumps: Vec<bool>,
     unexplained: f64,
 }
 
 /// Walks the cascade; none where a cone is held at a point without direction.
 pub(super) fn walk(data: &Data, solution: &HierarchySolution) -> Option<Walked> {
-    let mut walk =
-        Walk { data, x: &solution.x, fixed: Vec::new(), basis: Vec::new(), held: Vec::new(), near: Vec::new(), unexplained: 0.0 };
+    let mut walk = Walk {
+        data,
+        x: &solution.x,
+        fixed: Vec::new(),
+        basis: Vec::new(),
+        held: Vec::new(),
+        near: Vec::new(),
+        jumps: vec![false; data.parameters()],
+        unexplained: 0.0,
+    };
     for (first, _, kind) in pieces(&data.base.hard.cones) {
         if kind == Kind::Equality {
             walk.hold(Source::Hard, first, 1);
@@ -91,7 +102,7 @@ pub(super) fn walk(data: &Data, solution: &HierarchySolution) -> Option<Walked> 
     walk.held.extend(own.iter().filter_map(place));
     let slacks = walk.slacks(&step.dx);
     let reaches = (0..data.parameters()).map(|p| slacks.reaches(&[p])).collect();
-    Some(Walked { dx: step.dx, near: walk.near, reaches, slacks, unexplained: walk.unexplained })
+    Some(Walked { dx: step.dx, jumps: walk.jumps, near: walk.near, reaches, slacks, unexplained: walk.unexplained })
 }
 
 fn place(own: &Own) -> Option<(Source, usize)> {
@@ -198,6 +209,7 @@ impl Walk<'_> {
         if step.gradient_counts {
             self.unexplained = self.unexplained.max(step.unexplained);
         }
+        self.jumps.iter_mut().zip(&step.jumps).for_each(|(all, one)| *all |= one);
         let largest = step.multipliers.iter().map(|m| m.2).fold(step.gradient, f64::max);
         for &(source, first, size) in &step.multipliers {
             if size < NEAR_MULTIPLIER * largest {
