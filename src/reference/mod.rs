@@ -5,6 +5,7 @@
 
 pub mod answer;
 mod dynamics;
+mod extras;
 mod ground;
 mod latency;
 mod limits;
@@ -15,6 +16,7 @@ use std::sync::atomic::AtomicBool;
 
 use crate::certify;
 use crate::contact::{ContactError, Law, Rest};
+use crate::explain::ExplainError;
 use crate::problem::question::{DynamicsQuestion, Question};
 use crate::problem::scene::{Scene, SceneError};
 use crate::problem::{Assembly, assemble};
@@ -39,6 +41,9 @@ pub enum Trouble {
     /// The solver refused its input: a mistake of ours.
     #[error("the assembled problem was refused: {0}")]
     Solver(#[from] SolveError),
+    /// What was to be explained could not be.
+    #[error(transparent)]
+    Explain(#[from] ExplainError),
 }
 
 impl Trouble {
@@ -65,13 +70,24 @@ pub(crate) struct Work {
 
 /// Answers `question`. Setting `cancel` ends the work early with [`Status::Cancelled`].
 pub fn solve(question: &Question, cancel: &Arc<AtomicBool>) -> Result<Answer, Trouble> {
+    let work = work(question, cancel)?;
+    let mut answer = answer(&work);
+    extras::add(&mut answer, question, &work, cancel)?;
+    Ok(answer)
+}
+
+fn work(question: &Question, cancel: &Arc<AtomicBool>) -> Result<Work, Trouble> {
+    let (question, scene, assembly) = assembled(question, cancel)?;
+    let solution = solve::solve(&assembly.hierarchy, &solve::Options::default(), Some(cancel))?;
+    Ok(Work { question, scene, assembly, solution })
+}
+
+fn assembled(question: &Question, cancel: &Arc<AtomicBool>) -> Result<(Question, Scene, Assembly), Trouble> {
     let question = latency::predict(question)?;
     let scene = Scene::new(&question)?;
     let violations = limits::vertex_violations(&question, &scene, cancel)?;
     let assembly = assemble(&question, &scene, &violations);
-    let solution = solve::solve(&assembly.hierarchy, &solve::Options::default(), Some(cancel))?;
-    let work = Work { question, scene, assembly, solution };
-    Ok(answer(work))
+    Ok((question, scene, assembly))
 }
 
 /// What given torques (joint order, N m or N) lead to over `question`'s tick, by its rule. A latency in the question is not
@@ -95,33 +111,37 @@ pub fn dynamics(question: &DynamicsQuestion) -> DynamicsReport {
     dynamics::report(model, &question.state, &question.velocity_axes, &question.gravity, &places)
 }
 
-fn answer(work: Work) -> Answer {
+fn answer(work: &Work) -> Answer {
     let mut warnings = Vec::new();
     let ground = ground::report(&work.question, &work.scene);
     let found = match work.solution.status {
         solve::Status::Infeasible | solve::Status::Cancelled => None,
-        _ => Some(report::Found::new(&work)),
+        _ => Some(report::Found::new(work)),
     };
-    let certificate = found.as_ref().map(|found| found.certify(&work));
+    let certificate = found.as_ref().map(|found| found.certify(work));
     let status = status(&work.solution, certificate.as_ref());
     ground_warnings(&work.question, &ground, &mut warnings);
-    let soles = report::soles(&work, found.as_ref());
+    let soles = report::soles(work, found.as_ref());
     linearisation_warnings(&soles, &mut warnings);
     Answer {
         status,
-        motion: found.as_ref().map(|f| f.motion(&work)),
-        tasks: report::tasks(&work, found.as_ref()),
-        levels: if found.is_some() { report::levels(&work) } else { Vec::new() },
-        binding: if found.is_some() { report::binding(&work) } else { Vec::new() },
-        margins: found.as_ref().map(|f| limits::margins(&work, f)).unwrap_or_default(),
-        free: if found.is_some() { report::free(&work) } else { Vec::new() },
-        blocking: report::blocking(&work),
+        motion: found.as_ref().map(|f| f.motion(work)),
+        tasks: report::tasks(work, found.as_ref()),
+        levels: if found.is_some() { report::levels(work) } else { Vec::new() },
+        binding: if found.is_some() { report::binding(work) } else { Vec::new() },
+        margins: found.as_ref().map(|f| limits::margins(work, f)).unwrap_or_default(),
+        free: if found.is_some() { report::free(work) } else { Vec::new() },
+        blocking: report::blocking(work),
         dynamics: work.question.include.dynamics.then(|| Box::new(dynamics_of(&work.question))),
         problem: work.question.include.problem.then(|| Box::new(work.assembly.hierarchy.clone())),
         soles,
         certificate,
         ground,
         warnings,
+        explained: None,
+        uniqueness: None,
+        sensitivity: None,
+        spread: None,
     }
 }
 
