@@ -245,11 +245,11 @@ impl Cascade<'_> {
         Err(Stop::Infeasible(None))
     }
 
-    /// Newton steps from the point of the level before, or from the shortest point where nothing is unequal.
+    /// Newton steps from the point of the level before, or from the shortest point that meets the equalities. The optimality
+    /// conditions prove the optimum whether or not the set has an interior, so this needs no engine where few rows are active.
     fn without_engine(&self, problem: &LevelProblem) -> Option<Solved> {
         let unconstrained = problem.sets.blocks.is_empty();
-        let tried = self.options.warm && self.interior_known;
-        if !(unconstrained || tried) {
+        if !(unconstrained || self.options.warm) {
             return None;
         }
         let d = problem.sets.d;
