@@ -186,7 +186,8 @@ impl Held {
             system[(clock, clock + 1 + k)] = 1.0;
         }
         // Written so that a norm that is no number ends here too.
-        if !(system.lp_norm(1) < LARGEST_NORM) {
+        let norm = system.lp_norm(1);
+        if norm.is_nan() || norm >= LARGEST_NORM {
             return None;
         }
         let end = system.exp();

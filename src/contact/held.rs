@@ -207,7 +207,8 @@ impl Terms {
             let triangle = factors.r();
             let pivots = triangle.diagonal().abs();
             // Written so that a pivot that is no number fails too.
-            if !(pivots.min() > SMALLEST_PIVOT * pivots.max()) {
+            let (least, largest) = (pivots.min(), pivots.max());
+            if least.is_nan() || largest.is_nan() || least <= SMALLEST_PIVOT * largest {
                 return None;
             }
             factors.q_tr_mul(&mut others);

@@ -6,6 +6,7 @@ use std::time::{Duration, Instant};
 
 use super::models::Models;
 use super::settings::MODELS_KEPT;
+use crate::explain::ExplainError;
 use crate::reference::answer::Status;
 use crate::reference::{self, Trouble};
 use crate::wire::{self, Fault, ModelSource, Refusal};
@@ -113,8 +114,11 @@ fn refusal(trouble: &Trouble) -> Refusal {
         (_, Some(contact)) => format!("/contacts/{contact}"),
         (Trouble::Latency, None) => "/latency".to_owned(),
         (Trouble::Scene(_), None) => String::new(),
-        (Trouble::Solver(error), None) => {
-            tracing::error!(%error, "the assembled problem was refused");
+        (Trouble::Explain(ExplainError::Cancelled), None) => {
+            return Refusal::new(504, "time-limit", "Time limit reached", "the work was called off");
+        }
+        (Trouble::Solver(_) | Trouble::Explain(_), None) => {
+            tracing::error!(error = %trouble, "the assembled problem was refused");
             return Refusal::new(500, "defect", "A defect of this service", trouble.to_string());
         }
     };

@@ -29,6 +29,9 @@ pub const TICK_WARNING: f64 = 0.3;
 /// Above this share of the normal force the linearisation error is warned about.
 pub const LINEARISATION_WARNING: f64 = 0.01;
 
+/// Largest stated error (scaled) of a level that Newton refinement did not confirm, for an answer to count as solved.
+pub const UNREFINED_BOUND: f64 = 1e-8;
+
 /// Why a valid question has no answer at all.
 #[derive(Debug, Clone, PartialEq, thiserror::Error)]
 pub enum Trouble {
@@ -145,9 +148,11 @@ fn answer(work: &Work) -> Answer {
     }
 }
 
-/// `Solved` is only said when the certificate holds.
+/// `Solved` is only said when the certificate holds and every level was either sharpened by Newton steps or comes with a bound on
+/// its error that meets the same target: a level that is nearly flat can pass the optimality figures and yet be far off.
 fn status(solution: &HierarchySolution, certificate: Option<&certify::Certificate>) -> Status {
-    let holds = certificate.is_some_and(|c| c.holds);
+    let sharp = solution.levels.iter().all(|level| level.refined || level.bound <= UNREFINED_BOUND);
+    let holds = sharp && certificate.is_some_and(|c| c.holds);
     match solution.status {
         solve::Status::Infeasible => Status::Infeasible,
         solve::Status::Cancelled => Status::Cancelled,
