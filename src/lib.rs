@@ -11,6 +11,7 @@ pub mod contact;
 pub mod problem;
 pub mod solve;
 pub mod certify;
+pub mod explain;
 pub mod reference;
 pub mod wire;
 pub mod http;

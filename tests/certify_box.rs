@@ -143,7 +143,7 @@ fn factors(rule: TickRule) -> (f64, f64) {
         TickRule::BackwardEuler => (1.0, 1.0),
         TickRule::Trapezoid => (0.5, 0.5),
         TickRule::Explicit => (0.0, 0.0),
-        TickRule::Held => unreachable!("the closed forms here mix two wrenches; see held_rule.rs"),
+        TickRule::Held => unreachable!("these tests are for the rules with fixed factors"),
     }
 }
 
@@ -572,7 +572,7 @@ fn what_linearising_costs_is_told_apart() {
             acceleration: &spoken.acceleration,
             torques: &spoken.torques,
             wrenches: &wrenches,
-            vertex_forces: &[spoken.forces.clone()],
+            vertex_forces: std::slice::from_ref(&spoken.forces),
         };
         linearisation_error(&case.question, &claim)[0].expect("soft")
     };

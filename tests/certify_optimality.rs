@@ -32,7 +32,7 @@ fn failing(check: &LevelCheck) -> Vec<&'static str> {
         ("dual", check.dual_violation),
         ("feasibility", check.feasibility),
     ];
-    figures.into_iter().filter(|f| !(f.1 <= check.bound)).map(|f| f.0).collect()
+    figures.into_iter().filter(|f| f.1.is_nan() || f.1 > check.bound).map(|f| f.0).collect()
 }
 
 /// HS76 (Hock & Schittkowski 1981, published): optimum (3, 23, 0, 6)/11, multipliers 5/11 and 19/11.
@@ -319,4 +319,21 @@ fn a_face_that_no_multiplier_exposes_is_not_certified() {
     let second = proof(2, &kept, vec![0.0; 5]);
     let (_, checks) = certify_optimality(&hierarchy, &[60.0, 0.22, 100.0], &[first, second]);
     assert!(!checks[1].passes());
+}
+
+#[test]
+fn opposite_rows_without_room_are_an_equality() {
+    // x <= 1 and -x <= -1 (scaled differently), y = x wanted: (1, 1). With room between them x = 1 is an assumption.
+    let verdict = |lower: f64| {
+        let mut hard = ConicRows::new(2);
+        push(&mut hard, Cone::Nonnegative(2), &[(vec![1.0, 0.0], 1.0), (vec![-3.0, 0.0], -3.0 * lower)], "range", false);
+        let task = residuals(2, &[(vec![-1.0, 1.0], 0.0, 1.0)]);
+        let hierarchy = Hierarchy { hard, levels: vec![level(1, task, 2)], ..Default::default() };
+        let mut system = ConicRows::new(2);
+        push(&mut system, Cone::Zero(1), &[(vec![2.0, 0.0], 2.0)], "pinched", false);
+        certify_optimality(&hierarchy, &[1.0, 1.0], &[proof(1, &system, vec![0.0])])
+    };
+    let (faces, levels) = verdict(1.0);
+    assert!(faces.passes() && levels[0].passes(), "{faces:?} {levels:?}");
+    assert!(!verdict(0.999).0.passes());
 }

@@ -162,7 +162,6 @@ fn problem_and_physics_agree_on_random_robots() {
 }
 
 #[test]
-#[ignore = "friction under a point foot in the last contact indexes past the columns in problem::limits::wrench"]
 fn friction_under_a_point_foot_can_be_assembled() {
     let treatment = Treatment::Hard;
     for seed in 0..ROUNDS {

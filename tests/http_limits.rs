@@ -65,7 +65,7 @@ impl Work for Injected {
             }
         }
         bench.now.fetch_sub(1, Ordering::SeqCst);
-        Ok(Document { body: body.to_vec(), status: None, model: None, timings: vec![("solve", Duration::from_millis(1))] })
+        Ok(Document { body: body.to_vec(), model: None, timings: vec![("solve", Duration::from_millis(1))] })
     }
 
     fn model(&self, _: &str) -> Option<Vec<u8>> {

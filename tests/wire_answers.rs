@@ -123,7 +123,8 @@ fn answer() -> Answer {
         name: "dynamics", relative_to: "of the robot's weight", value: 1e-12, bound: 1e-9, worst: "r_hip".into(),
     };
     let level_check = LevelCheck {
-        priority: 1, stationarity: 1e-10, complementarity: 0.0, dual_violation: 0.0, bound: 1e-8,
+        priority: 1, stationarity: 1e-10, complementarity: 0.0, dual_violation: 0.0, feasibility: 0.0,
+        bound: 1e-8,
     };
     Answer {
         status: Status::Solved,
@@ -278,7 +279,7 @@ fn refusals_follow_their_schema() {
     assert_eq!(document["status"], 422);
     assert_eq!(document["instance"], "/v1/models");
     assert_eq!(document["faults"][0]["line"], 2);
-    let refusal = read_solve(b"{", &Nothing).err().expect("no JSON");
+    let refusal = read_solve(b"{", &Nothing).expect_err("no JSON");
     let document = follows("problem", &write_refusal(&refusal, "/v1/solve"));
     assert_eq!((&document["status"], &document["code"]), (&json!(400), &json!("not-json")));
     assert!(document["faults"][0].get("line").is_none());

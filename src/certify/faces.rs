@@ -12,8 +12,9 @@
 //! So each equality of `system` has to be a combination of implied equalities, and each cone row or block an
 //! implied one, up to implied equalities and a positive factor. LEAVING implied rows out is allowed: x
 //! obeys them anyway (check `hard-rows`), and an optimum of less is an optimum of all.
-//! A face that only a further program exposes (all multipliers zero, yet nothing strictly inside) is not
-//! justified here: such a problem is ill-posed and is not certified.
+//! A pair of opposite rows without room between them (`least` equal to `largest`) is an equality. Any other face that
+//! only a further program exposes (all multipliers zero, yet nothing strictly inside) is not justified
+//! here: such a problem is ill-posed and is not certified.
 
 use super::rows::{Block, blocks, fits, matrix_fits, norm};
 use super::worst::Worst;
@@ -105,12 +106,17 @@ impl Known {
         self.cones.push(Implied { cone: block.cone, rows: dense, slack });
     }
 
-    /// What is left of a row after taking off all implied equalities (twice, against rounding).
+    /// What is left of a row after taking off all implied equalities; once more where little is left, against
+    /// rounding.
     fn rest(&self, mut row: Vec<f64>) -> Vec<f64> {
         for _ in 0..2 {
+            let before = norm(&row);
             for base in &self.equalities {
                 let part: f64 = base.iter().zip(&row).map(|(a, b)| a * b).sum();
                 row.iter_mut().zip(base).for_each(|(r, b)| *r -= part * b);
+            }
+            if norm(&row) > 0.5 * before {
+                break;
             }
         }
         row
@@ -156,26 +162,61 @@ impl Known {
         }
     }
 
+    /// Rows of the implied cones, freed of implied equalities.
+    fn bare(&self) -> Vec<Vec<Vec<f64>>> {
+        self.cones.iter().map(|c| c.rows.iter().map(|r| self.rest(r.clone())).collect()).collect()
+    }
+
+    /// Two implied rows that leave an equality no room: `r x <= b` and `-r x <= -b`, up to positive factors. The
+    /// figure is the larger of their distances to the row and of the room between them, infinite without such a pair.
+    fn pinched(&self, bare: &[Vec<Vec<f64>>], row: &[f64]) -> f64 {
+        let (mut upper, mut lower) = ((f64::INFINITY, 0.0), (f64::INFINITY, 0.0));
+        for (implied, bare) in self.cones.iter().zip(bare) {
+            let own: f64 = bare[0].iter().map(|b| b * b).sum();
+            let cross: f64 = bare[0].iter().zip(row).map(|(b, r)| b * r).sum();
+            if own == 0.0 || cross == 0.0 {
+                continue;
+            }
+            let factor = cross / own;
+            let apart: f64 = bare[0].iter().zip(row).map(|(b, r)| (factor * b - r).powi(2)).sum();
+            let side = if factor > 0.0 { &mut upper } else { &mut lower };
+            let distance = apart.sqrt() / norm(row);
+            let room = implied.slack[0] * factor.abs();
+            if distance <= OPTIMALITY_BOUND && (side.0 == f64::INFINITY || room < side.1) {
+                *side = (distance, room);
+            }
+        }
+        upper.0.max(lower.0).max((upper.1 + lower.1).abs())
+    }
+
     /// Records how much of each row of a system is not implied.
     fn judge(&self, proof: &LevelProof, x: &[f64], worst: &mut Worst) {
         let system = &proof.system;
-        let bare: Vec<Vec<Vec<f64>>> = self
-            .cones
-            .iter()
-            .map(|implied| implied.rows.iter().map(|r| self.rest(r.clone())).collect())
-            .collect();
+        // Made when first needed: most systems repeat the hard rows as they are.
+        let mut freed: Option<Vec<Vec<Vec<f64>>>> = None;
         for block in blocks(system) {
             let rows: Vec<Vec<f64>> = block.rows.clone().map(|i| dense(&system.matrix, i, x.len())).collect();
+            let slack: Vec<f64> =
+                block.rows.clone().map(|i| system.rhs[i] - system.matrix.row_dot(i, x)).collect();
+            let repeats = |c: &Implied| c.cone == block.cone && c.slack == slack && c.rows == rows;
+            if self.cones.iter().any(repeats) {
+                continue;
+            }
             let size = rows.iter().map(|r| norm(r)).fold(0.0, f64::max);
             let rests: Vec<Vec<f64>> = rows.into_iter().map(|r| self.rest(r)).collect();
             let own = rests.iter().map(|r| norm(r)).fold(0.0, f64::max);
             let mut share = if own == 0.0 { 0.0 } else { own / size };
-            if !matches!(block.cone, Cone::Zero(_)) && share > OPTIMALITY_BOUND {
-                let slack: Vec<f64> =
-                    block.rows.clone().map(|i| system.rhs[i] - system.matrix.row_dot(i, x)).collect();
-                let candidates = self.cones.iter().zip(&bare);
+            if share <= OPTIMALITY_BOUND {
+                worst.record(share, || place(proof, &block));
+                continue;
+            }
+            let bare = freed.get_or_insert_with(|| self.bare());
+            if !matches!(block.cone, Cone::Zero(_)) {
+                let candidates = self.cones.iter().zip(bare.iter());
                 let distances = candidates.map(|(implied, bare)| distance(implied, bare, &rests, &slack));
                 share = share.min(distances.fold(f64::INFINITY, f64::min));
+            } else {
+                share = share.min(self.pinched(bare, &rests[0]));
             }
             worst.record(share, || place(proof, &block));
         }

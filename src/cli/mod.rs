@@ -30,7 +30,7 @@ struct Arguments {
 #[derive(Debug, Subcommand)]
 enum Command {
     /// Serve over HTTP, on the loopback unless told otherwise.
-    Serve(serve::Serve),
+    Serve(Box<serve::Serve>),
     /// Answer a solve request from a file; prints what POST /v1/solve answers.
     Solve(solve::Solve),
     /// Rigid-body terms of a state from a file; prints what POST /v1/dynamics answers.

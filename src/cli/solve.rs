@@ -8,7 +8,7 @@ use clap::Args;
 
 use super::{Outcome, files, report};
 use crate::http::{Catalogue, Errand, Work};
-use crate::reference::answer::Status;
+use crate::wire::view::Parsed;
 
 /// Arguments of `underfoot solve`.
 #[derive(Debug, Args)]
@@ -32,10 +32,10 @@ impl Solve {
             Ok(document) => document,
             Err(refusal) => return files::refuse(&refusal),
         };
-        let outcome = match document.status {
-            Some(Status::Solved) => Outcome::Good,
-            _ => Outcome::BadNews,
-        };
+        // From the document, not from the solver: an answer that had to be withheld says so only there.
+        let parsed = Parsed::read(&document.body);
+        let solved = parsed.is_some_and(|parsed| parsed.view().at("/status").text() == Some("solved"));
+        let outcome = if solved { Outcome::Good } else { Outcome::BadNews };
         if self.table {
             files::print(report::answer(&document.body).as_bytes(), outcome)
         } else {

@@ -7,6 +7,9 @@ const GAP: &str = "  ";
 /// Before every line.
 const INDENT: &str = "  ";
 
+/// Amounts (N, N m) below this are rounding.
+const ROUNDING: f64 = 1e-9;
+
 /// Where a column's cells stand.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub enum Side {
@@ -95,6 +98,11 @@ pub fn number(value: f64, digits: usize) -> String {
     } else {
         format!("{value:.digits$}")
     }
+}
+
+/// The same for a physical amount: what is only rounding reads as zero.
+pub fn amount(value: f64, digits: usize) -> String {
+    number(if value.abs() < ROUNDING { 0.0 } else { value }, digits)
 }
 
 #[cfg(test)]

@@ -6,6 +6,7 @@ use std::time::{Duration, Instant};
 
 use super::models::Models;
 use super::settings::MODELS_KEPT;
+use crate::explain::ExplainError;
 use crate::reference::answer::Status;
 use crate::reference::{self, Trouble};
 use crate::wire::{self, Fault, ModelSource, Refusal};
@@ -26,8 +27,6 @@ pub enum Errand {
 pub struct Document {
     /// The JSON text.
     pub body: Vec<u8>,
-    /// How a solve ended; none for other documents.
-    pub status: Option<Status>,
     /// Id of the model that was registered.
     pub model: Option<String>,
     /// Where the time went. Never part of the body, which is the same every time.
@@ -80,7 +79,7 @@ impl Catalogue {
         self.models.keep(Arc::clone(&model));
         let body = wire::write_model(&model);
         clock.lap("write");
-        Ok(Document { body, status: None, model: Some(model.id.clone()), timings: clock.laps })
+        Ok(Document { body, model: Some(model.id.clone()), timings: clock.laps })
     }
 
     fn dynamics(&self, body: &[u8]) -> Result<Document, Refusal> {
@@ -91,7 +90,7 @@ impl Catalogue {
         clock.lap("dynamics");
         let body = wire::write_dynamics(&question, &report, &wire::fingerprint(body));
         clock.lap("write");
-        Ok(Document { body, status: None, model: None, timings: clock.laps })
+        Ok(Document { body, model: None, timings: clock.laps })
     }
 
     fn solve(&self, body: &[u8], cancel: &Arc<AtomicBool>) -> Result<Document, Refusal> {
@@ -105,7 +104,7 @@ impl Catalogue {
         clock.lap("solve");
         let body = wire::write_answer(&question, &answer, &wire::fingerprint(body));
         clock.lap("write");
-        Ok(Document { body, status: Some(answer.status), model: None, timings: clock.laps })
+        Ok(Document { body, model: None, timings: clock.laps })
     }
 }
 
@@ -115,8 +114,11 @@ fn refusal(trouble: &Trouble) -> Refusal {
         (_, Some(contact)) => format!("/contacts/{contact}"),
         (Trouble::Latency, None) => "/latency".to_owned(),
         (Trouble::Scene(_), None) => String::new(),
-        (Trouble::Solver(error), None) => {
-            tracing::error!(%error, "the assembled problem was refused");
+        (Trouble::Explain(ExplainError::Cancelled), None) => {
+            return Refusal::new(504, "time-limit", "Time limit reached", "the work was called off");
+        }
+        (Trouble::Solver(_) | Trouble::Explain(_), None) => {
+            tracing::error!(error = %trouble, "the assembled problem was refused");
             return Refusal::new(500, "defect", "A defect of this service", trouble.to_string());
         }
     };

@@ -79,10 +79,9 @@ async fn run(shared: Arc<Shared>, errand: Errand, body: axum::body::Bytes) -> Re
     let (result, waited) = shared.desk.run(move |cancel| work.run(errand, &body, cancel)).await?;
     let document = result?;
     let timing = server_timing(waited, &document.timings);
-    let status = if document.model.is_some() { StatusCode::CREATED } else { StatusCode::OK };
     let location = document.model.as_ref().and_then(|id| HeaderValue::try_from(format!("/v1/models/{id}")).ok());
     let Document { body, .. } = document;
-    let mut response = json(status, body);
+    let mut response = json(StatusCode::OK, body);
     if let Ok(value) = HeaderValue::try_from(timing) {
         response.headers_mut().insert(SERVER_TIMING, value);
     }

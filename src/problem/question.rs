@@ -346,12 +346,35 @@ pub struct Latency {
 }
 
 /// Optional parts of the answer.
-#[derive(Debug, Clone, Copy, PartialEq, Eq, Default)]
+#[derive(Debug, Clone, Copy, PartialEq, Default)]
 pub struct Include {
     /// The assembled problem with named rows and columns.
     pub problem: bool,
     /// Mass matrix, bias, Jacobians.
     pub dynamics: bool,
+    /// Where nothing is feasible: least relaxation, what each limit alone would need, an irreducible set, the answer
+    /// at the relaxation.
+    pub explain: bool,
+    /// The range of every torque, acceleration and wrench that the question leaves open.
+    pub uniqueness: bool,
+    /// Derivatives by stiffness, damping and friction.
+    pub sensitivity: bool,
+    /// Spread under uncertain stiffness and damping.
+    pub spread: Option<SpreadAim>,
+}
+
+/// How uncertain stiffness and damping are.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct SpreadAim {
+    /// Covariance of the relative errors (of k, of b), symmetric and positive semidefinite: `[[0.04, 0], [0, 0.01]]` is
+    /// 20 % on k and 10 % on b. Normal and tangential values move together.
+    pub covariance: [[f64; 2]; 2],
+    /// True: the same error under every sole. False: every sole has its own, independent of the others.
+    pub shared: bool,
+    /// Seeded samples besides the sigma points, bounded by `explain::spread::MOST_SAMPLES`; zero for none.
+    pub samples: usize,
+    /// Seed of the samples.
+    pub seed: u64,
 }
 
 /// A state whose rigid-body terms are wanted.

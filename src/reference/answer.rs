@@ -2,6 +2,10 @@
 
 use crate::certify::Certificate;
 use crate::conic::Hierarchy;
+use crate::explain::infeasible::Explanation;
+use crate::explain::sensitivity::Sensitivity;
+use crate::explain::spread::Spread;
+use crate::explain::uniqueness::Uniqueness;
 use crate::spatial::{Vec3, Wrench};
 
 /// How a request ended. All of these are answers; none is an error.
@@ -61,6 +65,42 @@ pub struct Answer {
     pub problem: Option<Box<Hierarchy>>,
     /// Rigid-body terms, on request.
     pub dynamics: Option<Box<DynamicsReport>>,
+    /// Why nothing is feasible, on request.
+    pub explained: Option<Box<Explained>>,
+    /// What the question leaves open, on request.
+    pub uniqueness: Option<Box<Uniqueness>>,
+    /// Derivatives by the ground, on request.
+    pub sensitivity: Option<Box<Sensitivity>>,
+    /// Spread under uncertain ground, on request.
+    pub spread: Option<Box<Spread>>,
+}
+
+/// Why nothing is feasible, and what the answer would be with the least more allowed.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Explained {
+    /// Proof, least relaxation, single limits, irreducible set.
+    pub explanation: Explanation,
+    /// The answer with every limit relaxed by the least relaxation; none where physics contradicts itself.
+    pub relaxed: Option<RelaxedAnswer>,
+}
+
+/// The answer at the least relaxation.
+#[derive(Debug, Clone, PartialEq)]
+pub struct RelaxedAnswer {
+    /// How that solve ended. `Solved` here means that every level's optimality is certified over the relaxed limits.
+    pub status: Status,
+    /// What every limit that gives way was granted beyond the least relaxation, relative to its natural size.
+    pub slack: f64,
+    /// Torques and accelerations.
+    pub motion: Motion,
+    /// Soles.
+    pub soles: Vec<SoleAnswer>,
+    /// Tasks.
+    pub tasks: Vec<TaskAnswer>,
+    /// Priorities.
+    pub levels: Vec<LevelAnswer>,
+    /// Room left to the limits as asked for: negative where they gave way.
+    pub margins: Vec<Margin>,
 }
 
 /// Torques and accelerations.

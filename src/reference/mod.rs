@@ -5,6 +5,7 @@
 
 pub mod answer;
 mod dynamics;
+mod extras;
 mod ground;
 mod latency;
 mod limits;
@@ -15,6 +16,7 @@ use std::sync::atomic::AtomicBool;
 
 use crate::certify;
 use crate::contact::{ContactError, Law, Rest};
+use crate::explain::ExplainError;
 use crate::problem::question::{DynamicsQuestion, Question};
 use crate::problem::scene::{Scene, SceneError};
 use crate::problem::{Assembly, assemble};
@@ -26,6 +28,9 @@ pub use latency::Response;
 pub const TICK_WARNING: f64 = 0.3;
 /// Above this share of the normal force the linearisation error is warned about.
 pub const LINEARISATION_WARNING: f64 = 0.01;
+
+/// Largest stated error (scaled) of a level that Newton refinement did not confirm, for an answer to count as solved.
+pub const UNREFINED_BOUND: f64 = 1e-8;
 
 /// Why a valid question has no answer at all.
 #[derive(Debug, Clone, PartialEq, thiserror::Error)]
@@ -39,6 +44,9 @@ pub enum Trouble {
     /// The solver refused its input: a mistake of ours.
     #[error("the assembled problem was refused: {0}")]
     Solver(#[from] SolveError),
+    /// What was to be explained could not be.
+    #[error(transparent)]
+    Explain(#[from] ExplainError),
 }
 
 impl Trouble {
@@ -65,13 +73,24 @@ pub(crate) struct Work {
 
 /// Answers `question`. Setting `cancel` ends the work early with [`Status::Cancelled`].
 pub fn solve(question: &Question, cancel: &Arc<AtomicBool>) -> Result<Answer, Trouble> {
+    let work = work(question, cancel)?;
+    let mut answer = answer(&work);
+    extras::add(&mut answer, question, &work, cancel)?;
+    Ok(answer)
+}
+
+fn work(question: &Question, cancel: &Arc<AtomicBool>) -> Result<Work, Trouble> {
+    let (question, scene, assembly) = assembled(question, cancel)?;
+    let solution = solve::solve(&assembly.hierarchy, &solve::Options::default(), Some(cancel))?;
+    Ok(Work { question, scene, assembly, solution })
+}
+
+fn assembled(question: &Question, cancel: &Arc<AtomicBool>) -> Result<(Question, Scene, Assembly), Trouble> {
     let question = latency::predict(question)?;
     let scene = Scene::new(&question)?;
     let violations = limits::vertex_violations(&question, &scene, cancel)?;
     let assembly = assemble(&question, &scene, &violations);
-    let solution = solve::solve(&assembly.hierarchy, &solve::Options::default(), Some(cancel))?;
-    let work = Work { question, scene, assembly, solution };
-    Ok(answer(work))
+    Ok((question, scene, assembly))
 }
 
 /// What given torques (joint order, N m or N) lead to over `question`'s tick, by its rule. A latency in the question is not
@@ -95,39 +114,45 @@ pub fn dynamics(question: &DynamicsQuestion) -> DynamicsReport {
     dynamics::report(model, &question.state, &question.velocity_axes, &question.gravity, &places)
 }
 
-fn answer(work: Work) -> Answer {
+fn answer(work: &Work) -> Answer {
     let mut warnings = Vec::new();
     let ground = ground::report(&work.question, &work.scene);
     let found = match work.solution.status {
         solve::Status::Infeasible | solve::Status::Cancelled => None,
-        _ => Some(report::Found::new(&work)),
+        _ => Some(report::Found::new(work)),
     };
-    let certificate = found.as_ref().map(|found| found.certify(&work));
+    let certificate = found.as_ref().map(|found| found.certify(work));
     let status = status(&work.solution, certificate.as_ref());
     ground_warnings(&work.question, &ground, &mut warnings);
-    let soles = report::soles(&work, found.as_ref());
+    let soles = report::soles(work, found.as_ref());
     linearisation_warnings(&soles, &mut warnings);
     Answer {
         status,
-        motion: found.as_ref().map(|f| f.motion(&work)),
-        tasks: report::tasks(&work, found.as_ref()),
-        levels: if found.is_some() { report::levels(&work) } else { Vec::new() },
-        binding: if found.is_some() { report::binding(&work) } else { Vec::new() },
-        margins: found.as_ref().map(|f| limits::margins(&work, f)).unwrap_or_default(),
-        free: if found.is_some() { report::free(&work) } else { Vec::new() },
-        blocking: report::blocking(&work),
+        motion: found.as_ref().map(|f| f.motion(work)),
+        tasks: report::tasks(work, found.as_ref()),
+        levels: if found.is_some() { report::levels(work) } else { Vec::new() },
+        binding: if found.is_some() { report::binding(work) } else { Vec::new() },
+        margins: found.as_ref().map(|f| limits::margins(work, f)).unwrap_or_default(),
+        free: if found.is_some() { report::free(work) } else { Vec::new() },
+        blocking: report::blocking(work),
         dynamics: work.question.include.dynamics.then(|| Box::new(dynamics_of(&work.question))),
         problem: work.question.include.problem.then(|| Box::new(work.assembly.hierarchy.clone())),
         soles,
         certificate,
         ground,
         warnings,
+        explained: None,
+        uniqueness: None,
+        sensitivity: None,
+        spread: None,
     }
 }
 
-/// `Solved` is only said when the certificate holds.
+/// `Solved` is only said when the certificate holds and every level was either sharpened by Newton steps or comes with a bound on
+/// its error that meets the same target: a level that is nearly flat can pass the optimality figures and yet be far off.
 fn status(solution: &HierarchySolution, certificate: Option<&certify::Certificate>) -> Status {
-    let holds = certificate.is_some_and(|c| c.holds);
+    let sharp = solution.levels.iter().all(|level| level.refined || level.bound <= UNREFINED_BOUND);
+    let holds = sharp && certificate.is_some_and(|c| c.holds);
     match solution.status {
         solve::Status::Infeasible => Status::Infeasible,
         solve::Status::Cancelled => Status::Cancelled,
@@ -162,6 +187,18 @@ fn ground_warnings(question: &Question, ground: &answer::GroundReport, warnings:
                 rocking.bed, rocking.weight
             ),
         });
+    }
+    for contact in &question.contacts {
+        let rigid = matches!(contact.ground.law, Law::Rigid { .. });
+        if rigid && contact.ground.measured.is_none() && contact.wrench_rate.is_some() {
+            warnings.push(Warning {
+                code: "wrench-rate-unused",
+                text: format!(
+                    "{}: the rate of the wrench is not limited, because the present wrench on a rigid sole is only known when it is measured",
+                    question.model.soles[contact.sole].name
+                ),
+            });
+        }
     }
     let modelled_now = question.contacts.iter().any(|c| {
         matches!(c.ground.law, Law::Bonded(_)) && c.ground.measured.is_none() && !matches!(c.ground.rest, Rest::Carries(_))

@@ -92,7 +92,7 @@ impl Found {
     }
 }
 
-fn proof(level: &LevelOutcome) -> LevelProof {
+pub(super) fn proof(level: &LevelOutcome) -> LevelProof {
     LevelProof {
         priority: level.priority,
         system: level.system.rows.clone(),

@@ -8,8 +8,8 @@ use super::faces::{ensure_interior, interior_program};
 use super::free::free_directions;
 use super::infeasible::{certify, certify_equality, project_dual};
 use super::level::{LevelData, LevelProblem, assemble, assemble_reduced, reduce};
-use super::refine::{CONFIRMED, Mode, Point, Refined, classify, optimality, refine};
-use super::system::{Contradiction, Kind, Reduced, System};
+use super::refine::{CONFIRMED, Damping, Mode, Point, Refined, classify, optimality, refine};
+use super::system::{Contradiction, Kind, Part, Reduced, System, inside};
 use crate::conic::Hierarchy;
 use std::sync::Arc;
 use std::sync::atomic::{AtomicBool, Ordering};
@@ -26,6 +26,8 @@ const TRUSTED: f64 = 1e-7;
 const FAR: f64 = 1e4;
 /// Weight of the pull that holds such a point, of the cost's.
 const PULL: f64 = 1e-8;
+/// What holds at the final point must hold this well (scaled, per unit of row length and value) for the answer to count as solved.
+const HELD: f64 = 1e-8;
 /// How often the first level is solved anew because its set had no interior.
 const MAX_RESTARTS: usize = 4;
 
@@ -111,6 +113,7 @@ pub fn solve(
         Ok(()) => cascade.descend(&mut answer),
         Err(contradiction) => Err(cascade.contradicted(contradiction)),
     };
+    let moved = outcome.is_ok() && cascade.moved(&answer.levels);
     answer.x = cascade.system.x;
     answer.hard_faces = cascade.hard_faces;
     answer.bound = cascade.x_bound;
@@ -122,7 +125,7 @@ pub fn solve(
             Status::Infeasible
         }
         Err(Stop::Infeasible(_)) => Status::Inaccurate,
-        Ok(()) if cascade.inaccurate => Status::Inaccurate,
+        Ok(()) if cascade.inaccurate || moved => Status::Inaccurate,
         Ok(()) if cascade.ill_posed => Status::IllPosed,
         Ok(()) => Status::Solved,
     };
@@ -149,6 +152,26 @@ impl Cascade<'_> {
         answer.tie_break = Some(self.report(&data, &solved));
         self.move_to(&solved);
         Ok(())
+    }
+
+    /// Whether the final point breaks a row or has lost what a level reached: faces read off a point that refinement did not
+    /// sharpen may be off by enough, over rows that nearly depend on each other, to carry it away.
+    fn moved(&self, levels: &[LevelOutcome]) -> bool {
+        let system = &self.system;
+        let broken = system.blocks.iter().filter(|block| block.part != Part::Retired).any(|block| {
+            let rows = block.first..block.first + block.len;
+            let s: Vec<f64> = rows.clone().map(|i| system.rhs[i] - system.matrix.row_dot(i, &system.x)).collect();
+            let length = rows.map(|i| system.row_length(i) + system.rhs[i].abs()).fold(1.0, f64::max);
+            inside(block.kind, &s) < -HELD * length
+        });
+        let lost = self.hierarchy.levels.iter().zip(levels).any(|(level, outcome)| {
+            let rows = &level.residuals;
+            outcome.residual.iter().enumerate().any(|(i, reached)| {
+                let length = rows.matrix.row(i).fold(1.0 + rows.rhs[i].abs(), |sum, (_, v)| sum + v.abs());
+                (rows.matrix.row_dot(i, &system.x) - rows.rhs[i] - reached).abs() > HELD * length
+            })
+        });
+        broken || lost
     }
 
     fn cancelled(&self) -> bool {
@@ -222,11 +245,11 @@ impl Cascade<'_> {
         Err(Stop::Infeasible(None))
     }
 
-    /// Newton steps from the point of the level before, or from the shortest point where nothing is unequal.
+    /// Newton steps from the point of the level before, or from the shortest point that meets the equalities. The optimality
+    /// conditions prove the optimum whether or not the set has an interior, so this needs no engine where few rows are active.
     fn without_engine(&self, problem: &LevelProblem) -> Option<Solved> {
         let unconstrained = problem.sets.blocks.is_empty();
-        let tried = self.options.warm && self.interior_known;
-        if !(unconstrained || tried) {
+        if !(unconstrained || self.options.warm) {
             return None;
         }
         let d = problem.sets.d;
@@ -235,7 +258,7 @@ impl Cascade<'_> {
             z: vec![0.0; problem.sets.at.len()],
             modes: vec![Mode::Off; problem.sets.blocks.len()],
         };
-        let refined = refine(problem, start, if unconstrained { 1 } else { WARM_ROUNDS });
+        let refined = refine(problem, start, if unconstrained { 1 } else { WARM_ROUNDS }, Damping::None);
         ((refined.confirmed && refined.optimality.worst() <= WARM) || unconstrained).then(|| Solved {
             problem: LevelProblem::default(),
             point: refined.point,
@@ -285,7 +308,11 @@ impl Cascade<'_> {
             }
         }
         let engine = optimality(&problem, &u, &z);
-        let refined = refine(&problem, classify(&problem, u.clone(), z.clone()), ROUNDS);
+        let identified = classify(&problem, u.clone(), z.clone());
+        let mut refined = refine(&problem, identified.clone(), ROUNDS, Damping::None);
+        if !refined.confirmed {
+            refined = refine(&problem, identified, ROUNDS, Damping::ByResidual);
+        }
         if refined.confirmed && refined.optimality.worst() <= engine.worst() {
             let Refined { point, optimality, bound, cost_pivot, .. } = refined;
             return Ok(Some(Solved { problem, point, optimality, refined: true, trusted: true, bound, cost_pivot, iterations }));

@@ -62,6 +62,12 @@ impl Factor {
             for &other in &left {
                 let column = &mut work[other * d + step..(other + 1) * d];
                 let along = tau * dot(v, column);
+                if along == 0.0 {
+                    // Sparse rows share few columns, so most reflections do not touch them.
+                    let head = column[0];
+                    square[other] = (square[other] - head * head).max(0.0);
+                    continue;
+                }
                 axpy(-along, v, column);
                 square[other] = (square[other] - column[0] * column[0]).max(0.0);
             }
@@ -241,6 +247,12 @@ impl Subspace {
 
     /// `N' a` of a sparse row.
     pub fn project(&self, row: impl Iterator<Item = (usize, f64)> + Clone, out: &mut [f64]) {
+        if self.rank == 0 {
+            // Nothing appended yet: the basis is the identity.
+            out.fill(0.0);
+            row.for_each(|(j, v)| out[j] += v);
+            return;
+        }
         for (c, o) in out.iter_mut().enumerate() {
             let column = self.null(c);
             *o = row.clone().map(|(j, v)| v * column[j]).sum();

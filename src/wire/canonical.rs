@@ -5,6 +5,7 @@
 //! escapes (section 3.2.2.2).
 
 use std::borrow::Cow;
+use std::cmp::Ordering;
 use std::fmt;
 
 use serde::de::{Deserialize, Deserializer, Error, MapAccess, SeqAccess, Visitor};
@@ -68,7 +69,7 @@ impl Node<'_> {
                 out.push(']');
             }
             Node::Object(members) => {
-                members.sort_by(|a, b| a.0.encode_utf16().cmp(b.0.encode_utf16()));
+                members.sort_by(|a, b| by_utf16(&a.0, &b.0));
                 out.push('{');
                 for (i, (name, value)) in members.drain(..).enumerate() {
                     if i > 0 {
@@ -85,9 +86,20 @@ impl Node<'_> {
     }
 }
 
+/// The order of UTF-16 code units, which for ASCII is that of the bytes.
+fn by_utf16(a: &str, b: &str) -> Ordering {
+    if a.is_ascii() && b.is_ascii() { a.cmp(b) } else { a.encode_utf16().cmp(b.encode_utf16()) }
+}
+
 /// The JSON writer escapes as the canonical form wants it: `\b \t \n \f \r \" \\`, other control
 /// characters as `\u00xx` in lower case, everything else as it is.
 fn write_text(text: &str, out: &mut String) -> Option<()> {
+    if text.bytes().all(|byte| byte >= b' ' && byte != b'"' && byte != b'\\') {
+        out.push('"');
+        out.push_str(text);
+        out.push('"');
+        return Some(());
+    }
     out.push_str(&serde_json::to_string(text).ok()?);
     Some(())
 }

@@ -241,6 +241,7 @@ impl ContactBody {
         if body.axes != Some(WrenchAxes::Sole) || !gate.clean() {
             return Some(wrench);
         }
+        // Only a state that was found good fits the model, which the kinematics rely on.
         let mut workspace = Workspace::new(scene.model);
         workspace.update(scene.model, scene.state, &Vec3::zeros());
         let pose = frame_pose(scene.model, &workspace, sole.body, &sole.placement);

@@ -119,6 +119,11 @@ impl Gate {
         Vec3::z()
     }
 
+    /// True once no more faults are kept.
+    pub(super) fn is_full(&self) -> bool {
+        self.faults.len() >= MAX_FAULTS
+    }
+
     /// True while nothing was wrong.
     pub(super) fn clean(&self) -> bool {
         self.faults.is_empty()

@@ -9,11 +9,11 @@ use super::kinds::{KindRule, KindTable, given};
 use super::state::joint_index;
 use super::strict::MAX_MAGNITUDE;
 use super::treatment::{TreatmentBody, treatment};
-use crate::model::{Joint, Model};
+use crate::model::{Joint, MAX_MOVING_JOINTS, Model};
 use crate::problem::question::{Limit, LimitKind, Tick};
 
-/// Joints one limit or task may list.
-pub(super) const MAX_JOINTS: usize = 200;
+/// Joints one list may hold: as many as a model can have.
+pub(super) const MAX_JOINTS: usize = MAX_MOVING_JOINTS;
 /// The longest horizon of a joint limit (s).
 const MAX_HORIZON: f64 = 10.0;
 /// Ticks the horizon spans where the request gives none.

@@ -46,6 +46,14 @@ fn paths() -> Value {
         "/health": { "get": get(
             "health", "Says that the service runs", None, "application/json", json!({ "type": "object" }), &[]
         ) },
+        "/schemas": { "get": get(
+            "listSchemas", "Names of all schemas", None, "application/json",
+            json!({
+                "type": "object", "required": ["schemas"],
+                "properties": { "schemas": { "type": "array", "items": { "type": "string" } } },
+            }),
+            &[]
+        ) },
         "/schemas/{name}": { "get": get(
             "getSchema", "JSON Schema of a document", Some("name"), "application/schema+json",
             json!({ "type": "object" }), &[404]
@@ -58,8 +66,8 @@ fn paths() -> Value {
 
 fn post(id: &str, summary: &str, request: &str, answer: &str, good: &str) -> Value {
     let statuses: &[u16] = match request {
-        "ModelRequest" => &[400, 403, 405, 413, 415, 421, 422, 503, 504],
-        _ => &[400, 403, 404, 405, 413, 415, 421, 422, 503, 504],
+        "ModelRequest" => &[400, 403, 405, 408, 413, 415, 421, 422, 503, 504],
+        _ => &[400, 403, 404, 405, 408, 413, 415, 421, 422, 503, 504],
     };
     json!({
         "operationId": id,
@@ -80,7 +88,7 @@ fn get(
     schema: Value,
     statuses: &[u16],
 ) -> Value {
-    let mut all = vec![403, 405, 421];
+    let mut all = vec![400, 403, 405, 421];
     all.extend(statuses);
     all.sort_unstable();
     let mut operation = json!({
@@ -118,10 +126,11 @@ fn responses(good: &str, media: &str, schema: Value, statuses: &[u16]) -> Value 
 
 fn meaning(status: u16) -> &'static str {
     match status {
-        400 => "Not JSON, a member named twice, nested too deep, or a number beyond a double.",
+        400 => "Not JSON, a member named twice, nested too deep, or a number beyond a double; or a malformed Host header.",
         403 => "The request comes from a page of another origin.",
         404 => "No such model or schema; send the model again.",
         405 => "The path exists, but not with this method.",
+        408 => "The body came too slowly.",
         413 => "The body is too large.",
         415 => "The body is not declared as application/json.",
         421 => "The Host header names another host.",

@@ -13,7 +13,7 @@ use super::refusal::{Fault, Refusal};
 const MAX_DEPTH: usize = 32;
 
 /// Values (of any kind) that are looked at one by one; a larger document is not.
-const MAX_VALUES: usize = 100_000;
+const MAX_VALUES: usize = 20_000;
 
 /// Why a body gave no value.
 pub(super) enum Failure {

@@ -182,7 +182,9 @@ struct LevelCheckOut {
     complementarity: Number,
     /// Largest distance of a multiplier from its dual cone, relative (no unit).
     dual_violation: Number,
-    /// The bound all three have to meet (no unit).
+    /// Largest excess over a row the level had to obey, relative (no unit).
+    feasibility: Number,
+    /// The bound all four have to meet (no unit).
     bound: Number,
 }
 
@@ -201,6 +203,7 @@ impl<'a> CertificateOut<'a> {
             stationarity: Number(level.stationarity),
             complementarity: Number(level.complementarity),
             dual_violation: Number(level.dual_violation),
+            feasibility: Number(level.feasibility),
             bound: Number(level.bound),
         };
         CertificateOut {

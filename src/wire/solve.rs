@@ -78,7 +78,7 @@ struct TickBody {
     /// Length T, 1e-6 to 1 (s).
     length: f64,
     /// How the wrench over the tick follows from the acceleration (no unit): `backward_euler`
-    /// (default), `trapezoid` or `explicit`.
+    /// (default), `trapezoid`, `explicit` or `held` (the contact motion of all soft soles solved exactly).
     rule: Option<RuleBody>,
 }
 
@@ -90,6 +90,7 @@ enum RuleBody {
     BackwardEuler,
     Trapezoid,
     Explicit,
+    Held,
 }
 
 /// Optional parts of an answer.
@@ -214,6 +215,7 @@ impl TickBody {
             None | Some(RuleBody::BackwardEuler) => TickRule::BackwardEuler,
             Some(RuleBody::Trapezoid) => TickRule::Trapezoid,
             Some(RuleBody::Explicit) => TickRule::Explicit,
+            Some(RuleBody::Held) => TickRule::Held,
         };
         // A tick that was refused still has to serve the checks that follow.
         let length = if length > 0.0 { length } else { TICK.1 };
@@ -279,5 +281,6 @@ fn include(words: &[IncludeBody]) -> Include {
     Include {
         problem: words.iter().any(|word| matches!(word, IncludeBody::Problem)),
         dynamics: words.iter().any(|word| matches!(word, IncludeBody::Dynamics)),
+        ..Include::default()
     }
 }

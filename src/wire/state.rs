@@ -5,6 +5,7 @@ use serde::Deserialize;
 
 use super::common::pose;
 use super::gate::{At, Gate, listed, quoted};
+use super::limit::MAX_JOINTS;
 use crate::dynamics::axes::{Axes, VelocityAxes};
 use crate::model::{BaseKind, Model, State};
 use crate::spatial::{Twist, Vec3};
@@ -119,6 +120,9 @@ impl StateBody {
             }
             Some(joints) => {
                 let list = at.name("joints");
+                if !gate.at_most(list, joints.len(), MAX_JOINTS, "joints") {
+                    return (Vec::new(), Vec::new());
+                }
                 for (i, joint) in joints.iter().enumerate() {
                     let entry = list.index(i);
                     let values = [joint.position, joint.velocity.unwrap_or(0.0)];
@@ -149,6 +153,9 @@ impl StateBody {
             gate.fault(at.name("velocities"), "one velocity for each of names", got);
         }
         let list = at.name("names");
+        if !gate.at_most(list, names.len(), MAX_JOINTS, "joints") {
+            return;
+        }
         for (i, name) in names.iter().enumerate() {
             let velocity = self.velocities.as_ref().and_then(|v| v.get(i).copied());
             let values = [positions.get(i).copied().unwrap_or(0.0), velocity.unwrap_or(0.0)];
@@ -207,7 +214,7 @@ pub(super) fn joint_index(
         return Some(guess);
     }
     let index = model.joint(name);
-    if index.is_none() {
+    if index.is_none() && !gate.is_full() {
         let known = listed(model.joints.iter().map(|joint| joint.name.as_str()));
         gate.fault(at, format!("the name of a moving joint: {known}"), quoted(name));
     }
@@ -217,7 +224,7 @@ pub(super) fn joint_index(
 /// Index of a frame (link) by name.
 pub(super) fn frame_index(gate: &mut Gate, at: At<'_>, model: &Model, name: &str) -> Option<usize> {
     let index = model.frame(name);
-    if index.is_none() {
+    if index.is_none() && !gate.is_full() {
         let known = listed(model.frames.iter().map(|frame| frame.name.as_str()));
         gate.fault(at, format!("the name of a link: {known}"), quoted(name));
     }

@@ -40,16 +40,21 @@ fn engine_default(hierarchy: &Hierarchy) -> f64 {
     let level = &hierarchy.levels[0];
     let (n, r) = (hierarchy.columns.len(), level.residuals.rhs.len());
     let (mut rows, mut cols, mut values, mut rhs) = (vec![], vec![], vec![], vec![]);
+    let mut entry = |i: usize, j: usize, v: f64| {
+        rows.push(i);
+        cols.push(j);
+        values.push(v);
+    };
     for i in 0..r {
         for (j, v) in level.residuals.matrix.row(i) {
-            (rows.push(i), cols.push(j), values.push(v));
+            entry(i, j, v);
         }
-        (rows.push(i), cols.push(n + i), values.push(-1.0));
+        entry(i, n + i, -1.0);
         rhs.push(level.residuals.rhs[i]);
     }
     for i in 0..hierarchy.hard.rhs.len() {
         for (j, v) in hierarchy.hard.matrix.row(i) {
-            (rows.push(r + i), cols.push(j), values.push(v));
+            entry(r + i, j, v);
         }
         rhs.push(hierarchy.hard.rhs[i]);
     }

@@ -25,9 +25,8 @@ import scipy.sparse as sparse
 
 Array = np.ndarray
 RANK = 1e-9  # relative threshold of the rank decisions; the rows are scaled to order one
-PROXIMAL = 1e-6  # weight of the proximal term that makes a level strictly convex
 SWEEPS = 60  # bound on proximal steps
-ROOM = 1e-11  # by which the active-set solver sees limits relaxed
+ROOM = (1e-11, 1e-9, 1e-7)  # by which the active-set solver sees limits relaxed
 FEASIBLE = 1e-8  # by which a limit that cannot move any more may be exceeded
 
 
@@ -137,8 +136,12 @@ def null_space(a: Array, b: Array) -> tuple[Array, Array]:
     return x, vt[rank:].T
 
 
-def solve(problem: Problem, method: str) -> Outcome:
-    """Lexicographic optimum, level after level in the null space of what is frozen."""
+def solve(problem: Problem, method: str, proximal: tuple[float, ...] = (1e-6, 1e-8, 1e-10)) -> Outcome:
+    """Lexicographic optimum, level after level in the null space of what is frozen.
+
+    `proximal`: weights, relative to the largest curvature, of the term that makes a level strictly convex; each is tried
+    and the feasible point of least cost kept.
+    """
     rows, levels, _ = lift(problem)
     (ea, eb), (la, lb), blocks = split(rows)
     x0, z = null_space(ea, eb)
@@ -153,7 +156,7 @@ def solve(problem: Problem, method: str) -> Outcome:
         root = np.sqrt(w)[:, None]
         h_a, h_b = root * a @ z, (root[:, 0]) * (b - a @ x0)
         inside = la @ z, lb - la @ x0, [(ba @ z, bb - ba @ x0) for ba, bb in blocks]
-        y, residual = minimise(h_a, h_b, *inside, z.T @ (x - x0), method)
+        y, residual = minimise(h_a, h_b, *inside, z.T @ (x - x0), method, proximal)
         worst = max(worst, residual)
         x = x0 + z @ y
         costs.append(float((w * (a @ x - b) ** 2).sum()))
@@ -176,7 +179,7 @@ def faces(a: Array, b: Array, inside, y: Array, outside) -> tuple[Array, Array, 
     la, lb, blocks = inside
     rows, edge, apex = touching(la, lb, blocks, y, 1e-8)
     cost = a.T @ (a @ y - b)
-    least = 1e-7 * max(1.0, float(np.abs(a.T @ b).max(initial=0.0)))
+    least = 1e-9 * size_of(a, b, y)
     smooth = gradients(la, blocks, y, (rows, edge, []))
     around = [_circle(len(blocks[i][0]) - 1) for i in apex]
     generators = np.vstack([smooth] + [blocks[i][0][0] + d @ blocks[i][0][1:] for i, d in zip(apex, around)])
@@ -216,7 +219,7 @@ def _ray(held: list, more: list, block, direction: Array) -> None:
     more.append((ba[0], bb[0]))
 
 
-def minimise(a: Array, b: Array, la: Array, lb: Array, blocks, start: Array, method: str) -> tuple[Array, float]:
+def minimise(a: Array, b: Array, la: Array, lb: Array, blocks, start: Array, method: str, proximal: tuple[float, ...]) -> tuple[Array, float]:
     """min |a y - b|^2 subject to la y <= lb and the cone blocks; returns y and the residual of the optimality conditions.
 
     Where the cost is flat, a proximal term makes it strictly convex; the proximal steps are repeated until y rests.
@@ -226,18 +229,34 @@ def minimise(a: Array, b: Array, la: Array, lb: Array, blocks, start: Array, met
     assert (lb[~alive] > -FEASIBLE).all(), "a frozen limit is violated"
     la, lb = la[alive], lb[alive]
     blocks = [(ba, bb) for ba, bb in blocks if np.abs(ba).max(initial=0.0) > RANK]
+    # Residuals that are decided already.
+    open_rows = np.abs(a).max(axis=1, initial=0.0) > RANK
+    a, b = a[open_rows], b[open_rows]
+    if not len(b):
+        return start, violation(la, lb, blocks, start)
     h = a.T @ a
-    y = start.copy()
-    curvature = max(1e-300, np.abs(np.diag(h)).max()) if len(h) else 1.0
-    dual = np.zeros(len(lb) + sum(len(bb) for _, bb in blocks))
-    for _ in range(SWEEPS):
-        p = h + PROXIMAL * curvature * np.eye(len(y))
-        q = -(a.T @ b) - PROXIMAL * curvature * y
-        last = y
-        y, dual = quadratic(p, q, la, lb, blocks, method)
-        if np.abs(y - last).max() < 1e-12 * max(1.0, np.abs(y).max()):
-            break
-    return polish(a, b, la, lb, blocks, y, dual / curvature)
+    curvature = np.abs(np.diag(h)).max()
+    found = []
+    for weight in proximal:
+        y, dual = start.copy(), None
+        try:
+            for _ in range(SWEEPS):
+                last = y
+                y, dual = quadratic(h + weight * curvature * np.eye(len(y)), -(a.T @ b) - weight * curvature * y, la, lb, blocks, method)
+                if np.abs(y - last).max() < 1e-12 * max(1.0, np.abs(y).max()):
+                    break
+        except ValueError:
+            # The active-set solver gives up on degenerate corners when the curvature is small.
+            continue
+        if np.isfinite(y).all():
+            y, score = polish(a, b, la, lb, blocks, y, dual / curvature)
+            cost = float(((a @ y - b) ** 2).sum())
+            # Steps of 1e-12 of the data's size count as equal, then the better conditions decide.
+            step = 1e-12 * max(1e-12, float((b**2).sum()))
+            found.append((violation(la, lb, blocks, y) > 1e-10, round(cost / step), score, len(found), y))
+    assert found, f"no proximal weight of {proximal} led anywhere"
+    best = min(found, key=lambda entry: entry[:4])
+    return best[4], best[2]
 
 
 def quadratic(p: Array, q: Array, la: Array, lb: Array, blocks, method: str) -> tuple[Array, Array]:
@@ -247,8 +266,13 @@ def quadratic(p: Array, q: Array, la: Array, lb: Array, blocks, method: str) -> 
         if not len(lb):
             return np.linalg.solve(p, -q), np.zeros(0)
         # A hair of room, so that rounding does not make frozen limits contradict each other; polishing removes it.
-        out = quadprog.solve_qp(p, -q, -la.T, -(lb + ROOM))
-        return out[0], out[4]
+        for room in ROOM:
+            try:
+                out = quadprog.solve_qp(p, -q, -la.T, -(lb + room))
+                return out[0], out[4]
+            except ValueError:
+                continue
+        raise ValueError("the active-set solver found its own limits inconsistent")
     return cone_solver(p, q, la, lb, blocks)
 
 
@@ -372,16 +396,13 @@ def optimality(a: Array, b: Array, la: Array, lb: Array, blocks, y: Array) -> fl
     The normal cone is generated by the gradients of what touches; at a cone's apex by the edges of the dual cone, whose
     circle is sampled and then refined around the edges in use, so that the distance found is never too small.
     """
-    violation = max(0.0, float((la @ y - lb).max(initial=0.0)))
-    for ba, bb in blocks:
-        s = bb - ba @ y
-        violation = max(violation, float(np.linalg.norm(s[1:]) - s[0]))
+    outside = violation(la, lb, blocks, y)
     rows, edge, apex = touching(la, lb, blocks, y, 1e-7)
     cost = a.T @ (a @ y - b)
-    scale = max(1.0, float(np.abs(a.T @ b).max(initial=0.0)))
+    scale = size_of(a, b, y)
     smooth = gradients(la, blocks, y, (rows, edge, []))
     if not apex:
-        return max(violation, distance(smooth, cost)[0] / scale)
+        return max(outside, distance(smooth, cost)[0] / scale)
     directions = [_circle(len(blocks[i][0]) - 1) for i in apex]
     best = np.inf
     for zoom in range(6):
@@ -399,7 +420,21 @@ def optimality(a: Array, b: Array, la: Array, lb: Array, blocks, y: Array) -> fl
             near = near.reshape(-1, d.shape[1])
             finer.append(np.vstack([d[::8], used, near / np.linalg.norm(near, axis=1)[:, None]]))
         directions = finer
-    return max(violation, best / scale)
+    return max(outside, best / scale)
+
+
+def violation(la: Array, lb: Array, blocks, y: Array) -> float:
+    """Largest violation of a limit."""
+    worst = max(0.0, float((la @ y - lb).max(initial=0.0)))
+    for ba, bb in blocks:
+        s = bb - ba @ y
+        worst = max(worst, float(np.linalg.norm(s[1:]) - s[0]))
+    return worst
+
+
+def size_of(a: Array, b: Array, y: Array) -> float:
+    """Size of the terms that make up the gradient a'(a y - b): what its rounding is measured against."""
+    return max(1e-12, float((np.abs(a).T @ (np.abs(a) @ np.abs(y) + np.abs(b))).max(initial=0.0)))
 
 
 def distance(generators: Array, cost: Array) -> tuple[float, Array]:

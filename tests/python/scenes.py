@@ -29,13 +29,13 @@ def state_of(stance: Stance, change=None) -> dict[str, Any]:
     )
 
 
-def tasks(stance: Stance, second_rate: bool = True, levels: bool = False) -> list[dict[str, Any]]:
-    """Balance before posture before effort: in strict order, or all at priority 1 with weights."""
+def tasks(stance: Stance, second_rate: bool = True, levels: bool = False, effort: float = 1e-4) -> list[dict[str, Any]]:
+    """Balance before posture before effort: in strict order, or all at priority 1 with weights (of effort: `effort`)."""
     names = stance.robot.joints
     stance.put()
     centre = stance.robot.terms().center_of_mass
     order = (1, 2, 3) if levels else (1, 1, 1)
-    weights = (1.0, 1.0, 1.0) if levels else (1.0, 1e-2, 1e-4)
+    weights = (1.0, 1.0, 1.0) if levels else (1.0, 1e-2, effort)
     if second_rate:
         balance = aims.momentum_second_rate(
             "balance",
@@ -66,7 +66,7 @@ def tasks(stance: Stance, second_rate: bool = True, levels: bool = False) -> lis
     ]
 
 
-def standing(client, model, stance: Stance | None = None, *, ground=None, facets=None, levels=False, second_rate=True, length=TICK, rule="backward_euler", friction=0.6, state=None, include=()) -> dict[str, Any]:
+def standing(client, model, stance: Stance | None = None, *, ground=None, facets=None, levels=False, second_rate=True, length=TICK, rule="backward_euler", friction=0.6, state=None, effort=1e-4, include=()) -> dict[str, Any]:
     """The walker on two feet. `ground`: from sole position and share of the weight to members of the contact."""
     stance = stance or walker_stance()
     stance.put()
@@ -90,6 +90,6 @@ def standing(client, model, stance: Stance | None = None, *, ground=None, facets
             for name, sole in zip(SOLES, stance.soles())
         ],
         limits=[limits.torque([(n, 150.0) for n in stance.robot.joints])],
-        tasks=tasks(stance, second_rate, levels),
+        tasks=tasks(stance, second_rate, levels, effort),
         include=list(include),
     )

@@ -15,6 +15,8 @@ import scenes
 from cases import walker_stance
 
 pytestmark = pytest.mark.campaign
+DECADES = (1e9, 1e10, 1e11, 1e12, 1e13)
+EFFORT = 1.0  # weight: the sharing of the load between the feet must not hang on a hair, or 1/k shows late
 
 
 @pytest.fixture(scope="module")
@@ -33,12 +35,12 @@ def stiff(k):
     return ground
 
 
-def gaps(client, walker, stance, rigid, first_rate):
-    reference = client.solve(scenes.standing(client, walker, stance, ground=lambda p, load: {"law": rigid}, second_rate=not first_rate))
+def gaps(client, walker, stance, rigid):
+    reference = client.solve(scenes.standing(client, walker, stance, ground=lambda p, load: {"law": rigid}, second_rate=False, effort=EFFORT))
     assert reference.solved, reference.document
     out = []
-    for k in (1e9, 1e10, 1e11, 1e12):
-        soft = client.solve(scenes.standing(client, walker, stance, ground=stiff(k), second_rate=not first_rate))
+    for k in DECADES:
+        soft = client.solve(scenes.standing(client, walker, stance, ground=stiff(k), second_rate=False, effort=EFFORT))
         assert soft.solved, (k, soft.document)
         out.append(float(np.abs(amounts(soft) - amounts(reference)).max()))
     return out, float(np.abs(amounts(reference)).max())
@@ -46,10 +48,10 @@ def gaps(client, walker, stance, rigid, first_rate):
 
 def test_stiff_ground_is_rigid_ground(client, walker, row):
     """Soles at rest: the gap to the rigid answer falls as 1/k."""
-    found, size = gaps(client, walker, walker_stance(), build.rigid(), first_rate=True)
-    row("k = 1e9, 1e10, 1e11, 1e12 N/m^3 against rigid, largest difference (N, N m)", ", ".join(f"{g:.1e}" for g in found))
+    found, size = gaps(client, walker, walker_stance(), build.rigid())
+    row("k = 1e9, 1e10, 1e11, 1e12, 1e13 N/m^3 against rigid, largest difference (N, N m)", ", ".join(f"{g:.1e}" for g in found))
     assert found[-1] < 1e-6 * size, found
-    assert found[1] < 0.2 * found[0] and found[2] < 0.2 * found[1], found
+    assert all(b < 0.15 * a for a, b in zip(found, found[1:])), found
 
 
 def test_stiff_ground_in_motion_is_the_stop(client, walker, row):
@@ -58,10 +60,10 @@ def test_stiff_ground_in_motion_is_the_stop(client, walker, row):
     nu = np.zeros(6 + len(stance.robot.joints))
     nu[:3] = [0.02, -0.01, -0.03]
     moving = type(stance)(stance.robot, type(stance.state)(stance.state.position, stance.state.orientation, stance.state.joints, nu), stance.links, stance.points)
-    found, size = gaps(client, walker, moving, build.rigid(stop=True), first_rate=True)
+    found, size = gaps(client, walker, moving, build.rigid(stop=True))
     row("the same in motion against `stop`", ", ".join(f"{g:.1e}" for g in found))
     assert found[-1] < 1e-5 * size, found
-    assert found[1] < 0.2 * found[0], found
+    assert all(b < 0.15 * a for a, b in zip(found, found[1:])), found
 
 
 def test_a_measured_wrench_equal_to_the_modelled_one_changes_nothing(client, walker, rng):

@@ -20,6 +20,7 @@ from physics_reference import Robot, Sample
 pytestmark = pytest.mark.campaign
 GROUND = {"normal_stiffness": 2e6, "tangential_stiffness": 1.4e6, "normal_damping": 2e4, "tangential_damping": 1.2e4}
 BLOCK_SOLE = np.array([[-0.11, -0.05], [0.11, -0.05], [0.11, 0.05], [-0.11, 0.05]])
+NEAR, SECOND = 3.0, 3.8  # least factor per halving from T = 0.2 / omega_max on (order 1.6), and of the last; 4 in the limit
 ARM = 0.05  # m: puts moments beside forces in one norm
 
 
@@ -84,10 +85,10 @@ def test_second_order_on_two_feet(client, walker, rng, factor, row, rule):
         torques = rng.uniform(-15, 15, len(stance.robot.joints))
         _, answer = predicted(client, walker, stance, rests, names, torques, 1e-4, rule)
         errors, found = ratios(client, walker, stance, rests, names, FOOT, torques, rule, 0.2 / omega_max(answer), 5)
-        # The last halvings are the ones the order shows in; the first may still bend.
-        assert all(3.4 < r < 4.8 for r in found[2:]), (errors, found)
+        # No slower than T^2; where the T^2 part is small, the T^3 part still shows.
+        assert min(found) > NEAR and found[-1] > SECOND, (errors, found)
         worst.append(found[-1])
-    row(f"one tick, walker, {rule}: a halving of T divides the error by", f"{min(worst):.2f} to {max(worst):.2f} (4 expected)")
+    row(f"one tick, walker, {rule}: a halving of T divides the error by", f"{min(worst):.2f} to {max(worst):.2f} (4 in the limit)")
 
 
 def block_stance(linear, angular):
@@ -105,6 +106,6 @@ def test_single_body_on_the_bed(client, row, rule, angular, order):
     _, answer = predicted(client, model, stance, rests, ["bottom"], np.zeros(0), 1e-4, rule)
     start = 0.2 / omega_max(answer)
     errors, found = ratios(client, model, stance, rests, ["bottom"], BLOCK_SOLE, np.zeros(0), rule, start, 4)
-    low, high = {2: (3.4, 4.8), 3: (7.0, 9.2)}[order]
-    row(f"one tick, single body, {rule}, rotating {any(angular)}: a halving of T divides the error by", f"{found[-1]:.2f} ({2**order} expected)")
-    assert all(low < r < high for r in found[1:]), (errors, found)
+    near, last = {2: (NEAR, SECOND), 3: (7.0, 7.8)}[order]
+    row(f"one tick, single body, {rule}, rotating {any(angular)}: a halving of T divides the error by", f"{found[-1]:.2f} ({2**order} in the limit)")
+    assert min(found) > near and found[-1] > last, (errors, found)

@@ -51,10 +51,21 @@ def torques(problem, outcome, joints):
     return np.array([named[f"torque:{j}"] for j in joints])
 
 
+def judged(answer, method):
+    """Largest relative gap to the checker's torques; None where two runs of the checker differ by more than the bound."""
+    problem = exported(answer.document["problem"])
+    outcome, again = (hierarchy.solve(problem, method, proximal) for proximal in ((1e-6, 1e-8, 1e-10), (1e-7, 1e-9)))
+    ours = torques(problem, outcome, answer.joints)
+    spread = np.abs(ours - torques(problem, again, answer.joints)).max() / max(1.0, np.abs(ours).max())
+    if max(outcome.residual, again.residual) > OUR_OPTIMALITY or spread > BOUND / 4:
+        return None
+    return np.abs(ours - answer.torques).max() / max(1.0, np.abs(answer.torques).max())
+
+
 @pytest.mark.parametrize("levels", [False, True], ids=["one level", "three levels"])
 @pytest.mark.parametrize(("facets", "method"), [(8, "active set"), (None, "cone"), ("wrench", "cone")], ids=["pyramid", "cones", "wrench set"])
 def test_torques_agree(client, walker, rng, factor, row, levels, facets, method):
-    worst, checked, statuses = 0.0, 0, {}
+    worst, checked, beyond, statuses = 0.0, 0, 0, {}
     for i in range(4 * factor):
         stance = walker_stance(rng, speed=0.1 * (i % 4) / 3, spread=0.1)
         friction = [0.6, 0.3, 0.1, 0.05][i % 4]
@@ -62,12 +73,25 @@ def test_torques_agree(client, walker, rng, factor, row, levels, facets, method)
         statuses[answer.status] = statuses.get(answer.status, 0) + 1
         if not answer.solved:
             continue
-        problem = exported(answer.document["problem"])
-        outcome = hierarchy.solve(problem, method)
-        assert outcome.residual < OUR_OPTIMALITY, f"the checker itself did not converge: {outcome.residual}"
-        gap = np.abs(torques(problem, outcome, answer.joints) - answer.torques).max() / max(1.0, np.abs(answer.torques).max())
+        gap = judged(answer, method)
+        if gap is None:
+            # Two runs of the checker that differ by more than the bound can judge nobody.
+            beyond += 1
+            continue
         worst = max(worst, gap)
         checked += 1
-        assert gap < BOUND, (i, gap, outcome.costs, [level["cost"] for level in answer.levels])
-    row(f"{facets or 'cones'}, {'three levels' if levels else 'one level'}: torques against {method}, {checked} solved of {statuses}", f"{worst:.1e}")
-    assert checked >= 2 * factor, statuses
+        assert gap < BOUND, (i, gap, [(level["cost"], level["refined"], level["error_bound"]) for level in answer.levels])
+    row(f"{facets or 'cones'}, {'three levels' if levels else 'one level'}: torques against {method}, {checked} of {statuses}, {beyond} beyond the checker", f"{worst:.1e}")
+    # At least half of the cases must have been judged, or this test says nothing.
+    assert checked >= 2 * factor, (statuses, checked, beyond)
+
+
+@pytest.mark.xfail(strict=True, reason="a level left without refinement is 0.06 % dearer than it need be, yet the answer says solved")
+def test_a_nearly_flat_first_level(client, walker):
+    """Kept from a campaign: friction .05 in motion, three levels. Both checkers agree with each other to 1e-8 here."""
+    rng = np.random.default_rng(5)
+    stance = [walker_stance(rng, speed=0.1 * i / 3, spread=0.1) for i in range(4)][-1]
+    answer = client.solve(scenes.standing(client, walker, stance, facets=8, levels=True, friction=0.05, include=("problem",)))
+    gap = judged(answer, "active set")
+    assert gap is not None, "the checker cannot judge this case any more"
+    assert not answer.solved or gap < BOUND, (gap, [(level["cost"], level["refined"], level["error_bound"]) for level in answer.levels])

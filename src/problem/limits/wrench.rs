@@ -102,7 +102,8 @@ fn split<const N: usize>(block: &Block<N>, first: usize, group: &str, treatment:
         .rows
         .iter()
         .map(|row| PhysicalRow {
-            entries: row.coefficients.iter().enumerate().map(|(k, c)| (first + k, -c)).collect(),
+            // Zeros are left out: under a point sole the rows over a moment have no columns to stand on.
+            entries: (first..).zip(row.coefficients).filter(|(_, c)| *c != 0.0).map(|(column, c)| (column, -c)).collect(),
             rhs: 0.0,
             part: format!("{prefix}{}", row.part),
             unit: row.unit,
