@@ -8,11 +8,18 @@ use std::sync::Arc;
 use serde_json::{Value, json};
 use underfoot::certify::{Certificate, Check, LevelCheck};
 use underfoot::conic::{Column, Cone, ConicRows, Hierarchy, Level, ResidualRows, RowName};
+use underfoot::explain::farkas::{Farkas, Multiplier};
+use underfoot::explain::infeasible::{Alone, Explanation, IrreducibleSet};
+use underfoot::explain::relax::{GroupRelaxation, Relaxation, RowRelaxation};
+use underfoot::explain::sensitivity::{Derivative, NearChange, Sensitivity};
+use underfoot::explain::spread::{Moments, Spread};
+use underfoot::explain::uniqueness::{Range, Uniqueness};
+use underfoot::explain::{Parameter, ParameterKind};
 use underfoot::model::Model;
 use underfoot::problem::question::Question;
 use underfoot::reference::answer::{
-    Answer, Binding, Blocking, DynamicsReport, FrameReport, FreeDirection, GroundReport, LevelAnswer,
-    Margin, Motion, Rocking, SoleAnswer, SoleGround, Status, TaskAnswer, Warning,
+    Answer, Binding, Blocking, DynamicsReport, Explained, FrameReport, FreeDirection, GroundReport, LevelAnswer,
+    Margin, Motion, RelaxedAnswer, Rocking, SoleAnswer, SoleGround, Status, TaskAnswer, Warning,
 };
 use underfoot::spatial::{Vec3, Wrench};
 use underfoot::wire::{
@@ -157,7 +164,103 @@ fn answer() -> Answer {
         warnings: vec![Warning { code: "coarse-tick", text: "omega_max T is 0.5".into() }],
         problem: Some(Box::new(hierarchy())),
         dynamics: Some(Box::new(report())),
+        explained: None,
+        uniqueness: None,
+        sensitivity: None,
+        spread: None,
     }
+}
+
+fn explained(answer: &Answer) -> Explained {
+    let relaxation = Relaxation {
+        sum: 0.25,
+        rows: vec![RowRelaxation {
+            group: "torque".into(), part: "r_hip upper".into(), amount: 5.0, unit: "N m", size: 10.0, share: 1.0,
+        }],
+        groups: vec![GroupRelaxation { group: "torque".into(), share: 1.0 }],
+        deltas: vec![0.5, 0.0, 0.0],
+        proved: 0.249,
+        multipliers: vec![1.0, 0.0, -1.0],
+        exact: true,
+    };
+    let proof = Farkas {
+        value: -1.0, spill: 1e-9, holds: true, acceleration_bound: 1e4, force_bound: 1e6,
+        multipliers: vec![Multiplier { group: "dynamics".into(), part: "base:vx".into(), physics: true, value: -0.5 }],
+        projected: vec![1.0, 0.0, -1.0],
+    };
+    let alone = vec![
+        Alone { group: "torque".into(), needs: Some(relaxation.clone()) },
+        Alone { group: "friction:left".into(), needs: None },
+    ];
+    Explained {
+        explanation: Explanation {
+            proof: Some(proof), relaxation: Some(relaxation), alone, alone_complete: true,
+            irreducible: IrreducibleSet { groups: vec!["torque".into()], complete: true }, solves: 7,
+        },
+        relaxed: Some(RelaxedAnswer {
+            status: Status::Solved, slack: 5e-5, motion: answer.motion.clone().expect("motion"),
+            soles: answer.soles.clone(), tasks: answer.tasks.clone(), levels: answer.levels.clone(),
+            margins: answer.margins.clone(),
+        }),
+    }
+}
+
+/// The answer with everything that can be asked for beyond it.
+fn full() -> Answer {
+    let mut answer = answer();
+    let contact = |kind| Parameter { contact: 0, kind };
+    let derivative = Derivative {
+        parameter: contact(ParameterKind::Stiffness), value: None, torques: vec![0.1; 6],
+        accelerations: (0..12).map(f64::from).collect(), wrenches: vec![[1.0, 2.0, 3.0, 4.0, 5.0, 6.0]; 3],
+        margins: vec![-0.1], reaches: Some(0.2),
+    };
+    answer.explained = Some(Box::new(explained(&answer)));
+    answer.uniqueness = Some(Box::new(Uniqueness {
+        directions: 1,
+        ranges: vec![Range {
+            name: "torque:r_hip".into(), unit: "N m", value: 1.0, least: Some(0.5), largest: None, exact: true,
+        }],
+        solves: 2,
+        complete: true,
+    }));
+    answer.sensitivity = Some(Box::new(Sensitivity {
+        derivatives: vec![derivative],
+        undefined: vec![contact(ParameterKind::Friction)],
+        near: vec![NearChange { limit: "torque".into(), part: "r_hip".into(), value: 1e-5, binds: false }],
+        why_not: None,
+    }));
+    let moments = Moments {
+        answered: 8, failed: 1, cut: 0, torque_mean: vec![1.0; 6], torque_deviation: vec![0.1; 6],
+        margin_mean: vec![0.5], margin_deviation: vec![0.2], margin_positive: vec![0.9],
+    };
+    answer.spread = Some(Box::new(Spread { sigma_points: moments.clone(), samples: Some(moments), seed: 7 }));
+    answer
+}
+
+/// Everything asked for beyond the answer stands in the document under names.
+#[test]
+fn what_was_asked_for_beyond_the_answer_follows_the_schema() {
+    let (question, answer) = (question(), full());
+    let document = follows("solve-answer", &write_answer(&question, &answer, "f00d"));
+    let alone = &document["explained"]["alone"];
+    assert_eq!(alone[0]["needs"]["rows"][0]["amount"], 5.0);
+    assert_eq!(alone[1], json!({ "group": "friction:left", "needs": null }));
+    assert_eq!(document["explained"]["relaxed"]["joints"], document["joints"]);
+    assert_eq!(document["uniqueness"]["ranges"][0]["largest"], Value::Null);
+    let by = &document["sensitivity"]["derivatives"][0];
+    assert_eq!((&by["sole"], &by["parameter"], &by["unit"]), (&json!("left"), &json!("stiffness"), &json!("N/m^3")));
+    // The base comes before the joints.
+    assert_eq!(by["base_acceleration"], json!({ "linear": [0.0, 1.0, 2.0], "angular": [3.0, 4.0, 5.0] }));
+    assert_eq!(by["joints"][0], json!({ "name": "r_hip", "torque": 0.1, "acceleration": 6.0 }));
+    assert_eq!(by["soles"][0]["wrench"], json!({ "force": [1.0, 2.0, 3.0], "moment": [4.0, 5.0, 6.0] }));
+    assert_eq!(by["margins"][0], json!({ "limit": "torque", "part": "r_hip", "change": -0.1, "unit": "N m" }));
+    assert_eq!(document["sensitivity"]["undefined"], json!([{ "sole": "left", "parameter": "friction" }]));
+    let spread = &document["spread"]["samples"];
+    assert_eq!(spread["joints"][5]["deviation"], 0.1);
+    assert_eq!(
+        spread["margins"],
+        json!([{ "limit": "torque", "part": "r_hip", "mean": 0.5, "deviation": 0.2, "positive": 0.9, "unit": "N m" }])
+    );
 }
 
 #[test]
@@ -218,16 +321,20 @@ fn doubles_survive() {
 #[test]
 fn numbers_that_are_not_finite_withhold_the_answer() {
     let question = question();
-    let spoil: [fn(&mut Answer); 6] = [
+    let spoil: [fn(&mut Answer); 10] = [
         |a| a.motion.as_mut().expect("motion").torques[3] = f64::NAN,
         |a| a.soles[0].normal_force = Some(f64::INFINITY),
         |a| a.tasks[0].residual[0] = f64::NEG_INFINITY,
         |a| a.ground.omega_max = f64::NAN,
         |a| a.problem.as_mut().expect("problem").hard.rhs[0] = f64::NAN,
         |a| a.dynamics.as_mut().expect("dynamics").mass_matrix[1][1] = f64::NAN,
+        |a| a.explained.as_mut().expect("explained").relaxed.as_mut().expect("relaxed").slack = f64::NAN,
+        |a| a.uniqueness.as_mut().expect("uniqueness").ranges[0].largest = Some(f64::INFINITY),
+        |a| a.sensitivity.as_mut().expect("sensitivity").derivatives[0].wrenches[2][5] = f64::NAN,
+        |a| a.spread.as_mut().expect("spread").sigma_points.margin_mean[0] = f64::NAN,
     ];
     for spoil in spoil {
-        let mut answer = answer();
+        let mut answer = full();
         spoil(&mut answer);
         let document = follows("solve-answer", &write_answer(&question, &answer, "f00d"));
         assert_eq!(document["status"], "inaccurate");

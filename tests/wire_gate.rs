@@ -70,6 +70,17 @@ fn full_requests_are_accepted() {
     assert_eq!(question.contacts.len(), 3);
     assert_eq!(question.tasks.len(), 12);
     assert_eq!(question.limits.len(), 5);
+    let include = &question.include;
+    assert!(include.explain && include.uniqueness && include.sensitivity);
+    let spread = include.spread.expect("a spread");
+    assert_eq!((spread.covariance, spread.shared), ([[0.04, 0.01], [0.01, 0.01]], false));
+    assert_eq!((spread.samples, spread.seed), (100, 7));
+    // A correlation of exactly 1 is still semidefinite.
+    let edge = with("/spread/covariance", json!([[0.04, 0.02], [0.02, 0.01]]));
+    assert!(read_solve(&bytes(&edge), &Nothing).is_ok());
+    let include = read_solve(&bytes(&without("/include")), &Nothing).expect("the request is good").include;
+    assert!(!(include.problem || include.dynamics || include.explain || include.uniqueness || include.sensitivity));
+    assert!(read_solve(&bytes(&without("/spread")), &Nothing).expect("the request is good").include.spread.is_none());
     let question = read_dynamics(&bytes(&dynamics_request()), &Nothing).expect("the request is good");
     assert_eq!(question.frames.len(), 2);
     let model = read_model(&bytes(&model_request())).expect("the request is good");
@@ -102,6 +113,12 @@ fn wrong_form_is_refused_at_its_pointer() {
         ("/tasks/0/axes/0", json!("w")),
         ("/tasks/3/frame", json!("torso")),
         ("/contacts/1/law/stiffness", json!(1.0)),
+        ("/include/0", json!("everything")),
+        ("/spread/covariance", json!([[0.04, 0.01]])),
+        ("/spread/covariance/0", json!([0.04])),
+        ("/spread/shared", json!("yes")),
+        ("/spread/samples", json!(1.5)),
+        ("/spread/seed", json!(-1)),
         ("/model", json!(7)),
         ("/model", json!([])),
     ];
@@ -184,10 +201,17 @@ fn wrong_values_are_refused_at_their_pointers() {
         ("/latency/torques/0/name", json!("l_ankle")),
         ("/state/joints/0/name", json!("r_elbow")),
         ("/state/joints/1/name", json!("r_hip")),
+        ("/spread/covariance/0/0", json!(-0.04)),
+        ("/spread/covariance/1/1", json!(1.5)),
+        ("/spread/covariance/1/0", json!(0.02)),
+        ("/spread/samples", json!(2001)),
     ];
     for (pointer, value) in cases {
         refused(&with(pointer, value), 422, pointer);
     }
+    // Symmetric, variances in range, but a correlation of 1.05.
+    refused(&with("/spread/covariance", json!([[0.04, 0.021], [0.021, 0.01]])), 422, "/spread/covariance");
+    refused(&with("/spread/covariance", json!([[0.0, 0.001], [0.001, 0.01]])), 422, "/spread/covariance");
     refused(&with("/limits/0/joints", two_joints), 422, "/limits/0/joints/1/name");
     refused(&with("/tasks/2/axes", json!(["x", "rx"])), 422, "/tasks/2/axes/1");
     refused(&with("/loads/0/mass", json!(-1.0)), 422, "/loads/0");

@@ -9,6 +9,8 @@ use Side::{Left, Right};
 const ROWS_SHOWN: usize = 6;
 /// Binding limits shown.
 const BINDING_SHOWN: usize = 12;
+/// Groups that give way shown.
+const RELAXED_SHOWN: usize = 12;
 /// Free directions shown, and parts of each.
 const FREE_SHOWN: usize = 3;
 
@@ -27,6 +29,7 @@ pub fn answer(document: &[u8]) -> String {
     margins(&mut out, answer);
     binding(&mut out, answer);
     blocking(&mut out, answer);
+    relaxation(&mut out, answer);
     free(&mut out, answer);
     certificate(&mut out, answer);
     ground(&mut out, answer);
@@ -280,13 +283,70 @@ fn binding(out: &mut String, answer: View<'_>) {
     }
 }
 
+fn percent(value: View<'_>) -> String {
+    value.number().map_or_else(|| "-".to_owned(), |share| format!("{:.1} %", 100.0 * share))
+}
+
 fn blocking(out: &mut String, answer: View<'_>) {
     let mut table = Table::new(&[("what stands in the way", Left), ("share", Right)]);
     for blocking in answer.at("/blocking").items() {
-        let share = blocking.at("/share").number().map_or_else(|| "-".to_owned(), |share| format!("{:.1} %", 100.0 * share));
-        table.row([text(blocking.at("/group")), share]);
+        table.row([text(blocking.at("/group")), percent(blocking.at("/share"))]);
     }
-    section(out, "Nothing feasible: who carries the proof", &table);
+    let title = match answer.at("/status").text() {
+        Some("not_reachable") => "Not reachable within one tick: who carries the proof",
+        _ => "Nothing feasible: who carries the proof",
+    };
+    section(out, title, &table);
+}
+
+/// The rows of a relaxation that belong to `group`, as their largest: where, amount with unit.
+fn largest(rows: View<'_>, group: &str) -> (String, String) {
+    let mut own = rows.items().filter(|row| row.at("/group").text() == Some(group));
+    let Some(first) = own.next() else { return ("-".to_owned(), "-".to_owned()) };
+    let part = match own.count() {
+        0 => text(first.at("/part")),
+        more => format!("{} (worst of {})", text(first.at("/part")), more + 1),
+    };
+    (part, format!("{} {}", cell(first.at("/amount"), 3), text(first.at("/unit"))))
+}
+
+/// What would have to give way: the least relaxation by group, beside what each group would need alone.
+fn relaxation(out: &mut String, answer: View<'_>) {
+    let explained = answer.at("/explained");
+    if explained.is_nothing() {
+        return;
+    }
+    let relaxation = explained.at("/relaxation");
+    let together: Vec<(&str, View<'_>)> = relaxation
+        .at("/groups")
+        .items()
+        .filter_map(|group| Some((group.at("/group").text()?, group.at("/share"))))
+        .collect();
+    let named = |group: &str| together.iter().any(|other| other.0 == group);
+    let others = explained.at("/alone").items().filter(|alone| !alone.at("/needs").is_nothing());
+    let others = others.filter_map(|alone| alone.at("/group").text()).filter(|group| !named(group));
+    let others = others.map(|group| (group, explained.at("/none")));
+    let mut table =
+        Table::new(&[("gives way", Left), ("where", Left), ("amount", Right), ("share", Right), ("alone would need", Right)]);
+    for (group, share) in together.iter().copied().chain(others).take(RELAXED_SHOWN) {
+        let (part, amount) = largest(relaxation.at("/rows"), group);
+        let alone = explained.at("/alone").items().find(|alone| alone.at("/group").text() == Some(group));
+        let alone = match alone.map(|alone| alone.at("/needs")) {
+            None => "-".to_owned(),
+            Some(needs) if needs.is_nothing() => "not enough alone".to_owned(),
+            Some(needs) => largest(needs.at("/rows"), group).1,
+        };
+        table.row([group.to_owned(), part, amount, percent(share), alone]);
+    }
+    section(out, "Least relaxation that leaves an answer (largest amount of each)", &table);
+    if relaxation.is_nothing() {
+        push_line(out, "");
+        push_line(out, "No relaxation helps: physics itself contradicts the request");
+    }
+    let set: Vec<&str> = explained.at("/irreducible/groups").items().filter_map(View::text).collect();
+    if !set.is_empty() {
+        push_text(out, "  ", &format!("Cannot hold together: {}", set.join(", ")));
+    }
 }
 
 fn free(out: &mut String, answer: View<'_>) {

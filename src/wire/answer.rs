@@ -5,21 +5,26 @@ use serde::Serialize;
 
 use super::common::Format;
 use super::dynamics::{AxesOut, DynamicsOut};
+use super::explained::ExplainedOut;
 use super::export::ProblemOut;
 use super::number::{LinearAngularOut, Number, Numbers, Tuple, WrenchOut};
 use super::report::{BindingOut, BlockingOut, CertificateOut, FreeOut, GroundOut, LevelOut, MarginOut};
+use super::sensitivity::SensitivityOut;
+use super::spread::SpreadOut;
+use super::uniqueness::UniquenessOut;
 use crate::model::Model;
 use crate::problem::question::Question;
 use crate::reference::answer::{Answer, Motion, SoleAnswer, Status, TaskAnswer};
 
 /// How a request ended. `solved`: the certificate holds. `infeasible`: no answer obeys what must
-/// hold. `not_reachable`: not within one tick, though nothing else forbids it. `ill_posed`: exact,
+/// hold. `not_reachable`: no answer within one tick, though there would be one if the wrenches of
+/// the soft soles at the tick's end were free: what must hold does not contradict itself. `ill_posed`: exact,
 /// but the answer moves like the square root of the data. `inaccurate`: the certificate's bounds are
 /// missed; the bounds reached are stated. `cancelled`: the work was called off.
 #[derive(Debug, Clone, Copy, PartialEq, Serialize, JsonSchema)]
 #[serde(rename_all = "snake_case")]
 #[schemars(inline)]
-enum StatusOut {
+pub(super) enum StatusOut {
     Solved,
     Infeasible,
     NotReachable,
@@ -39,7 +44,8 @@ pub(super) struct AnswerOut<'a> {
     /// SHA-256 of the canonical request and the version: same fingerprint, same question (no unit).
     fingerprint: &'a str,
     /// How it ended (no unit). `solved`: the certificate holds. `infeasible`: no answer obeys what
-    /// must hold. `not_reachable`: not within one tick, though nothing else forbids it. `ill_posed`:
+    /// must hold. `not_reachable`: no answer within one tick, though there would be one if the wrenches of
+    /// the soft soles at the tick's end were free: what must hold does not contradict itself. `ill_posed`:
     /// exact, but the answer moves like the square root of the data. `inaccurate`: the certificate's
     /// bounds are missed; the bounds reached are stated. `cancelled`: the work was called off.
     status: StatusOut,
@@ -69,8 +75,8 @@ pub(super) struct AnswerOut<'a> {
     /// What was verified without the solver (figures without unit); null where there was nothing to
     /// verify.
     certificate: Option<CertificateOut<'a>>,
-    /// Where nothing is feasible: the limits and must-hold tasks that carry the proof (shares, no
-    /// unit).
+    /// Where nothing is feasible (`infeasible`, `not_reachable`): the limits and must-hold tasks that carry
+    /// the proof (shares, no unit).
     blocking: Vec<BlockingOut<'a>>,
     /// Ground and tick in figures (rad/s, N m/rad, m, s).
     ground: GroundOut<'a>,
@@ -83,12 +89,28 @@ pub(super) struct AnswerOut<'a> {
     /// Rigid-body terms (kg, m, N m), where `include` asked for them.
     #[serde(skip_serializing_if = "Option::is_none")]
     dynamics: Option<DynamicsOut<'a>>,
+    /// Why nothing is feasible (amounts each in its own unit), where `include` asked for it and the
+    /// status is `infeasible` or `not_reachable`.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    explained: Option<ExplainedOut<'a>>,
+    /// What the question leaves open (values each in its own unit), where `include` asked for it and an answer was
+    /// found.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    uniqueness: Option<UniquenessOut<'a>>,
+    /// Derivatives by the ground (N m, rad/s^2, N and others, per relative change), where `include` asked for
+    /// them and an answer was found.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    sensitivity: Option<SensitivityOut<'a>>,
+    /// Spread under uncertain ground (N m, N and units of the margins), where the request holds
+    /// `spread` and an answer was found.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    spread: Option<SpreadOut<'a>>,
 }
 
 /// One joint.
 #[derive(Debug, Clone, Serialize, JsonSchema)]
 #[schemars(rename = "JointAnswer")]
-struct JointOut<'a> {
+pub(super) struct JointOut<'a> {
     /// Joint name as in the URDF (no unit).
     name: &'a str,
     /// Torque or force to apply over the tick (N m, or N for a sliding joint); zero on a passive
@@ -101,7 +123,7 @@ struct JointOut<'a> {
 /// One sole on the ground. Wrenches are what the ground exerts on the robot, about the sole origin.
 #[derive(Debug, Clone, Serialize, JsonSchema)]
 #[schemars(rename = "SoleAnswer")]
-struct SoleOut<'a> {
+pub(super) struct SoleOut<'a> {
     /// Sole name (no unit).
     name: &'a str,
     /// Wrench at the tick's end, world axes (N, N m); null where nothing was found.
@@ -150,7 +172,7 @@ struct LinearisationOut {
 /// One task, row by row: `rows`, `units`, `desired`, `achieved` and `residual` are equally long.
 #[derive(Debug, Clone, Serialize, JsonSchema)]
 #[schemars(rename = "TaskAnswer")]
-struct TaskOut<'a> {
+pub(super) struct TaskOut<'a> {
     /// Name (no unit).
     name: &'a str,
     /// Priority (no unit); null where it must hold.
@@ -200,13 +222,13 @@ impl<'a> AnswerOut<'a> {
             format: Format::One,
             version: env!("CARGO_PKG_VERSION"),
             fingerprint,
-            status: status(answer.status),
+            status: answer.status.into(),
             model: &question.model.id,
             velocity_axes: question.velocity_axes.into(),
-            joints: motion.map(|motion| joints(&question.model, motion)),
+            joints: motion.map(|motion| JointOut::all(&question.model, motion)),
             base_acceleration: motion.and_then(|motion| motion.base_acceleration).map(Into::into),
-            soles: answer.soles.iter().map(sole).collect(),
-            tasks: answer.tasks.iter().map(task).collect(),
+            soles: answer.soles.iter().map(SoleOut::of).collect(),
+            tasks: answer.tasks.iter().map(TaskOut::of).collect(),
             levels: answer.levels.iter().map(LevelOut::of).collect(),
             binding: answer.binding.iter().map(BindingOut::of).collect(),
             margins: answer.margins.iter().map(MarginOut::of).collect(),
@@ -221,6 +243,10 @@ impl<'a> AnswerOut<'a> {
                 .collect(),
             problem: answer.problem.as_deref().map(ProblemOut::of),
             dynamics: answer.dynamics.as_deref().map(DynamicsOut::of),
+            explained: answer.explained.as_deref().map(|why| ExplainedOut::of(&question.model, why)),
+            uniqueness: answer.uniqueness.as_deref().map(UniquenessOut::of),
+            sensitivity: answer.sensitivity.as_deref().map(|found| SensitivityOut::of(question, answer, found)),
+            spread: answer.spread.as_deref().map(|spread| SpreadOut::of(&question.model, answer, spread)),
         }
     }
 
@@ -243,63 +269,78 @@ impl<'a> AnswerOut<'a> {
             warnings,
             problem: None,
             dynamics: None,
+            explained: None,
+            uniqueness: None,
+            sensitivity: None,
+            spread: None,
             ..self
         }
     }
 }
 
-fn status(status: Status) -> StatusOut {
-    match status {
-        Status::Solved => StatusOut::Solved,
-        Status::Infeasible => StatusOut::Infeasible,
-        Status::NotReachable => StatusOut::NotReachable,
-        Status::IllPosed => StatusOut::IllPosed,
-        Status::Inaccurate => StatusOut::Inaccurate,
-        Status::Cancelled => StatusOut::Cancelled,
+impl From<Status> for StatusOut {
+    fn from(status: Status) -> Self {
+        match status {
+            Status::Solved => StatusOut::Solved,
+            Status::Infeasible => StatusOut::Infeasible,
+            Status::NotReachable => StatusOut::NotReachable,
+            Status::IllPosed => StatusOut::IllPosed,
+            Status::Inaccurate => StatusOut::Inaccurate,
+            Status::Cancelled => StatusOut::Cancelled,
+        }
     }
 }
 
-fn joints<'a>(model: &'a Model, motion: &Motion) -> Vec<JointOut<'a>> {
-    let values = motion.torques.iter().zip(&motion.joint_accelerations);
-    let joints = model.joints.iter().zip(values);
-    joints
-        .map(|(joint, (torque, acceleration))| JointOut {
-            name: &joint.name,
-            torque: Number(*torque),
-            acceleration: Number(*acceleration),
-        })
-        .collect()
-}
-
-fn sole(sole: &SoleAnswer) -> SoleOut<'_> {
-    SoleOut {
-        name: &sole.name,
-        wrench: sole.wrench.map(Into::into),
-        wrench_in_sole_axes: sole.wrench_in_sole_axes.map(Into::into),
-        wrench_over_tick: sole.wrench_over_tick.map(Into::into),
-        present: sole.present.map(Into::into),
-        present_in_sole_axes: sole.present_in_sole_axes.map(Into::into),
-        normal_force: sole.normal_force.map(Number),
-        center_of_pressure: sole.center_of_pressure.map(Tuple),
-        friction_use: sole.friction_use.map(Number),
-        edge_distance: sole.edge_distance.map(Number),
-        vertex_forces: sole.vertex_forces.iter().map(|force| (*force).into()).collect(),
-        acceleration: sole.acceleration.map(Into::into),
-        linearisation_error: sole
-            .linearisation_error
-            .map(|[force, moment]| LinearisationOut { force: Number(force), moment: Number(moment) }),
+impl<'a> JointOut<'a> {
+    /// Every joint, in model order.
+    pub(super) fn all(model: &'a Model, motion: &Motion) -> Vec<Self> {
+        let values = motion.torques.iter().zip(&motion.joint_accelerations);
+        let joints = model.joints.iter().zip(values);
+        joints
+            .map(|(joint, (torque, acceleration))| JointOut {
+                name: &joint.name,
+                torque: Number(*torque),
+                acceleration: Number(*acceleration),
+            })
+            .collect()
     }
 }
 
-fn task(task: &TaskAnswer) -> TaskOut<'_> {
-    TaskOut {
-        name: &task.name,
-        priority: task.priority,
-        unit: task.unit,
-        rows: &task.rows,
-        units: &task.units,
-        desired: Numbers(&task.desired),
-        achieved: Numbers(&task.achieved),
-        residual: Numbers(&task.residual),
+impl<'a> SoleOut<'a> {
+    /// From the answer.
+    pub(super) fn of(sole: &'a SoleAnswer) -> Self {
+        SoleOut {
+            name: &sole.name,
+            wrench: sole.wrench.map(Into::into),
+            wrench_in_sole_axes: sole.wrench_in_sole_axes.map(Into::into),
+            wrench_over_tick: sole.wrench_over_tick.map(Into::into),
+            present: sole.present.map(Into::into),
+            present_in_sole_axes: sole.present_in_sole_axes.map(Into::into),
+            normal_force: sole.normal_force.map(Number),
+            center_of_pressure: sole.center_of_pressure.map(Tuple),
+            friction_use: sole.friction_use.map(Number),
+            edge_distance: sole.edge_distance.map(Number),
+            vertex_forces: sole.vertex_forces.iter().map(|force| (*force).into()).collect(),
+            acceleration: sole.acceleration.map(Into::into),
+            linearisation_error: sole
+                .linearisation_error
+                .map(|[force, moment]| LinearisationOut { force: Number(force), moment: Number(moment) }),
+        }
+    }
+}
+
+impl<'a> TaskOut<'a> {
+    /// From the answer.
+    pub(super) fn of(task: &'a TaskAnswer) -> Self {
+        TaskOut {
+            name: &task.name,
+            priority: task.priority,
+            unit: task.unit,
+            rows: &task.rows,
+            units: &task.units,
+            desired: Numbers(&task.desired),
+            achieved: Numbers(&task.achieved),
+            residual: Numbers(&task.residual),
+        }
     }
 }

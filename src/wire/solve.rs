@@ -14,6 +14,7 @@ use super::gate::{At, Gate, quoted};
 use super::limit::LimitBody;
 use super::model::InlineModel;
 use super::refusal::{Fault, Refusal};
+use super::spread::SpreadBody;
 use super::state::{StateBody, frame_index};
 use super::task::TaskBody;
 use crate::contact::TickRule;
@@ -66,8 +67,13 @@ pub(super) struct SolveRequest {
     /// first. No delay when left out.
     latency: Option<LatencyBody>,
     /// What the answer shall hold besides the answer (no unit): `problem`, the assembled problem;
-    /// `dynamics`, mass matrix, bias and Jacobians.
+    /// `dynamics`, mass matrix, bias and Jacobians; `explain`, where nothing is feasible, the least relaxation,
+    /// what each limit alone would have to give and the answer at the relaxation; `uniqueness`, the range
+    /// of everything the question leaves open; `sensitivity`, derivatives by stiffness, damping and friction.
     include: Option<Vec<IncludeBody>>,
+    /// How uncertain stiffness and damping are (no unit): the answer then holds the spread of torques and margins.
+    /// None when left out.
+    spread: Option<SpreadBody>,
 }
 
 /// A control tick.
@@ -94,12 +100,15 @@ enum RuleBody {
 }
 
 /// Optional parts of an answer.
-#[derive(Debug, Clone, Copy, Deserialize, JsonSchema)]
+#[derive(Debug, Clone, Copy, PartialEq, Deserialize, JsonSchema)]
 #[serde(rename_all = "snake_case")]
 #[schemars(inline)]
 enum IncludeBody {
     Problem,
     Dynamics,
+    Explain,
+    Uniqueness,
+    Sensitivity,
 }
 
 /// Asks for rigid-body terms in one state (`POST /v1/dynamics`).
@@ -143,7 +152,10 @@ impl SolveRequest {
         let (limits, tasks) = self.aims(&mut gate, at, &around);
         let external = ExternalBody::read_all(&mut gate, at.name("external"), self.external.as_deref(), &model);
         let latency = self.latency.as_ref().map(|latency| latency.read(&mut gate, at.name("latency"), &model));
-        let include = include(self.include.as_deref().unwrap_or_default());
+        let include = Include {
+            spread: self.spread.as_ref().map(|spread| spread.read(&mut gate, at.name("spread"))),
+            ..include(self.include.as_deref().unwrap_or_default())
+        };
         gate.finish()?;
         let contacts = contacts.into_iter().flatten().collect();
         let gravity = Vec3::from(self.gravity.unwrap_or(GRAVITY));
@@ -279,8 +291,11 @@ fn unique<'a>(gate: &mut Gate, at: At<'_>, names: &mut Vec<&'a str>, name: &'a s
 
 fn include(words: &[IncludeBody]) -> Include {
     Include {
-        problem: words.iter().any(|word| matches!(word, IncludeBody::Problem)),
-        dynamics: words.iter().any(|word| matches!(word, IncludeBody::Dynamics)),
-        ..Include::default()
+        problem: words.contains(&IncludeBody::Problem),
+        dynamics: words.contains(&IncludeBody::Dynamics),
+        explain: words.contains(&IncludeBody::Explain),
+        uniqueness: words.contains(&IncludeBody::Uniqueness),
+        sensitivity: words.contains(&IncludeBody::Sensitivity),
+        spread: None,
     }
 }

@@ -143,7 +143,8 @@ pub fn solve_request() -> Value {
             { "name": "r_hip", "torque": 1.0 }, { "name": "r_knee", "torque": 1.0 },
             { "name": "r_ankle", "torque": 1.0 }, { "name": "l_hip", "torque": 1.0 },
             { "name": "l_knee", "torque": 1.0 } ] },
-        "include": ["problem", "dynamics"],
+        "include": ["problem", "dynamics", "explain", "uniqueness", "sensitivity"],
+        "spread": { "covariance": [[0.04, 0.01], [0.01, 0.01]], "shared": false, "samples": 100, "seed": 7 },
     })
 }
 
