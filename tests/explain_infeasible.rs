@@ -133,8 +133,6 @@ fn lower_bound(h: &Hierarchy, relaxation: &Relaxation, relaxable: impl Fn(&str) 
         for i in heads {
             if !h.hard.names[i].physics && relaxable(&h.hard.names[i].group) {
                 size += z[i] * z[i];
-            } else if let Cone::SecondOrder(_) = cone {
-                // Held: nothing to grant.
             }
         }
         at += cone.dimension();
@@ -340,7 +338,7 @@ fn requests(count: usize, seed: u64) -> Vec<Question> {
 #[test]
 fn a_hundred_random_infeasible_requests() {
     let mut faults = Vec::new();
-    let (mut alone_helps, mut largest_gap) = (0, 0.0f64);
+    let (mut alone_helps, mut beyond, mut largest_gap) = (0, 0, 0.0f64);
     for (i, question) in requests(100, 1).iter().enumerate() {
         let h = assembled(question);
         let explanation = explained(&h);
@@ -357,11 +355,15 @@ fn a_hundred_random_infeasible_requests() {
         if matches!(short, solve::Status::Solved | solve::Status::IllPosed) {
             faults.push(format!("{i}: {short:?} short of the relaxation"));
         }
-        // Least: weak duality, recomputed.
+        // Least, by weak duality recomputed here: the dual value meets the sum to 1e-6, and what the bounds on the unknowns cost
+        // (all of them at once at 1e6 N or N m) is at most a thousandth.
         let bound = lower_bound(&h, relaxation, |_| true);
+        let (value, gradient) = recomputed(&h, &relaxation.multipliers);
+        let spill = spill(&h, &gradient);
         largest_gap = largest_gap.max(1.0 - bound / relaxation.sum);
-        if bound < (1.0 - 1e-4) * relaxation.sum {
-            faults.push(format!("{i}: sum {} but only {bound} is proved", relaxation.sum));
+        beyond += usize::from(bound < (1.0 - 1e-4) * relaxation.sum);
+        if (bound * (value / (value + spill)).powi(2) / relaxation.sum - 1.0).abs() > 1e-6 || bound < (1.0 - 1e-3) * relaxation.sum {
+            faults.push(format!("{i}: sum {} but only {bound} is proved, from {value} and {spill}", relaxation.sum));
         }
         for alone in &explanation.alone {
             let Some(needs) = &alone.needs else { continue };
@@ -372,7 +374,7 @@ fn a_hundred_random_infeasible_requests() {
         assert!(!explanation.irreducible.groups.is_empty() && explanation.irreducible.complete);
         irreducible(&h, &explanation.irreducible.groups, i, &mut faults);
     }
-    println!("alone helps {alone_helps} times; largest gap of the proof {largest_gap:e}");
+    println!("alone helps {alone_helps} times; largest gap of the proof {largest_gap:e}, {beyond} beyond 1e-4");
     assert!(alone_helps > 0);
     assert!(faults.is_empty(), "{} faults: {faults:#?}", faults.len());
 }

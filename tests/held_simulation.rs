@@ -11,7 +11,7 @@ use std::sync::atomic::AtomicBool;
 use plant::{Outcome, tick_under};
 use underfoot::contact::{Law, Rest, TickRule};
 use underfoot::problem::question::*;
-use underfoot::reference;
+use underfoot::reference::{self, answer::Status};
 use underfoot::spatial::polygon::SoleShape;
 use underfoot::spatial::{Vec3, Wrench, exp_so3};
 
@@ -205,6 +205,25 @@ fn average_accelerations_and_wrenches_are_those_of_the_tick() {
         assert!(off < 0.01, "{off}");
         for (a, b) in response.over_tick.iter().zip(&truth.means) {
             assert!((a.force - b.force).norm() < 0.01 * b.force.norm(), "{a:?} {b:?}");
+        }
+    }
+}
+
+#[test]
+fn answers_from_perturbed_states_are_certified() {
+    for (k, tick) in [(3e5, 2e-3), (3e5, 1e-2), (2e6, 1e-3), (2e6, 5e-3), (1e7, 2e-3), (1e7, 1e-2)] {
+        for seed in 1..6 {
+            let (mut question, _) = perturbed(k, tick, 0.1, seed);
+            question.tick.rule = TickRule::Held;
+            // One tick cannot bring every such state inside its limits: those are allowed to be exceeded, at a price.
+            let soft = Treatment::Soft { priority: 1, weight: 1.0, scale: 1.0 };
+            for contact in &mut question.contacts {
+                contact.friction = contact.friction.map(|f| Friction { treatment: soft, ..f });
+                contact.normal_force = contact.normal_force.map(|f| NormalForce { treatment: soft, ..f });
+            }
+            let answer = reference::solve(&question, &Arc::new(AtomicBool::new(false))).unwrap();
+            let worst = answer.certificate.as_ref().map(|c| c.checks.iter().map(|c| c.value / c.bound).fold(0.0, f64::max));
+            assert_eq!(answer.status, Status::Solved, "{k:e} {tick} {seed}: {worst:?} {:#?}", answer.certificate);
         }
     }
 }

@@ -185,9 +185,8 @@ impl Held {
             system.view_mut((0, clock + 1 + k), (nv, 1)).copy_from(&start);
             system[(clock, clock + 1 + k)] = 1.0;
         }
-        // Written so that a norm that is no number ends here too.
-        let norm = system.lp_norm(1);
-        if norm.is_nan() || norm >= LARGEST_NORM {
+        let sound = system.iter().all(|v| v.is_finite()) && system.lp_norm(1) < LARGEST_NORM;
+        if !sound {
             return None;
         }
         let end = system.exp();

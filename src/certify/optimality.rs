@@ -21,8 +21,9 @@ use crate::conic::{Cone, ConicRows, Level, LevelProof, ResidualRows};
 /// Bound of every figure here.
 pub const OPTIMALITY_BOUND: f64 = 1e-8;
 
-/// Share of the terms of a residual below which it counts as rounding.
-pub const ROUNDING: f64 = 1e-6;
+/// Share of the terms of a residual below which it counts as met: with the bound of 1e-8 on top, a level met to rounding has to
+/// be stationary to 1e-12 of its terms, which is what Newton refinement confirms.
+pub const ROUNDING: f64 = 1e-4;
 
 /// A verdict that cannot pass, where the proof does not even fit the problem.
 fn unfit(priority: u32) -> LevelCheck {

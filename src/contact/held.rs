@@ -206,9 +206,8 @@ impl Terms {
             let factors = on_mean.qr();
             let triangle = factors.r();
             let pivots = triangle.diagonal().abs();
-            // Written so that a pivot that is no number fails too.
-            let (least, largest) = (pivots.min(), pivots.max());
-            if least.is_nan() || largest.is_nan() || least <= SMALLEST_PIVOT * largest {
+            let sound = pivots.iter().all(|&pivot| pivot > SMALLEST_PIVOT * pivots.max());
+            if !sound {
                 return None;
             }
             factors.q_tr_mul(&mut others);

@@ -16,6 +16,8 @@ pub const LARGEST_ACCELERATION: f64 = 1e4;
 pub const LARGEST_FORCE: f64 = 1e6;
 /// A spill above this part of the value is worth a correction.
 const SMALL_SPILL: f64 = 1e-6;
+/// Most corrections of one proof.
+const MOST_CORRECTIONS: usize = 4;
 /// Equalities count as dependent below this relative singular value when multipliers are corrected.
 const DEPENDENT: f64 = 1e-10;
 /// Blocks with a multiplier above this part of the largest take part in a correction.
@@ -63,14 +65,17 @@ pub fn verify(hierarchy: &Hierarchy, multipliers: &[f64]) -> Farkas {
     for (first, len, kind) in pieces(&hard.cones) {
         project(kind, &mut z[first..first + len]);
     }
-    let (mut value, mut spill, gradient) = weigh(hierarchy, &z);
-    if spill > SMALL_SPILL * value.abs()
-        && let Some(corrected) = correct(hierarchy, &z, &gradient)
-    {
-        let (new_value, new_spill, _) = weigh(hierarchy, &corrected);
-        if new_value + new_spill < value + spill {
-            (z, value, spill) = (corrected, new_value, new_spill);
+    let (mut value, mut spill, mut gradient) = weigh(hierarchy, &z);
+    for _ in 0..MOST_CORRECTIONS {
+        if spill <= SMALL_SPILL * value.abs() {
+            break;
         }
+        let Some(corrected) = correct(hierarchy, &z, &gradient) else { break };
+        let (new_value, new_spill, new_gradient) = weigh(hierarchy, &corrected);
+        if new_value + new_spill >= value + spill {
+            break;
+        }
+        (z, value, spill, gradient) = (corrected, new_value, new_spill, new_gradient);
     }
     let largest = z.iter().fold(0.0f64, |m, v| m.max(v.abs()));
     let carried = z

@@ -131,8 +131,8 @@ fn moved(state: &State, floating: bool, velocity: &[f64], velocity_after: &[f64]
     }
     for j in 0..out.position.len() {
         out.position[j] += velocity[offset + j] * dt;
-        out.velocity[j] = velocity_after[offset + j];
     }
+    out.velocity.copy_from_slice(&velocity_after[offset..]);
     out
 }
 

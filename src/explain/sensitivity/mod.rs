@@ -27,7 +27,7 @@ pub const NEAR_MULTIPLIER: f64 = 1e-4;
 /// An inactive row or cone with less (scaled) slack than this is about to enter the active set.
 pub const NEAR_SLACK: f64 = 1e-4;
 /// A level whose gradient the active set leaves unexplained by more than this part is not differentiated.
-const UNEXPLAINED: f64 = 1e-5;
+const UNEXPLAINED: f64 = 1e-7;
 
 /// The answer as found, and the problem it answers.
 pub struct Base<'a> {
