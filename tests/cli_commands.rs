@@ -103,6 +103,7 @@ fn bad_news_is_1() {
         }
         request["tasks"] = serde_json::json!([]);
         request["limits"] = serde_json::json!([{ "kind": "torque" }]);
+        request["include"] = serde_json::json!(["explain"]);
     });
     let output = underfoot(&["solve", "-"], &body);
     assert_eq!(code(&output), 1, "{}{}", text(&output.stdout), text(&output.stderr));
@@ -110,7 +111,13 @@ fn bad_news_is_1() {
     assert_eq!(answer["status"], "infeasible");
     let table = underfoot(&["solve", "-", "--table"], &body);
     assert_eq!(code(&table), 1);
-    assert!(text(&table.stdout).starts_with("Status: infeasible"), "{}", text(&table.stdout));
+    let table = text(&table.stdout);
+    assert!(table.starts_with("Status: infeasible"), "{table}");
+    let share = format!("{:.1} %", 100.0 * answer["explained"]["relaxation"]["groups"][0]["share"].as_f64().expect("a share"));
+    for needed in ["who carries the proof", "alone would need", &share, "Cannot hold together: "] {
+        assert!(table.contains(needed), "{needed} is missing in\n{table}");
+    }
+    assert!(table.lines().all(|line| line.chars().count() <= 100), "{table}");
 }
 
 #[test]
