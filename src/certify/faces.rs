@@ -37,7 +37,7 @@ struct Implied {
 pub fn check(hierarchy: &Hierarchy, x: &[f64], proofs: &[LevelProof]) -> Check {
     let mut worst = Worst::default();
     let n = x.len();
-    let mut known = Known { equalities: Vec::new(), cones: Vec::new() };
+    let mut known = Known { given: Vec::new(), equalities: Vec::new(), cones: Vec::new() };
     let shapes = fits(&hierarchy.hard, n) && proofs.iter().all(|p| fits(&p.system, n) && p.multipliers.len() == p.system.rhs.len());
     if !shapes {
         worst.record(f64::NAN, || "rows that do not fit the unknowns".into());
@@ -84,7 +84,9 @@ fn dense(matrix: &crate::conic::SparseRows, i: usize, n: usize) -> Vec<f64> {
 
 /// What holds at every optimum of the levels so far.
 struct Known {
-    /// Orthonormal: the span of all implied equalities.
+    /// The implied equalities as they came: most rows of a system repeat one of them, and need no projection.
+    given: Vec<Vec<f64>>,
+    /// Orthonormal: their span.
     equalities: Vec<Vec<f64>>,
     cones: Vec<Implied>,
 }
@@ -124,7 +126,8 @@ impl Known {
 
     fn equate(&mut self, row: Vec<f64>) {
         let size = norm(&row);
-        let mut rest = self.rest(row);
+        let mut rest = self.rest(row.clone());
+        self.given.push(row);
         let left = norm(&rest);
         if left > DEPENDENT * size {
             rest.iter_mut().for_each(|r| *r /= left);
@@ -199,7 +202,8 @@ impl Known {
             let slack: Vec<f64> =
                 block.rows.clone().map(|i| system.rhs[i] - system.matrix.row_dot(i, x)).collect();
             let repeats = |c: &Implied| c.cone == block.cone && c.slack == slack && c.rows == rows;
-            if self.cones.iter().any(repeats) {
+            let given = matches!(block.cone, Cone::Zero(_)) && rows.iter().all(|row| self.given.contains(row));
+            if given || self.cones.iter().any(repeats) {
                 continue;
             }
             let size = rows.iter().map(|r| norm(r)).fold(0.0, f64::max);
