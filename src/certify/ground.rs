@@ -318,7 +318,7 @@ mod tests {
         SoleShape::Polygon(Polygon::new(corners).expect("convex"))
     }
 
-    /// CHECKS of the bonded sole: isotropic k = 3e6 N/m^3, b = 1.5e4 N s/m^3.
+    /// The rectangle of the bonded-sole values (derived, quadrature): isotropic k = 3e6 N/m^3, b = 1.5e4 N s/m^3.
     fn ground(rest: Rest) -> Ground {
         let material = Material {
             normal_stiffness: 3e6,
