@@ -151,7 +151,16 @@ impl Terms {
         self.dual = larger(self.dual, -of_t);
         self.dual_size = larger(self.dual_size, cost.abs());
         self.gap += (of_t * t).abs();
-        self.gap_size += level.soft_weight[k] * t * t;
+        // A soft limit with room to spare costs nothing, and its multiplier is rounding: like a residual that is met, it is
+        // judged beside its natural size.
+        let met = ROUNDING * size;
+        self.gap_size += level.soft_weight[k] * larger(t * t, met * size);
+        self.dual_size = larger(self.dual_size, 2.0 * level.soft_weight[k] * met);
+        for i in block.rows.clone() {
+            for (j, v) in rows.matrix.row(i) {
+                self.cost_size[j] += 2.0 * level.soft_weight[k] * v.abs() * larger(t, met);
+            }
+        }
     }
 
     fn verdict(&self, priority: u32) -> LevelCheck {

@@ -3,7 +3,7 @@
 use super::answer::*;
 use super::check::check;
 use super::dense::largest;
-use super::engine::{Ended, EngineAnswer, Program, run};
+use super::engine::{Ended, EngineAnswer, Program, run, run_careful};
 use super::faces::{ensure_interior, interior_program};
 use super::free::free_directions;
 use super::infeasible::{certify, certify_equality, project_dual};
@@ -26,6 +26,8 @@ const TRUSTED: f64 = 1e-7;
 const FAR: f64 = 1e4;
 /// Weight of the pull that holds such a point, of the cost's.
 const PULL: f64 = 1e-8;
+/// Tolerance of the engine's second run, which it need not reach.
+const CLOSEST: f64 = 1e-14;
 /// What holds at the final point must hold this well (scaled, per unit of row length and value) for the answer to count as solved.
 const HELD: f64 = 1e-8;
 /// How often the first level is solved anew because its set had no interior.
@@ -130,6 +132,13 @@ pub fn solve(
         Ok(()) => Status::Solved,
     };
     Ok(answer)
+}
+
+/// Newton steps on the active set read off an interior point, damped where they do not settle.
+fn sharpen(problem: &LevelProblem, u: &[f64], z: &[f64]) -> Refined {
+    let identified = classify(problem, u.to_vec(), z.to_vec());
+    let plain = refine(problem, identified.clone(), ROUNDS, Damping::None);
+    if plain.confirmed { plain } else { refine(problem, identified, ROUNDS, Damping::ByResidual) }
 }
 
 impl Cascade<'_> {
@@ -307,11 +316,20 @@ impl Cascade<'_> {
                 break;
             }
         }
-        let engine = optimality(&problem, &u, &z);
-        let identified = classify(&problem, u.clone(), z.clone());
-        let mut refined = refine(&problem, identified.clone(), ROUNDS, Damping::None);
-        if !refined.confirmed {
-            refined = refine(&problem, identified, ROUNDS, Damping::ByResidual);
+        let mut engine = optimality(&problem, &u, &z);
+        let mut refined = sharpen(&problem, &u, &z);
+        if !refined.confirmed && trusted {
+            // Where rows bind that nearly depend on each other, the active set only shows closer to the optimum.
+            if let Some((near_u, near_z)) = self.closer(data, &problem, &mut iterations)? {
+                let closer = optimality(&problem, &near_u, &near_z);
+                let again = sharpen(&problem, &near_u, &near_z);
+                if again.confirmed {
+                    refined = again;
+                }
+                if closer.worst() < engine.worst() {
+                    (u, z, engine) = (near_u, near_z, closer);
+                }
+            }
         }
         if refined.confirmed && refined.optimality.worst() <= engine.worst() {
             let Refined { point, optimality, bound, cost_pivot, .. } = refined;
@@ -323,6 +341,32 @@ impl Cascade<'_> {
         let modes = vec![Mode::Off; problem.sets.blocks.len()];
         let point = Point { u, z, modes };
         Ok(Some(Solved { problem, point, optimality: engine, refined: false, trusted, bound, cost_pivot: 1.0, iterations }))
+    }
+
+    /// The engine once more, as close as it gets, with its own iterative refinement: point and multipliers.
+    fn closer(&self, data: &LevelData, problem: &LevelProblem, iterations: &mut u32) -> Result<Option<(Vec<f64>, Vec<f64>)>, Stop> {
+        let reduced = self.interior_known;
+        let assembled = if reduced { assemble_reduced(problem, 0.0) } else { assemble(&self.system, data, problem, 0.0) };
+        let answer = run_careful(&assembled.program, CLOSEST, self.options.engine_iterations, self.cancel)?;
+        *iterations += answer.iterations;
+        match answer.ended {
+            Ended::Cancelled => return Err(Stop::Cancelled),
+            Ended::Infeasible => return Ok(None),
+            Ended::Solved | Ended::Inexact => {}
+        }
+        let u = if reduced {
+            answer.x[..problem.sets.d].to_vec()
+        } else {
+            self.system.space.reduce(&answer.x[..self.system.x.len()])
+        };
+        let mut z = vec![0.0; problem.sets.at.len()];
+        for (block, &from) in problem.sets.blocks.iter().zip(&assembled.first) {
+            let part = &mut z[block.first..block.first + block.len];
+            part.copy_from_slice(&answer.z[from..from + block.len]);
+            part.iter_mut().for_each(|v| *v *= problem.scale);
+            project_dual(block.kind, part);
+        }
+        Ok((largest(&u) <= FAR).then_some((u, z)))
     }
 
     fn run(&self, program: &Program) -> Result<EngineAnswer, Stop> {

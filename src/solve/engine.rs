@@ -64,6 +64,16 @@ pub(super) fn run(
     Ok(second)
 }
 
+/// Runs the engine with its own iterative refinement from the start: slower, and closer to the optimum.
+pub(super) fn run_careful(
+    program: &Program,
+    tolerance: f64,
+    iterations: u32,
+    cancel: Option<&Arc<AtomicBool>>,
+) -> Result<EngineAnswer, SolveError> {
+    run_once(program, tolerance, iterations, true, cancel)
+}
+
 fn settings(tolerance: f64, iterations: u32, careful: bool) -> Result<DefaultSettings<f64>, SolveError> {
     DefaultSettingsBuilder::default()
         .verbose(false)

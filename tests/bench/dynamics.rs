@@ -3,7 +3,6 @@
 //! writes the tree's URDF to FILE.
 
 #[path = "../common/random_tree.rs"]
-#[allow(dead_code)]
 mod random_tree;
 mod timing;
 
