@@ -282,7 +282,7 @@ impl Cascade<'_> {
 
     /// The engine, then Newton steps on what it identified. `None` where it saw no feasible point though there is one: the
     /// system then stands at a better point to start from.
-    fn with_engine(&mut self, data: &LevelData, problem: LevelProblem) -> Result<Option<Solved>, Stop> {
+    fn with_engine(&mut self, data: &LevelData, mut problem: LevelProblem) -> Result<Option<Solved>, Stop> {
         let mut iterations = 0;
         let mut trusted = false;
         let (mut u, mut z) = (vec![0.0; problem.sets.d], vec![0.0; problem.sets.at.len()]);
@@ -319,7 +319,12 @@ impl Cascade<'_> {
         let mut engine = optimality(&problem, &u, &z);
         let mut refined = sharpen(&problem, &u, &z);
         if !refined.confirmed && trusted {
-            // Where rows bind that nearly depend on each other, the active set only shows closer to the optimum.
+            // Where rows bind that nearly depend on each other, the active set only shows closer to the optimum. And what is
+            // left of the cost may be far smaller than its rows: seen by its own size, the multipliers stand out from the slacks.
+            let left = largest(&z);
+            if left > 0.0 && left < problem.scale {
+                problem.scale = left;
+            }
             if let Some((near_u, near_z)) = self.closer(data, &problem, &mut iterations)? {
                 let closer = optimality(&problem, &near_u, &near_z);
                 let again = sharpen(&problem, &near_u, &near_z);
