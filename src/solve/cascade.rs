@@ -134,6 +134,9 @@ pub fn solve(
     Ok(answer)
 }
 
+/// Coordinates and multipliers of an interior point.
+type Near = (Vec<f64>, Vec<f64>);
+
 /// Newton steps on the active set read off an interior point, damped where they do not settle.
 fn sharpen(problem: &LevelProblem, u: &[f64], z: &[f64]) -> Refined {
     let identified = classify(problem, u.to_vec(), z.to_vec());
@@ -349,7 +352,7 @@ impl Cascade<'_> {
     }
 
     /// The engine once more, as close as it gets, with its own iterative refinement: point and multipliers.
-    fn closer(&self, data: &LevelData, problem: &LevelProblem, iterations: &mut u32) -> Result<Option<(Vec<f64>, Vec<f64>)>, Stop> {
+    fn closer(&self, data: &LevelData, problem: &LevelProblem, iterations: &mut u32) -> Result<Option<Near>, Stop> {
         let reduced = self.interior_known;
         let assembled = if reduced { assemble_reduced(problem, 0.0) } else { assemble(&self.system, data, problem, 0.0) };
         let answer = run_careful(&assembled.program, CLOSEST, self.options.engine_iterations, self.cancel)?;
