@@ -10,18 +10,19 @@ mod ground;
 mod latency;
 mod limits;
 mod report;
+mod warnings;
 
 use std::sync::Arc;
 use std::sync::atomic::AtomicBool;
 
 use crate::certify;
-use crate::contact::{ContactError, Law, Rest};
+use crate::contact::ContactError;
 use crate::explain::ExplainError;
 use crate::problem::question::{DynamicsQuestion, Question};
 use crate::problem::scene::{Scene, SceneError};
 use crate::problem::{Assembly, assemble};
 use crate::solve::{self, HierarchySolution, SolveError};
-use answer::{Answer, DynamicsReport, Status, Warning};
+use answer::{Answer, DynamicsReport, Status};
 pub use latency::Response;
 
 /// Above this `omega_max T` the tick is long for the bed, and the answer warns.
@@ -123,9 +124,11 @@ fn answer(work: &Work) -> Answer {
     };
     let certificate = found.as_ref().map(|found| found.certify(work));
     let status = status(&work.solution, certificate.as_ref());
-    ground_warnings(&work.question, &ground, &mut warnings);
+    warnings::of_accuracy(status, &work.solution, certificate.as_ref(), &mut warnings);
+    warnings::of_model(&work.question, &mut warnings);
+    warnings::of_ground(&work.question, &ground, &mut warnings);
     let soles = report::soles(work, found.as_ref());
-    linearisation_warnings(&soles, &mut warnings);
+    warnings::of_linearisation(&soles, &mut warnings);
     Answer {
         status,
         motion: found.as_ref().map(|f| f.motion(work)),
@@ -164,67 +167,4 @@ fn status(solution: &HierarchySolution, certificate: Option<&certify::Certificat
 
 fn dynamics_of(question: &Question) -> DynamicsReport {
     dynamics::report(&question.model, &question.state, &question.velocity_axes, &question.gravity, &[])
-}
-
-fn ground_warnings(question: &Question, ground: &answer::GroundReport, warnings: &mut Vec<Warning>) {
-    if ground.omega_max_tick > TICK_WARNING {
-        warnings.push(Warning {
-            code: "tick-long-for-ground",
-            text: format!(
-                "omega_max T = {:.2} is above {TICK_WARNING}: the bed rings at {:.0} rad/s, and the predicted change of \
-                 wrench over one tick carries errors of tens of per cent",
-                ground.omega_max_tick, ground.omega_max
-            ),
-        });
-    }
-    if let Some(rocking) = ground.rocking
-        && rocking.bed < rocking.weight
-    {
-        warnings.push(Warning {
-            code: "bed-too-soft-to-stand",
-            text: format!(
-                "the bed's rocking stiffness {:.1} N m/rad is below m g h = {:.1} N m/rad: standing still is unstable without feedback",
-                rocking.bed, rocking.weight
-            ),
-        });
-    }
-    for contact in &question.contacts {
-        let rigid = matches!(contact.ground.law, Law::Rigid { .. });
-        if rigid && contact.ground.measured.is_none() && contact.wrench_rate.is_some() {
-            warnings.push(Warning {
-                code: "wrench-rate-unused",
-                text: format!(
-                    "{}: the rate of the wrench is not limited, because the present wrench on a rigid sole is only known when it is measured",
-                    question.model.soles[contact.sole].name
-                ),
-            });
-        }
-    }
-    let modelled_now = question.contacts.iter().any(|c| {
-        matches!(c.ground.law, Law::Bonded(_)) && c.ground.measured.is_none() && !matches!(c.ground.rest, Rest::Carries(_))
-    });
-    if modelled_now {
-        warnings.push(Warning {
-            code: "present-wrench-modelled",
-            text: "the present wrench of at least one sole comes from the ground model, not from a measurement: an error in stiffness \
-                   or rest pose enters the answer directly"
-                .into(),
-        });
-    }
-}
-
-fn linearisation_warnings(soles: &[answer::SoleAnswer], warnings: &mut Vec<Warning>) {
-    for sole in soles {
-        if let (Some([force, _]), Some(normal)) = (sole.linearisation_error, sole.normal_force)
-            && force > LINEARISATION_WARNING * normal.abs()
-        {
-            warnings.push(Warning {
-                code: "linearisation-error",
-                text: format!(
-                    "{}: at the predicted state the nonlinear law differs from the linear map by {force:.3} N, more than 1 % of the normal force {normal:.1} N",
-                    sole.name
-                ),
-            });
-        }
-    }
 }
