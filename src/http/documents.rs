@@ -9,6 +9,7 @@ use super::settings::MODELS_KEPT;
 use crate::explain::ExplainError;
 use crate::reference::answer::Status;
 use crate::reference::{self, Trouble};
+use crate::solve::SolveError;
 use crate::wire::{self, Fault, ModelSource, Refusal};
 
 /// What is asked for.
@@ -116,6 +117,17 @@ fn refusal(trouble: &Trouble) -> Refusal {
         (Trouble::Scene(_), None) => String::new(),
         (Trouble::Explain(ExplainError::Cancelled), None) => {
             return Refusal::new(504, "time-limit", "Time limit reached", "the work was called off");
+        }
+        // Finite numbers, each within its bounds, can still add up to a problem that overflows.
+        (Trouble::Solver(error) | Trouble::Explain(ExplainError::Solver(error)), None)
+            if !matches!(error, SolveError::Dimension { .. }) =>
+        {
+            return Refusal::unusable(vec![Fault {
+                pointer: String::new(),
+                expected: "numbers of sizes that can be computed with together".to_owned(),
+                got: trouble.to_string(),
+                line: None,
+            }]);
         }
         (Trouble::Solver(_) | Trouble::Explain(_), None) => {
             tracing::error!(error = %trouble, "the assembled problem was refused");
