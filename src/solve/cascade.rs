@@ -7,7 +7,7 @@ use super::engine::{Ended, EngineAnswer, Program, run, run_careful};
 use super::faces::{ensure_interior, interior_program};
 use super::free::free_directions;
 use super::infeasible::{certify, certify_equality, project_dual};
-use super::level::{LevelData, LevelProblem, assemble, assemble_reduced, reduce};
+use super::level::{Assembled, LevelData, LevelProblem, assemble, assemble_reduced, reduce};
 use super::refine::{CONFIRMED, Damping, Mode, Point, Refined, classify, optimality, refine};
 use super::system::{Contradiction, Kind, Part, Reduced, System, inside};
 use crate::conic::Hierarchy;
@@ -290,10 +290,7 @@ impl Cascade<'_> {
         let mut trusted = false;
         let (mut u, mut z) = (vec![0.0; problem.sets.d], vec![0.0; problem.sets.at.len()]);
         for pull in [0.0, PULL] {
-            // The first level is sparse; later ones have little freedom left and frozen rows that fill the matrix.
-            let reduced = self.interior_known;
-            let assembled =
-                if reduced { assemble_reduced(&problem, pull) } else { assemble(&self.system, data, &problem, pull) };
+            let assembled = self.state(data, &problem, pull);
             let answer = self.run(&assembled.program)?;
             iterations += answer.iterations;
             if answer.ended == Ended::Infeasible {
@@ -302,17 +299,7 @@ impl Cascade<'_> {
                 }
                 return self.infeasible(&problem, &assembled.first, &answer).map(|()| None);
             }
-            u = if reduced {
-                answer.x[..problem.sets.d].to_vec()
-            } else {
-                self.system.space.reduce(&answer.x[..self.system.x.len()])
-            };
-            for (block, &from) in problem.sets.blocks.iter().zip(&assembled.first) {
-                let part = &mut z[block.first..block.first + block.len];
-                part.copy_from_slice(&answer.z[from..from + block.len]);
-                part.iter_mut().for_each(|v| *v *= problem.scale);
-                project_dual(block.kind, part);
-            }
+            (u, z) = self.read_off(&problem, &assembled.first, &answer);
             trusted = answer.ended == Ended::Solved;
             // Along directions that nothing bounds an interior point runs far off; a slight pull holds it.
             if largest(&u) <= FAR {
@@ -353,8 +340,7 @@ impl Cascade<'_> {
 
     /// The engine once more, as close as it gets, with its own iterative refinement: point and multipliers.
     fn closer(&self, data: &LevelData, problem: &LevelProblem, iterations: &mut u32) -> Result<Option<Near>, Stop> {
-        let reduced = self.interior_known;
-        let assembled = if reduced { assemble_reduced(problem, 0.0) } else { assemble(&self.system, data, problem, 0.0) };
+        let assembled = self.state(data, problem, 0.0);
         let answer = run_careful(&assembled.program, CLOSEST, self.options.engine_iterations, self.cancel)?;
         *iterations += answer.iterations;
         match answer.ended {
@@ -362,19 +348,30 @@ impl Cascade<'_> {
             Ended::Infeasible => return Ok(None),
             Ended::Solved | Ended::Inexact => {}
         }
-        let u = if reduced {
+        let (u, z) = self.read_off(problem, &assembled.first, &answer);
+        Ok((largest(&u) <= FAR).then_some((u, z)))
+    }
+
+    /// The level as the engine gets it. The first is sparse; later ones have little freedom left and frozen rows that fill the matrix.
+    fn state(&self, data: &LevelData, problem: &LevelProblem, pull: f64) -> Assembled {
+        if self.interior_known { assemble_reduced(problem, pull) } else { assemble(&self.system, data, problem, pull) }
+    }
+
+    /// Point and multipliers from what the engine returned for [`Self::state`], multipliers in their dual cones.
+    fn read_off(&self, problem: &LevelProblem, first: &[usize], answer: &EngineAnswer) -> Near {
+        let u = if self.interior_known {
             answer.x[..problem.sets.d].to_vec()
         } else {
             self.system.space.reduce(&answer.x[..self.system.x.len()])
         };
         let mut z = vec![0.0; problem.sets.at.len()];
-        for (block, &from) in problem.sets.blocks.iter().zip(&assembled.first) {
+        for (block, &from) in problem.sets.blocks.iter().zip(first) {
             let part = &mut z[block.first..block.first + block.len];
             part.copy_from_slice(&answer.z[from..from + block.len]);
             part.iter_mut().for_each(|v| *v *= problem.scale);
             project_dual(block.kind, part);
         }
-        Ok((largest(&u) <= FAR).then_some((u, z)))
+        (u, z)
     }
 
     fn run(&self, program: &Program) -> Result<EngineAnswer, Stop> {
