@@ -74,6 +74,8 @@ pub(super) struct Solved {
     pub(super) trusted: bool,
     pub(super) bound: f64,
     pub(super) cost_pivot: f64,
+    /// A multiplier of a refined point below this may be rounding.
+    pub(super) noise: f64,
     pub(super) iterations: u32,
 }
 
@@ -288,6 +290,7 @@ impl Cascade<'_> {
             trusted: refined.confirmed,
             bound: refined.bound,
             cost_pivot: refined.cost_pivot,
+            noise: refined.noise,
             iterations: 0,
         })
     }
@@ -336,15 +339,15 @@ impl Cascade<'_> {
             }
         }
         if refined.confirmed {
-            let Refined { point, optimality, bound, cost_pivot, .. } = refined;
-            return Ok(Some(Solved { problem, point, optimality, refined: true, trusted: true, bound, cost_pivot, iterations }));
+            let Refined { point, optimality, bound, cost_pivot, noise, .. } = refined;
+            return Ok(Some(Solved { problem, point, optimality, refined: true, trusted: true, bound, cost_pivot, noise, iterations }));
         }
         trusted &= engine.worst() <= TRUSTED;
         // Strong convexity in the weighted residuals: |M (u - u*)|^2 is at most the gap.
         let bound = (engine.worst() * problem.size * (1.0 + largest(&z) / problem.size)).sqrt();
         let modes = vec![Mode::Off; problem.sets.blocks.len()];
         let point = Point { u, z, modes };
-        Ok(Some(Solved { problem, point, optimality: engine, refined: false, trusted, bound, cost_pivot: 1.0, iterations }))
+        Ok(Some(Solved { problem, point, optimality: engine, refined: false, trusted, bound, cost_pivot: 1.0, noise: f64::INFINITY, iterations }))
     }
 
     /// The engine once more, as close as it gets, with its own iterative refinement: point and multipliers.

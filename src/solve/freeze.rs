@@ -9,9 +9,7 @@ use super::faces::{ensure_interior, exposed, restrict};
 use super::level::LevelData;
 use super::system::{DEPENDENT, DEPENDENT_FACE, Entries, Kind};
 
-/// A multiplier below this part of the problem's size exposes nothing; the interior test decides instead.
-const EXPOSING: f64 = 1e-10;
-/// The same where the point is the engine's own.
+/// A multiplier of the engine's own below this part of the problem's size exposes nothing; the interior test decides instead.
 const EXPOSING_UNREFINED: f64 = 1e-5;
 /// A row this close to its value (scaled, per unit of row length and value) holds to rounding.
 const HOLDS: f64 = 1e-12;
@@ -140,7 +138,7 @@ impl Cascade<'_> {
     /// Appends the soft limits relaxed by their slacks, and lists the faces the level's multipliers expose.
     fn expose(&mut self, index: usize, data: &LevelData, solved: &Solved) -> Vec<(usize, FaceDecision)> {
         let (tolerance, boundary) = if solved.refined {
-            (EXPOSING.max(1e3 * solved.optimality.worst()) * solved.problem.size, ON_BOUNDARY)
+            (solved.noise, ON_BOUNDARY)
         } else {
             (EXPOSING_UNREFINED * solved.problem.size, ON_BOUNDARY_UNREFINED)
         };

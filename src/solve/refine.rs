@@ -39,6 +39,9 @@ pub(super) const CONFIRMED: f64 = 1e-10;
 
 /// A multiplier this close to the boundary of the dual cone (relative) lies on it.
 const ON_BOUNDARY: f64 = 1e-9;
+/// A multiplier below this part of the problem's size (of the largest multiplier where the proximal method found it) exposes
+/// nothing; the interior test decides instead.
+const EXPOSING: f64 = 1e-10;
 /// Slacks longer than this show their direction plainly.
 const PLAIN: f64 = 1e-6;
 /// Residual of the proximal method, in its own units, that counts as settled.
@@ -74,6 +77,8 @@ pub(super) struct Refined {
     pub cost_pivot: f64,
     /// Whether the active set settled and the optimality conditions hold.
     pub confirmed: bool,
+    /// A multiplier below this may be rounding.
+    pub noise: f64,
 }
 
 /// The equations and cost rows at one iterate.
@@ -160,14 +165,15 @@ pub(super) fn refine(problem: &LevelProblem, mut point: Point, rounds: usize) ->
                 let bound = held.stationarity.max(ROUNDING) * problem.size / pivots.cost
                     + problem.size.sqrt() * held.violation.max(ROUNDING) / pivots.equation;
                 let confirmed = optimality.worst() <= CONFIRMED;
-                return Refined { point, optimality, bound, cost_pivot: pivots.cost, confirmed };
+                let noise = EXPOSING.max(1e3 * optimality.worst()) * problem.size;
+                return Refined { point, optimality, bound, cost_pivot: pivots.cost, confirmed, noise };
             }
             Revision::Changed => {}
             Revision::Lost => break,
         }
     }
     let optimality = optimality(problem, &point.u, &point.z);
-    Refined { point, optimality, bound: f64::INFINITY, cost_pivot: 1.0, confirmed: false }
+    Refined { point, optimality, bound: f64::INFINITY, cost_pivot: 1.0, confirmed: false, noise: f64::INFINITY }
 }
 
 /// A point that the proximal method has brought to the optimum, with the active set that its multipliers show.
@@ -202,7 +208,9 @@ pub(super) fn accept(problem: &LevelProblem, near: Approached) -> Refined {
         step(problem, &point, &linear, &factor).cost_pivot
     });
     let confirmed = residual <= SETTLED && optimality.worst() <= CONFIRMED;
-    Refined { point, optimality, bound, cost_pivot, confirmed }
+    // The method's projections leave exact zeros where nothing binds, and its residual is in units of its largest multipliers.
+    let noise = EXPOSING.max(1e3 * residual) * largest(&point.z);
+    Refined { point, optimality, bound, cost_pivot, confirmed, noise }
 }
 
 /// Smallest pivots that the last step divided by.
