@@ -391,3 +391,20 @@ fn refusals_follow_their_schema() {
     assert_eq!((&document["status"], &document["code"]), (&json!(400), &json!("not-json")));
     assert!(document["faults"][0].get("line").is_none());
 }
+
+/// What was withheld is named, and so are the members of the request that are too large to compute with.
+#[test]
+fn a_withheld_answer_names_the_members_at_fault() {
+    let mut answer = answer();
+    answer.certificate.as_mut().expect("a certificate").checks[0].value = f64::NAN;
+    answer.tasks[0].desired[0] = 5.1e14;
+    let mut question = question();
+    question.external[0].wrench.force.y = -1e12;
+    let document = follows("solve-answer", &write_answer(&question, &answer, "00"));
+    let warnings = document["warnings"].as_array().expect("warnings").clone();
+    let text = warnings.iter().find(|w| w["code"] == "not-finite").expect("a warning")["text"].to_string();
+    for part in ["in certificate;", "/tasks/0", "5.1e14", "/external/0/force (1.0e12 N)"] {
+        assert!(text.contains(part), "{part}: {text}");
+    }
+    assert!(!text.contains("/state") && !text.contains("/tasks/1"), "{text}");
+}

@@ -26,6 +26,8 @@ pub(super) struct Surroundings<'a> {
     pub(super) soles: Vec<&'a str>,
     /// The contacts, in the same order.
     pub(super) contacts: &'a [Option<Contact>],
+    /// False where contacts were left out of what is read.
+    pub(super) complete: bool,
 }
 
 impl Surroundings<'_> {
@@ -43,7 +45,8 @@ impl Surroundings<'_> {
     /// the rate of momentum cannot be chosen.
     fn momentum_rate_is_given(&self) -> bool {
         let soft = |c: &Option<Contact>| c.as_ref().is_none_or(|c| matches!(c.ground.law, Law::Bonded(_)));
-        self.tick.rule == TickRule::Explicit
+        self.complete
+            && self.tick.rule == TickRule::Explicit
             && self.model.base == BaseKind::Floating
             && self.contacts.iter().all(soft)
     }
@@ -51,7 +54,7 @@ impl Surroundings<'_> {
     /// Index in `contacts` of a sole by name.
     fn contact(&self, gate: &mut Gate, at: At<'_>, name: &str) -> Option<usize> {
         let index = self.soles.iter().position(|sole| *sole == name);
-        if index.is_none() {
+        if index.is_none() && (self.complete || self.model.sole(name).is_none()) {
             let known = listed(self.soles.iter().copied());
             let got = match self.model.sole(name) {
                 Some(_) => format!("{}, which is in the air", quoted(name)),
@@ -99,7 +102,9 @@ impl TaskBody {
                 Importance::MustHold
             }
             (None, false) => {
-                gate.missing(at.name("priority"), "a priority, or must_hold: true");
+                if !gate.lacks(at.name("must_hold")) {
+                    gate.missing(at.name("priority"), "a priority, or must_hold: true");
+                }
                 Importance::MustHold
             }
         }

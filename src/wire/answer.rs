@@ -12,6 +12,7 @@ use super::report::{BindingOut, BlockingOut, CertificateOut, FreeOut, GroundOut,
 use super::sensitivity::SensitivityOut;
 use super::spread::SpreadOut;
 use super::uniqueness::UniquenessOut;
+use super::withheld;
 use crate::model::Model;
 use crate::problem::question::Question;
 use crate::reference::answer::{Answer, Motion, SoleAnswer, Status, TaskAnswer};
@@ -208,7 +209,7 @@ pub(super) fn write(question: &Question, answer: &Answer, fingerprint: &str) -> 
     match serde_json::to_vec(&document) {
         Ok(bytes) => bytes,
         Err(error) => {
-            let text = format!("the answer is withheld: {error}");
+            let text = withheld::reason(question, answer, &document.not_finite(), &error.to_string());
             let withheld = document.withheld(&text);
             serde_json::to_vec(&withheld).unwrap_or_else(|_| b"{\"status\":\"inaccurate\"}".to_vec())
         }
@@ -248,6 +249,22 @@ impl<'a> AnswerOut<'a> {
             sensitivity: answer.sensitivity.as_deref().map(|found| SensitivityOut::of(question, answer, found)),
             spread: answer.spread.as_deref().map(|spread| SpreadOut::of(&question.model, answer, spread)),
         }
+    }
+
+    /// The parts that hold a number that is not finite.
+    fn not_finite(&self) -> Vec<&'static str> {
+        fn bad<T: Serialize>(name: &'static str, part: &T) -> Option<&'static str> {
+            serde_json::to_vec(part).is_err().then_some(name)
+        }
+        let parts = [
+            bad("joints", &self.joints), bad("base_acceleration", &self.base_acceleration), bad("soles", &self.soles),
+            bad("tasks", &self.tasks), bad("levels", &self.levels), bad("binding", &self.binding),
+            bad("margins", &self.margins), bad("free", &self.free), bad("certificate", &self.certificate),
+            bad("blocking", &self.blocking), bad("ground", &self.ground), bad("problem", &self.problem),
+            bad("dynamics", &self.dynamics), bad("explained", &self.explained), bad("uniqueness", &self.uniqueness),
+            bad("sensitivity", &self.sensitivity), bad("spread", &self.spread),
+        ];
+        parts.into_iter().flatten().collect()
     }
 
     fn withheld(self, text: &'a str) -> Self {
