@@ -3,9 +3,9 @@
 use super::common::{LinearAngularGainBody, WrenchBody};
 use super::friction::positive;
 use super::gate::{At, Gate, listed, quoted};
+use super::joints::{JointList, Named};
 use super::kinds::given;
-use super::limit::MAX_JOINTS;
-use super::state::{frame_index, joint_index};
+use super::state::frame_index;
 use super::task::{
     AxisBody, GainsBody, TASK_JOINT_KINDS, TASK_KINDS, TaskBody, TaskJointBody, TaskKindBody,
 };
@@ -314,35 +314,19 @@ impl TaskBody {
         model: &Model,
         read: impl Fn(usize, &Joint, &TaskJointBody) -> T,
     ) -> Vec<T> {
-        let mut out = Vec::new();
-        let list = at.name("joints");
-        let Some(entries) = &self.joints else { return out };
-        if entries.is_empty() {
-            gate.fault(list, "at least one joint", "none");
-        }
-        if !gate.at_most(list, entries.len(), MAX_JOINTS, "joints") {
-            return out;
-        }
-        let mut seen = vec![false; model.joints.len()];
-        for (k, entry) in entries.iter().enumerate() {
-            let here = list.index(k);
+        let Some(entries) = &self.joints else { return Vec::new() };
+        let list = JointList { at: at.name("joints"), model, actuated: self.kind == TaskKindBody::Effort };
+        let check = |gate: &mut Gate, here: At<'_>, entry: &TaskJointBody| {
             let given = given!(entry, position, velocity, acceleration, torque);
             TASK_JOINT_KINDS.check(gate, here, self.kind.word(), &given);
-            let name = here.name("name");
-            let Some(i) = joint_index(gate, name, model, &entry.name, k) else { continue };
-            let Some(joint) = model.joints.get(i) else { continue };
-            if let Some(seen) = seen.get_mut(i)
-                && std::mem::replace(seen, true)
-            {
-                gate.fault(name, "each joint once", format!("{} again", quoted(&entry.name)));
-            }
-            if self.kind == TaskKindBody::Effort && !joint.actuated {
-                let got = format!("{}, which is passive", quoted(&entry.name));
-                gate.fault(name, "the name of an actuated joint", got);
-            }
-            out.push(read(i, joint, entry));
-        }
-        out
+        };
+        list.read(gate, entries, check, |_, _, i, joint, entry| Some(read(i, joint, entry)))
+    }
+}
+
+impl Named for TaskJointBody {
+    fn name(&self) -> &str {
+        &self.name
     }
 }
 

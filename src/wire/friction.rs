@@ -4,7 +4,7 @@ use schemars::JsonSchema;
 use serde::Deserialize;
 
 use super::common::Whole;
-use super::gate::{At, Gate};
+use super::gate::{At, Gate, number};
 use super::treatment::{TreatmentBody, treatment};
 use crate::problem::question::{Friction, FrictionSet, NormalForce, WrenchRate};
 
@@ -165,7 +165,7 @@ impl WrenchRateBody {
 pub(super) fn positive(gate: &mut Gate, at: At<'_>, value: f64, most: f64, unit: &str) {
     if !(value > 0.0 && value <= most) {
         let space = if unit.is_empty() { "" } else { " " };
-        let expected = format!("a number above 0 and not above {most}{space}{unit}");
-        gate.fault(at, expected, value.to_string());
+        let expected = format!("a number above 0 and not above {}{space}{unit}", number(most));
+        gate.fault(at, expected, number(value));
     }
 }

@@ -93,6 +93,19 @@ impl Gate {
         self.note(fault);
     }
 
+    /// Faults kept so far.
+    pub(super) fn kept(&self) -> usize {
+        self.faults.len()
+    }
+
+    /// Lets the faults kept since `before` point here: what is wrong comes from elsewhere, as `whence` says.
+    pub(super) fn gather(&mut self, before: usize, at: At<'_>, whence: &str) {
+        for fault in self.faults.iter_mut().skip(before) {
+            fault.pointer = self.gaps.original(&at.pointer());
+            fault.got = format!("{} {whence}", fault.got);
+        }
+    }
+
     /// True where parts of the request were left out.
     pub(super) fn partial(&self) -> bool {
         !self.gaps.is_empty()
@@ -118,7 +131,8 @@ impl Gate {
         // Written so that NaN is refused as well.
         if !(least..=largest).contains(&value) {
             let space = if unit.is_empty() { "" } else { " " };
-            self.fault(at, format!("a number from {least} to {largest}{space}{unit}"), value.to_string());
+            let expected = format!("a number from {} to {}{space}{unit}", number(least), number(largest));
+            self.fault(at, expected, number(value));
         }
         value
     }
@@ -186,6 +200,12 @@ impl Gate {
             _ => refusal,
         }
     }
+}
+
+/// A number in few digits, with an exponent where it is far from 1.
+pub(super) fn number(value: f64) -> String {
+    let plain = value == 0.0 || (1e-4..1e7).contains(&value.abs()) || !value.is_finite();
+    if plain { value.to_string() } else { format!("{value:e}") }
 }
 
 /// A foreign text in quotation marks, cut to a length fit for a message.

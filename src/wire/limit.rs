@@ -4,9 +4,9 @@ use schemars::JsonSchema;
 use serde::Deserialize;
 
 use super::gate::{At, Gate, quoted};
+use super::joints::{JointList, Named};
 use super::kinds::{KindRule, KindTable, given};
 use super::solve::{MAX_NAME, TICK};
-use super::state::joint_index;
 use super::strict::MAX_MAGNITUDE;
 use super::treatment::{TreatmentBody, treatment};
 use crate::model::{Joint, MAX_MOVING_JOINTS, Model};
@@ -112,6 +112,12 @@ struct LimitJointBody {
     coefficient: Option<f64>,
 }
 
+impl Named for LimitJointBody {
+    fn name(&self) -> &str {
+        &self.name
+    }
+}
+
 impl LimitJointBody {
     fn named(name: &str) -> Self {
         LimitJointBody {
@@ -203,11 +209,13 @@ impl LimitBody {
         model: &Model,
         read: impl Fn(&mut Gate, At<'_>, usize, &Joint, &LimitJointBody) -> Option<T>,
     ) -> Vec<T> {
-        let mut out = Vec::new();
         let Some(entries) = &self.joints else {
+            let mut out = Vec::new();
             for (i, joint) in model.joints.iter().enumerate() {
                 if self.kind.in_model(joint) {
+                    let before = gate.kept();
                     out.extend(read(gate, at, i, joint, &LimitJointBody::named(&joint.name)));
+                    gate.gather(before, at, &format!("from the model's joint {}", quoted(&joint.name)));
                 }
             }
             if out.is_empty() && self.kind != LimitKindBody::CoupledTorque {
@@ -215,33 +223,12 @@ impl LimitBody {
             }
             return out;
         };
-        if entries.is_empty() {
-            gate.fault(at, "at least one joint", "none");
-        }
-        if !gate.at_most(at, entries.len(), MAX_JOINTS, "joints") {
-            return out;
-        }
-        let mut seen = vec![false; model.joints.len()];
-        for (k, entry) in entries.iter().enumerate() {
-            let here = at.index(k);
-            let given =
-                given!(entry, bound, lower, upper, stall, no_load_speed, coefficient);
+        let list = JointList { at, model, actuated: self.kind.on_torque() };
+        let check = |gate: &mut Gate, here: At<'_>, entry: &LimitJointBody| {
+            let given = given!(entry, bound, lower, upper, stall, no_load_speed, coefficient);
             ENTRY_KINDS.check(gate, here, self.kind.word(), &given);
-            let name = here.name("name");
-            let Some(i) = joint_index(gate, name, model, &entry.name, k) else { continue };
-            let Some(joint) = model.joints.get(i) else { continue };
-            if let Some(seen) = seen.get_mut(i)
-                && std::mem::replace(seen, true)
-            {
-                gate.fault(name, "each joint once", format!("{} again", quoted(&entry.name)));
-            }
-            if self.kind.on_torque() && !joint.actuated {
-                let got = format!("{}, which is passive", quoted(&entry.name));
-                gate.fault(name, "the name of an actuated joint", got);
-            }
-            out.extend(read(gate, here, i, joint, entry));
-        }
-        out
+        };
+        list.read(gate, entries, check, read)
     }
 }
 

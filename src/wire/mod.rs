@@ -13,6 +13,7 @@ mod extras;
 mod friction;
 mod gaps;
 mod gate;
+mod joints;
 mod kinds;
 mod limit;
 mod model;
