@@ -202,12 +202,16 @@ struct WarningOut<'a> {
     text: &'a str,
 }
 
+/// Room to begin with (bytes): an answer for two soles and some twenty joints.
+const USUAL_LENGTH: usize = 32 * 1024;
+
 /// The document. Should a number not be finite, it is withheld with all others: the status then is
 /// `inaccurate` and a warning says so.
 pub(super) fn write(question: &Question, answer: &Answer, fingerprint: &str) -> Vec<u8> {
     let document = AnswerOut::of(question, answer, fingerprint);
-    match serde_json::to_vec(&document) {
-        Ok(bytes) => bytes,
+    let mut bytes = Vec::with_capacity(USUAL_LENGTH);
+    match serde_json::to_writer(&mut bytes, &document) {
+        Ok(()) => bytes,
         Err(error) => {
             let text = withheld::reason(question, answer, &document.not_finite(), &error.to_string());
             let withheld = document.withheld(&text);

@@ -215,7 +215,9 @@ impl LimitBody {
                 if self.kind.in_model(joint) {
                     let before = gate.kept();
                     out.extend(read(gate, at, i, joint, &LimitJointBody::named(&joint.name)));
-                    gate.gather(before, at, &format!("from the model's joint {}", quoted(&joint.name)));
+                    if gate.kept() > before {
+                        gate.gather(before, at, &format!("from the model's joint {}", quoted(&joint.name)));
+                    }
                 }
             }
             if out.is_empty() && self.kind != LimitKindBody::CoupledTorque {

@@ -54,6 +54,13 @@ use second::Document;
 pub trait ModelSource {
     /// The model with this id, if it is still kept.
     fn find(&self, id: &str) -> Option<Arc<Model>>;
+
+    /// The model that a request describes itself: the one made from the same description before, or else what `make`
+    /// makes of it. `key`: a hash of the description.
+    fn described(&self, key: &[u8; 32], make: &mut dyn FnMut() -> Option<Arc<Model>>) -> Option<Arc<Model>> {
+        let _ = key;
+        make()
+    }
 }
 
 /// The largest request body (bytes).

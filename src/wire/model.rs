@@ -1,7 +1,11 @@
 //! A robot in a request.
 
+use std::fmt::{self, Write as _};
+use std::sync::Arc;
+
 use schemars::JsonSchema;
 use serde::Deserialize;
+use sha2::{Digest, Sha256};
 
 use super::common::{Format, pose};
 use super::gate::{At, Gate, push_token};
@@ -158,7 +162,33 @@ impl Request for ModelRequest {
     }
 }
 
+/// Hashes what is written to it.
+struct Hashed(Sha256);
+
+impl fmt::Write for Hashed {
+    fn write_str(&mut self, text: &str) -> fmt::Result {
+        self.0.update(text.as_bytes());
+        Ok(())
+    }
+}
+
 impl InlineModel {
+    /// The robot described at this place of the request, which is not read anew where the source has kept it.
+    pub(super) fn find(&self, gate: &mut Gate, at: At<'_>, models: &dyn ModelSource) -> Option<Arc<Model>> {
+        if gate.partial() {
+            return self.read(gate, at).map(Arc::new);
+        }
+        models.described(&self.key(), &mut || self.read(gate, at).map(Arc::new))
+    }
+
+    /// A hash of everything in the description, the URDF's text as it stands.
+    fn key(&self) -> [u8; 32] {
+        let mut hash = Hashed(Sha256::new());
+        // Writing to a hash cannot fail; numbers are written so that different ones differ.
+        let _ = write!(hash, "{}:{}{:?}{:?}{:?}", self.urdf.len(), self.urdf, self.fixed_base, self.soles, self.joints);
+        hash.0.finalize().into()
+    }
+
     /// The robot described at this place of the request; none where it cannot be used. Where a part of it was left out, the
     /// rest describes another robot, of which only the options are looked at.
     pub(super) fn read(&self, gate: &mut Gate, at: At<'_>) -> Option<Model> {

@@ -254,7 +254,7 @@ fn find(
     let at = At::ROOT;
     let here = at.name("model");
     let id = match model {
-        TextOr::Object(inline) => return Ok(inline.read(gate, here).map(Arc::new)),
+        TextOr::Object(inline) => return Ok(inline.find(gate, here, models)),
         TextOr::Text(id) => id,
     };
     let found = models.find(id);
