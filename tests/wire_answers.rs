@@ -269,6 +269,11 @@ fn answers_follow_their_schema() {
     let document = follows("solve-answer", &write_answer(&question, &answer, "f00d"));
     assert_eq!(document["status"], "solved");
     assert_eq!(document["fingerprint"], "f00d");
+    let tick = json!({ "length": 0.005, "rule": "backward_euler", "rule_by_default": false });
+    assert_eq!(document["tick"], tick);
+    let mut unnamed = question.clone();
+    unnamed.tick.chosen = false;
+    assert_eq!(follows("solve-answer", &write_answer(&unnamed, &answer, "00"))["tick"]["rule_by_default"], true);
     assert_eq!(document["velocity_axes"], json!({ "linear": "world", "angular": "base" }));
     assert_eq!(document["joints"][1], json!({ "name": "r_knee", "torque": 1.0, "acceleration": -0.5 }));
     let matrix = &document["problem"]["hard"]["matrix"];

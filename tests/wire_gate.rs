@@ -428,3 +428,18 @@ fn a_flat_polygon_is_told_what_is_wrong_with_it() {
     let refusal = refusal(&bytes(&with("/model/soles/0/vertices", crossed)));
     assert!(refusal.faults[0].got.contains("not strictly convex"), "{refusal:?}");
 }
+
+/// A tick without a rule is held, and the question remembers that nobody chose it.
+#[test]
+fn the_default_tick_rule_is_held() {
+    use underfoot::contact::TickRule;
+    let tick = |request: &Value| read_solve(&bytes(request), &Nothing).expect("the request is good").tick;
+    let default = tick(&without("/tick/rule"));
+    assert_eq!((default.rule, default.chosen), (TickRule::Held, false));
+    for (name, rule) in [
+        ("held", TickRule::Held), ("backward_euler", TickRule::BackwardEuler), ("trapezoid", TickRule::Trapezoid),
+    ] {
+        let named = tick(&with("/tick/rule", json!(name)));
+        assert_eq!((named.rule, named.chosen), (rule, true));
+    }
+}

@@ -10,11 +10,12 @@ use super::export::ProblemOut;
 use super::number::{LinearAngularOut, Number, Numbers, Tuple, WrenchOut};
 use super::report::{BindingOut, BlockingOut, CertificateOut, FreeOut, GroundOut, LevelOut, MarginOut};
 use super::sensitivity::SensitivityOut;
+use super::solve::RuleBody;
 use super::spread::SpreadOut;
 use super::uniqueness::UniquenessOut;
 use super::withheld;
 use crate::model::Model;
-use crate::problem::question::Question;
+use crate::problem::question::{Question, Tick};
 use crate::reference::answer::{Answer, Motion, SoleAnswer, Status, TaskAnswer};
 
 /// How a request ended. `solved`: the certificate holds. `infeasible`: no answer obeys what must
@@ -52,6 +53,8 @@ pub(super) struct AnswerOut<'a> {
     status: StatusOut,
     /// Id of the model, carried loads included (no unit).
     model: &'a str,
+    /// The control tick (s), and the rule by which the wrench over it was predicted.
+    tick: TickOut,
     /// Axes of `base_acceleration` (m/s^2, rad/s^2), as the request gave them.
     velocity_axes: AxesOut,
     /// Torque and acceleration of every moving joint in model order (N m, rad/s^2; N, m/s^2); null
@@ -192,6 +195,24 @@ pub(super) struct TaskOut<'a> {
     residual: Numbers<'a>,
 }
 
+/// The control tick of an answer.
+#[derive(Debug, Clone, Copy, Serialize, JsonSchema)]
+#[schemars(rename = "TickAnswer")]
+struct TickOut {
+    /// Length T (s).
+    length: Number,
+    /// Tick rule (no unit): `held`, `backward_euler`, `trapezoid` or `explicit`.
+    rule: RuleBody,
+    /// True where the request named no rule, so that the default was taken (no unit).
+    rule_by_default: bool,
+}
+
+impl From<Tick> for TickOut {
+    fn from(tick: Tick) -> Self {
+        TickOut { length: Number(tick.length), rule: tick.rule.into(), rule_by_default: !tick.chosen }
+    }
+}
+
 /// A remark.
 #[derive(Debug, Clone, Serialize, JsonSchema)]
 #[schemars(rename = "Warning")]
@@ -229,6 +250,7 @@ impl<'a> AnswerOut<'a> {
             fingerprint,
             status: answer.status.into(),
             model: &question.model.id,
+            tick: question.tick.into(),
             velocity_axes: question.velocity_axes.into(),
             joints: motion.map(|motion| JointOut::all(&question.model, motion)),
             base_acceleration: motion.and_then(|motion| motion.base_acceleration).map(Into::into),

@@ -3,7 +3,7 @@
 use std::sync::Arc;
 
 use schemars::JsonSchema;
-use serde::Deserialize;
+use serde::{Deserialize, Serialize};
 
 use super::{ModelSource, Request};
 use super::aim::Surroundings;
@@ -89,16 +89,16 @@ struct TickBody {
     /// Length T, 1e-6 to 1 (s).
     #[schemars(extend("minimum" = TICK.0, "maximum" = TICK.1))]
     length: f64,
-    /// How the wrench over the tick follows from the acceleration (no unit): `backward_euler`
-    /// (default), `trapezoid`, `explicit` or `held` (the contact motion of all soft soles solved exactly).
+    /// How the wrench over the tick follows from the acceleration (no unit): `held` (the contact motion of all soft soles
+    /// solved exactly), `backward_euler`, `trapezoid` or `explicit`; `held` when left out.
     rule: Option<RuleBody>,
 }
 
 /// Tick rules.
-#[derive(Debug, Clone, Copy, Deserialize, JsonSchema)]
+#[derive(Debug, Clone, Copy, Deserialize, Serialize, JsonSchema)]
 #[serde(rename_all = "snake_case")]
 #[schemars(inline)]
-enum RuleBody {
+pub(super) enum RuleBody {
     BackwardEuler,
     Trapezoid,
     Explicit,
@@ -229,18 +229,29 @@ impl Request for DynamicsRequest {
     }
 }
 
+impl From<TickRule> for RuleBody {
+    fn from(rule: TickRule) -> Self {
+        match rule {
+            TickRule::BackwardEuler => RuleBody::BackwardEuler,
+            TickRule::Trapezoid => RuleBody::Trapezoid,
+            TickRule::Explicit => RuleBody::Explicit,
+            TickRule::Held => RuleBody::Held,
+        }
+    }
+}
+
 impl TickBody {
     fn read(&self, gate: &mut Gate, at: At<'_>) -> Tick {
         let length = gate.within(at.name("length"), self.length, TICK.0, TICK.1, "s");
         let rule = match self.rule {
-            None | Some(RuleBody::BackwardEuler) => TickRule::BackwardEuler,
+            None | Some(RuleBody::Held) => TickRule::Held,
+            Some(RuleBody::BackwardEuler) => TickRule::BackwardEuler,
             Some(RuleBody::Trapezoid) => TickRule::Trapezoid,
             Some(RuleBody::Explicit) => TickRule::Explicit,
-            Some(RuleBody::Held) => TickRule::Held,
         };
         // A tick that was refused still has to serve the checks that follow: the shortest makes none of them fail.
         let length = if (TICK.0..=TICK.1).contains(&length) { length } else { TICK.0 };
-        Tick { length, rule }
+        Tick { length, rule, chosen: self.rule.is_some() }
     }
 }
 
