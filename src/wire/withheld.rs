@@ -28,7 +28,7 @@ fn large_members(question: &Question, answer: &Answer) -> Vec<(String, String)> 
         let rows = task.rows.iter().zip(&task.units).zip(&task.desired);
         let largest = rows.max_by(|a, b| a.1.abs().total_cmp(&b.1.abs()));
         if let Some(((row, unit), desired)) = largest
-            && !(desired.abs() <= LARGE)
+            && (desired.is_nan() || desired.abs() > LARGE)
         {
             found.push((format!("/tasks/{i}"), format!("{:?} wants {desired:.1e} {unit} in {row}", task.name)));
         }
