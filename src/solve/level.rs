@@ -6,7 +6,8 @@
 
 use super::engine::Program;
 use super::rank::Factor;
-use super::system::{Entries, Kind, Reduced, ReducedBlock, System, blocks_of};
+use super::dense::norm;
+use super::system::{DEPENDENT, Entries, Kind, Reduced, ReducedBlock, System, blocks_of};
 use crate::conic::{Cone, ConicRows, Level, ResidualRows, SparseRows};
 
 /// The parts of a level that are solved for; the tie-break is a level without soft limits.
@@ -213,9 +214,11 @@ pub(super) fn reduce(system: &System, sets: Reduced, data: &LevelData) -> LevelP
         problem.residual.resize(start + d, 0.0);
         let out = &mut problem.residual[start..];
         system.space.project(Entries::new(&residuals.matrix, i), out);
-        out.iter_mut().for_each(|v| *v *= root);
-        problem.residual_at.push(root * (residuals.matrix.row_dot(i, &system.x) - residuals.rhs[i]));
         let length: f64 = residuals.matrix.row(i).map(|(_, v)| v * v).sum();
+        // What is left of a row that the freezing of levels would call dependent is rounding: nothing here may move along it.
+        let root_here = if norm(out) <= DEPENDENT * length.sqrt() { 0.0 } else { root };
+        out.iter_mut().for_each(|v| *v *= root_here);
+        problem.residual_at.push(root * (residuals.matrix.row_dot(i, &system.x) - residuals.rhs[i]));
         problem.residual_length.push(root * length.sqrt());
         problem.size = problem.size.max(2.0 * residuals.weight[i] * length);
     }

@@ -52,7 +52,7 @@ const ROUNDING: f64 = 1e-15;
 const LEVEL: f64 = 0.5;
 const MAX_TRIES: usize = 40;
 /// A cost row counts as dependent below this relative length.
-const DEPENDENT: f64 = 1e-12;
+const DEPENDENT: f64 = 1e-10;
 /// Shortest residual taken for a unit, of the root of the problem's size.
 const SHORTEST: f64 = 1e-7;
 

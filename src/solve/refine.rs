@@ -39,8 +39,7 @@ pub(super) const CONFIRMED: f64 = 1e-10;
 
 /// A multiplier this close to the boundary of the dual cone (relative) lies on it.
 const ON_BOUNDARY: f64 = 1e-9;
-/// A multiplier below this part of the problem's size (of the largest multiplier where the proximal method found it) exposes
-/// nothing; the interior test decides instead.
+/// A multiplier below this part of the largest exposes nothing; the interior test decides instead.
 const EXPOSING: f64 = 1e-10;
 /// Slacks longer than this show their direction plainly.
 const PLAIN: f64 = 1e-6;
@@ -165,7 +164,8 @@ pub(super) fn refine(problem: &LevelProblem, mut point: Point, rounds: usize) ->
                 let bound = held.stationarity.max(ROUNDING) * problem.size / pivots.cost
                     + problem.size.sqrt() * held.violation.max(ROUNDING) / pivots.equation;
                 let confirmed = optimality.worst() <= CONFIRMED;
-                let noise = EXPOSING.max(1e3 * optimality.worst()) * problem.size;
+                let rounding = 1e1 * optimality.worst().max(ROUNDING) * problem.size / pivots.equation;
+                let noise = rounding.max(EXPOSING * largest(&point.z));
                 return Refined { point, optimality, bound, cost_pivot: pivots.cost, confirmed, noise };
             }
             Revision::Changed => {}
