@@ -4,8 +4,8 @@ use std::fs;
 use std::path::{Path, PathBuf};
 
 /// Modules in order; each may use only those above it.
-const ORDER: [&str; 13] = [
-    "spatial", "conic", "model", "dynamics", "contact", "problem", "solve", "certify", "explain", "reference", "wire", "http", "cli",
+const ORDER: [&str; 14] = [
+    "spatial", "conic", "model", "dynamics", "contact", "problem", "solve", "certify", "explain", "reference", "cases", "wire", "http", "cli",
 ];
 
 /// Modules that stand above but must not be used all the same: (user, used).

@@ -2,6 +2,7 @@
 //!
 //! Exit codes, the same for every command: 0 good, 1 the answer is bad news, 2 unusable input.
 
+mod batch;
 mod demo;
 mod dynamics;
 mod files;
@@ -35,6 +36,8 @@ enum Command {
     Solve(solve::Solve),
     /// Rigid-body terms of a state from a file; prints what POST /v1/dynamics answers.
     Dynamics(dynamics::Dynamics),
+    /// Answer many states, one JSON line each; prints what POST /v1/batch answers.
+    Batch(batch::Batch),
     /// List the JSON Schemas, or print one.
     Schemas(schemas::Schemas),
     /// Show the whole path on a built-in scenario, through a real service.
@@ -68,6 +71,7 @@ pub fn main() -> ExitCode {
         Command::Serve(command) => command.run(),
         Command::Solve(command) => command.run(),
         Command::Dynamics(command) => command.run(),
+        Command::Batch(command) => command.run(),
         Command::Schemas(command) => command.run(),
         Command::Demo(command) => command.run(),
     }

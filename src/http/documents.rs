@@ -4,6 +4,7 @@ use std::sync::Arc;
 use std::sync::atomic::AtomicBool;
 use std::time::{Duration, Instant};
 
+use super::lines::LineWork;
 use super::models::Models;
 use super::settings::MODELS_KEPT;
 use crate::explain::ExplainError;
@@ -42,6 +43,12 @@ pub trait Work: Send + Sync + 'static {
     /// A refusal names what is wrong with the request.
     fn run(&self, errand: Errand, body: &[u8], cancel: &Arc<AtomicBool>) -> Result<Document, Refusal>;
 
+    /// Opens a batch by its first line.
+    ///
+    /// # Errors
+    /// A refusal names what is wrong with the line.
+    fn open(&self, head: &[u8]) -> Result<Arc<dyn LineWork>, Refusal>;
+
     /// The document of a registered model.
     fn model(&self, id: &str) -> Option<Vec<u8>>;
 }
@@ -62,9 +69,13 @@ impl Work for Catalogue {
     fn run(&self, errand: Errand, body: &[u8], cancel: &Arc<AtomicBool>) -> Result<Document, Refusal> {
         match errand {
             Errand::Register => self.register(body),
-            Errand::Dynamics => self.dynamics(body),
-            Errand::Solve => self.solve(body, cancel),
+            Errand::Dynamics => dynamics(body, &self.models),
+            Errand::Solve => solve(body, &self.models, cancel),
         }
+    }
+
+    fn open(&self, head: &[u8]) -> Result<Arc<dyn LineWork>, Refusal> {
+        Ok(Arc::new(wire::Batch::open(head, &self.models)?))
     }
 
     fn model(&self, id: &str) -> Option<Vec<u8>> {
@@ -82,31 +93,39 @@ impl Catalogue {
         clock.lap("write");
         Ok(Document { body, model: Some(model.id.clone()), timings: clock.laps })
     }
+}
 
-    fn dynamics(&self, body: &[u8]) -> Result<Document, Refusal> {
-        let mut clock = Clock::start();
-        let question = wire::read_dynamics(body, &self.models)?;
-        clock.lap("read");
-        let report = reference::dynamics(&question);
-        clock.lap("dynamics");
-        let body = wire::write_dynamics(&question, &report, &wire::fingerprint(body));
-        clock.lap("write");
-        Ok(Document { body, model: None, timings: clock.laps })
-    }
+/// The document of a dynamics request.
+///
+/// # Errors
+/// A refusal names what is wrong with the request.
+pub(super) fn dynamics(body: &[u8], models: &dyn ModelSource) -> Result<Document, Refusal> {
+    let mut clock = Clock::start();
+    let question = wire::read_dynamics(body, models)?;
+    clock.lap("read");
+    let report = reference::dynamics(&question);
+    clock.lap("dynamics");
+    let body = wire::write_dynamics(&question, &report, &wire::fingerprint(body));
+    clock.lap("write");
+    Ok(Document { body, model: None, timings: clock.laps })
+}
 
-    fn solve(&self, body: &[u8], cancel: &Arc<AtomicBool>) -> Result<Document, Refusal> {
-        let mut clock = Clock::start();
-        let question = wire::read_solve(body, &self.models)?;
-        clock.lap("read");
-        let answer = reference::solve(&question, cancel).map_err(|trouble| refusal(&trouble))?;
-        if answer.status == Status::Cancelled {
-            return Err(Refusal::new(504, "time-limit", "Time limit reached", "the work was called off"));
-        }
-        clock.lap("solve");
-        let body = wire::write_answer(&question, &answer, &wire::fingerprint(body));
-        clock.lap("write");
-        Ok(Document { body, model: None, timings: clock.laps })
+/// The document of a solve request; stops soon after `cancel` is raised.
+///
+/// # Errors
+/// A refusal names what is wrong with the request.
+pub(super) fn solve(body: &[u8], models: &dyn ModelSource, cancel: &Arc<AtomicBool>) -> Result<Document, Refusal> {
+    let mut clock = Clock::start();
+    let question = wire::read_solve(body, models)?;
+    clock.lap("read");
+    let answer = reference::solve(&question, cancel).map_err(|trouble| refusal(&trouble))?;
+    if answer.status == Status::Cancelled {
+        return Err(Refusal::new(504, "time-limit", "Time limit reached", "the work was called off"));
     }
+    clock.lap("solve");
+    let body = wire::write_answer(&question, &answer, &wire::fingerprint(body));
+    clock.lap("write");
+    Ok(Document { body, model: None, timings: clock.laps })
 }
 
 /// A question that passed the gate and yet leads nowhere: the member at fault is named where there is one.

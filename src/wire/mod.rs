@@ -3,6 +3,7 @@
 
 mod aim;
 mod answer;
+mod batch;
 mod canonical;
 mod common;
 mod contact;
@@ -40,6 +41,7 @@ use crate::model::Model;
 use crate::problem::question::{DynamicsQuestion, Question};
 use crate::reference::answer::{Answer, DynamicsReport};
 
+pub use batch::{Batch, Entry, Operation, batch_problem, batch_summary, line_too_long};
 pub use canonical::{canonical, fingerprint};
 pub use openapi::openapi;
 pub use refusal::{Fault, Refusal};

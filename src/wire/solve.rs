@@ -132,6 +132,11 @@ pub(super) struct DynamicsRequest {
 }
 
 impl SolveRequest {
+    /// The model alone.
+    pub(super) fn model(&self, models: &dyn ModelSource) -> Result<Arc<Model>, Refusal> {
+        find(&self.model, models)
+    }
+
     /// The question.
     pub(super) fn read(self, models: &dyn ModelSource) -> Result<Question, Refusal> {
         let mut gate = Gate::default();
@@ -195,6 +200,11 @@ impl SolveRequest {
 }
 
 impl DynamicsRequest {
+    /// The model alone.
+    pub(super) fn model(&self, models: &dyn ModelSource) -> Result<Arc<Model>, Refusal> {
+        find(&self.model, models)
+    }
+
     /// The question.
     pub(super) fn read(self, models: &dyn ModelSource) -> Result<DynamicsQuestion, Refusal> {
         let mut gate = Gate::default();

@@ -2,17 +2,20 @@
 
 from . import build, limits, tasks
 from .answer import Answer, Dynamics, FrameTerms, Sole, Task
+from .batch import Batch, Line
 from .client import Client, Model
 from .errors import Busy, Fault, Garbled, NotFinite, Refused, UnderfootError, Unreachable
 
 __all__ = [
     "Answer",
+    "Batch",
     "Busy",
     "Client",
     "Dynamics",
     "Fault",
     "FrameTerms",
     "Garbled",
+    "Line",
     "Model",
     "NotFinite",
     "Refused",
