@@ -85,6 +85,7 @@ async fn pump(shared: Arc<Shared>, mut lines: Lines, work: Arc<dyn LineWork>, ou
         if let (Some(end), true) = (ended, flights.is_empty()) {
             break end;
         }
+        let room = flights.len() < window;
         tokio::select! {
             () = out.closed() => return,
             done = first(&mut flights), if !flights.is_empty() => {
@@ -95,10 +96,12 @@ async fn pump(shared: Arc<Shared>, mut lines: Lines, work: Arc<dyn LineWork>, ou
                 }
                 lines.restart();
             }
-            next = lines.next(), if ended.is_none() && flights.len() < window => match next {
+            next = lines.next_if(room), if ended.is_none() => match next {
                 Next::Line(line) => flights.push_back(start(&shared, &work, line, lines.limit())),
+                // Nobody is there to read the rest.
+                Next::End(End::Broken) => return,
                 Next::End(end) => ended = Some(end),
-            }
+            },
         }
     };
     // A client that is gone does not miss it.

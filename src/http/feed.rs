@@ -23,7 +23,7 @@ pub enum Next {
     End(End),
 }
 
-/// The lines of a request body. Holds one line and one frame at most.
+/// The lines of a request body. Holds one line and two frames at most.
 #[derive(Debug)]
 pub struct Lines {
     body: Body,
@@ -31,12 +31,14 @@ pub struct Lines {
     idle: Duration,
     deadline: Instant,
     read: bool,
+    /// A frame read while no line was wanted.
+    ahead: Option<Bytes>,
 }
 
 impl Lines {
     /// Lines of at most `limit` bytes; `idle` is the time a whole line may take to come.
     pub fn new(body: Body, limit: usize, idle: Duration) -> Self {
-        Lines { body, splitter: Splitter::new(limit), idle, deadline: Instant::now() + idle, read: false }
+        Lines { body, splitter: Splitter::new(limit), idle, deadline: Instant::now() + idle, read: false, ahead: None }
     }
 
     /// Changes the limit for the lines to come.
@@ -61,21 +63,43 @@ impl Lines {
                 self.restart();
                 return Next::Line(line);
             }
+            if let Some(data) = self.ahead.take() {
+                self.splitter.push(&data);
+                continue;
+            }
             if self.read {
                 return self.splitter.last_line().map_or(Next::End(End::Complete), Next::Line);
             }
-            let frame = poll_fn(|context| Pin::new(&mut self.body).poll_frame(context));
-            match timeout_at(self.deadline, frame).await {
+            match timeout_at(self.deadline, self.frame()).await {
                 Err(_) => return Next::End(End::Idle),
-                Ok(Some(Err(_))) => return Next::End(End::Broken),
-                Ok(None) => self.read = true,
-                Ok(Some(Ok(frame))) => {
-                    if let Ok(data) = frame.into_data() {
-                        self.splitter.push(&data);
-                    }
-                }
+                Ok(Err(end)) => return Next::End(end),
+                Ok(Ok(())) => {}
             }
         }
+    }
+
+    /// The next line where one is `wanted`; otherwise ready only once the client is gone. One frame at most is read ahead
+    /// of what is wanted, for the end of a connection shows only to those who read.
+    pub async fn next_if(&mut self, wanted: bool) -> Next {
+        if wanted {
+            return self.next().await;
+        }
+        while self.ahead.is_none() && !self.read {
+            if let Err(end) = self.frame().await {
+                return Next::End(end);
+            }
+        }
+        std::future::pending().await
+    }
+
+    /// Takes one frame into `ahead`, or notes the end.
+    async fn frame(&mut self) -> Result<(), End> {
+        match poll_fn(|context| Pin::new(&mut self.body).poll_frame(context)).await {
+            None => self.read = true,
+            Some(Err(_)) => return Err(End::Broken),
+            Some(Ok(frame)) => self.ahead = frame.into_data().ok(),
+        }
+        Ok(())
     }
 }
 

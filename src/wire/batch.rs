@@ -67,7 +67,7 @@ pub(super) struct HeadBody {
     _format: Format,
     /// What is done with every line (no unit): `solve` (default) or `dynamics`, as the path of that name does it.
     operation: Option<Operation>,
-    /// A request of that kind, model included; `state` may be left out. Every further line is put over it.
+    /// A request of that kind, model included (units as there); `state` may be left out. Every further line is put over it.
     template: AnyObject,
     /// Members of the answer that are sent back (no unit), e.g. `["status", "joints"]`; all when left out.
     members: Option<Vec<String>>,
@@ -122,19 +122,46 @@ struct WithoutBody {
 
 /// One line of what comes back: an answer, a problem, or at the end the summary.
 #[derive(Debug, Clone, Serialize, JsonSchema)]
+#[serde(untagged)]
 #[schemars(rename = "BatchAnswer")]
 #[allow(dead_code, reason = "written member by member, for answers are bytes already; the type is for the schema")]
-pub(super) struct LineOut<'a> {
+pub(super) enum LineOut<'a> {
+    Answered(AnsweredOut),
+    Refused(RefusedOut),
+    Last(LastOut<'a>),
+}
+
+/// A line that was answered.
+#[derive(Debug, Clone, Serialize, JsonSchema)]
+#[schemars(rename = "BatchAnswered")]
+pub(super) struct AnsweredOut {
     /// Number of the line in what was sent, from 1 (no unit).
-    line: Option<u64>,
+    line: u64,
     /// Its `id` (no unit); null where it has none.
     id: Option<Value>,
     /// The document that answers the line (units as there), or the members of it that were asked for.
-    answer: Option<AnyObject>,
-    /// A problem document (RFC 9457): why the line was refused (no unit). Pointers lead into the line; those that begin with `/template` into the first.
-    problem: Option<AnyObject>,
-    /// The last line of a batch: what became of the others (no unit).
-    summary: Option<SummaryOut<'a>>,
+    answer: AnyObject,
+}
+
+/// A line that was refused.
+#[derive(Debug, Clone, Serialize, JsonSchema)]
+#[schemars(rename = "BatchRefused")]
+pub(super) struct RefusedOut {
+    /// Number of the line in what was sent, from 1 (no unit).
+    line: u64,
+    /// Its `id` (no unit); null where it has none or could not be read.
+    id: Option<Value>,
+    /// A problem document (RFC 9457): why (no unit). Pointers lead into the line; those that begin with `/template`
+    /// into the first.
+    problem: AnyObject,
+}
+
+/// The last line of a batch.
+#[derive(Debug, Clone, Serialize, JsonSchema)]
+#[schemars(rename = "BatchEnd")]
+pub(super) struct LastOut<'a> {
+    /// What became of the other lines (no unit).
+    summary: SummaryOut<'a>,
 }
 
 /// What became of the lines.
@@ -256,7 +283,7 @@ impl Entry<'_> {
                     self.origins.push((list, origins));
                 }
                 (_, _, Value::Null) => drop(request.remove(name)),
-                _ => patch(request.entry(name.clone()).or_insert(Value::Null), over),
+                _ => merge_patch(request.entry(name.clone()).or_insert(Value::Null), over),
             }
         }
         if let Some(without) = self.given.get("without") {
@@ -333,9 +360,8 @@ pub fn batch_summary(tally: &Tally, end: End) -> Vec<u8> {
         bad: tally.refused,
         statuses: tally.statuses.iter().map(|(status, count)| CountOut { status, count: *count }).collect(),
     };
-    let mut text = b"{\"summary\":".to_vec();
-    text.extend(serde_json::to_vec(&summary).unwrap_or_default());
-    text.extend_from_slice(b"}\n");
+    let mut text = serde_json::to_vec(&LastOut { summary }).unwrap_or_default();
+    text.push(b'\n');
     text
 }
 
@@ -377,8 +403,8 @@ fn id(given: Option<&Value>) -> Result<Value, Refusal> {
     }
 }
 
-/// RFC 7396, section 2.
-fn patch(target: &mut Value, over: &Value) {
+/// What RFC 7396, section 2, makes of `target` under the patch `over`.
+pub fn merge_patch(target: &mut Value, over: &Value) {
     let Value::Object(over) = over else {
         *target = over.clone();
         return;
@@ -391,7 +417,7 @@ fn patch(target: &mut Value, over: &Value) {
         if value.is_null() {
             members.remove(name);
         } else {
-            patch(members.entry(name.clone()).or_insert(Value::Null), value);
+            merge_patch(members.entry(name.clone()).or_insert(Value::Null), value);
         }
     }
 }
@@ -408,13 +434,13 @@ fn by_name(under: Value, over: &[Value], key: &str) -> (Value, Vec<Origin>) {
         match twin.filter(|at| origins.get(*at).is_some_and(|origin| origin.0.is_none())) {
             Some(at) => {
                 if let (Some(entry), Some(origin)) = (merged.get_mut(at), origins.get_mut(at)) {
-                    patch(entry, value);
+                    merge_patch(entry, value);
                     origin.0 = Some(i);
                 }
             }
             None => {
                 let mut entry = Value::Null;
-                patch(&mut entry, value);
+                merge_patch(&mut entry, value);
                 merged.push(entry);
                 origins.push((Some(i), None));
             }

@@ -41,7 +41,7 @@ use crate::model::Model;
 use crate::problem::question::{DynamicsQuestion, Question};
 use crate::reference::answer::{Answer, DynamicsReport};
 
-pub use batch::{Batch, Entry, Operation, batch_problem, batch_summary, line_too_long};
+pub use batch::{Batch, Entry, Operation, batch_problem, batch_summary, line_too_long, merge_patch};
 pub use canonical::{canonical, fingerprint};
 pub use openapi::openapi;
 pub use refusal::{Fault, Refusal};
