@@ -3,8 +3,8 @@
     .venv/bin/python tests/bench/batch.py
 
 Every line is the state of the example request. The solve alone is what the Server-Timing header of single requests says
-(question to certified answer, neither reading nor writing); the batch is timed by curl, which throws the answers away, from the first line
-to the last. Rounds take turns, so that a noisy moment hits both; medians.
+(question to certified answer, neither reading nor writing); a line of the batch takes from one answer to the next, read from curl. Rounds
+take turns; first deciles, so that what else the machine does counts little.
 """
 
 import http.client
@@ -28,7 +28,7 @@ def main():
         address = service.stdout.readline().split("http://")[1].split()[0].strip("/,;.")
         connection = http.client.HTTPConnection(address)
         body = json.dumps({**request, "state": state}).encode()
-        solve, single, batch = [], [], []
+        solve, single, batch = [], [], []  # seconds
         with tempfile.NamedTemporaryFile("w", suffix=".ndjson") as file:
             file.write("\n".join(lines) + "\n")
             file.flush()
@@ -41,13 +41,17 @@ def main():
                     single.append(time.perf_counter() - start)
                     parts = dict(entry.strip().split(";dur=") for entry in response.headers["Server-Timing"].split(","))
                     solve.append(float(parts["solve"]) * 1e-3)
-                command = ["curl", "-sSN", "-X", "POST", "-T", file.name, "-H", "Content-Type: application/x-ndjson", f"http://{address}/v1/batch", "-o", "/dev/null"]
-                start = time.perf_counter()
-                subprocess.run(command, check=True)
-                batch.append((time.perf_counter() - start) / LINES)
+                command = ["curl", "-sSN", "-X", "POST", "-T", file.name, "-H", "Content-Type: application/x-ndjson", f"http://{address}/v1/batch"]
+                with subprocess.Popen(command, stdout=subprocess.PIPE) as sender:
+                    last = None
+                    for _ in sender.stdout:
+                        now = time.perf_counter()
+                        if last is not None:
+                            batch.append(now - last)
+                        last = now
     finally:
         service.terminate()
-    bare, alone, line = (statistics.median(values) for values in (solve, single, batch))
+    bare, alone, line = (statistics.quantiles(values, n=10)[0] for values in (solve, single, batch))
     print(f"solve alone {1 / bare:.0f} per second and core ({1e3 * bare:.2f} ms)")
     print(f"in a batch  {1 / line:.0f} per second and core ({1e3 * line:.2f} ms): {bare / line:.2f} of the solve alone")
     print(f"one by one  {1 / alone:.0f} per second ({1e3 * alone:.2f} ms): {bare / alone:.2f} of the solve alone")
