@@ -5,6 +5,7 @@
 mod batch;
 mod demo;
 mod dynamics;
+mod export;
 mod files;
 mod log;
 mod report;
@@ -38,6 +39,8 @@ enum Command {
     Dynamics(dynamics::Dynamics),
     /// Answer many states, one JSON line each; prints what POST /v1/batch answers.
     Batch(batch::Batch),
+    /// The assembled problem as Matrix Market files; prints what POST /v1/export answers, or writes the files.
+    Export(export::Export),
     /// List the JSON Schemas, or print one.
     Schemas(schemas::Schemas),
     /// Show the whole path on a built-in scenario, through a real service.
@@ -72,6 +75,7 @@ pub fn main() -> ExitCode {
         Command::Solve(command) => command.run(),
         Command::Dynamics(command) => command.run(),
         Command::Batch(command) => command.run(),
+        Command::Export(command) => command.run(),
         Command::Schemas(command) => command.run(),
         Command::Demo(command) => command.run(),
     }

@@ -22,6 +22,8 @@ pub enum Errand {
     Dynamics,
     /// Torques and wrenches.
     Solve,
+    /// The assembled problem as files.
+    Export,
 }
 
 /// A document, and what the transport needs to know of it.
@@ -71,6 +73,7 @@ impl Work for Catalogue {
             Errand::Register => self.register(body),
             Errand::Dynamics => dynamics(body, &self.models),
             Errand::Solve => solve(body, &self.models, cancel),
+            Errand::Export => export(body, &self.models, cancel),
         }
     }
 
@@ -124,6 +127,17 @@ pub(super) fn solve(body: &[u8], models: &dyn ModelSource, cancel: &Arc<AtomicBo
     }
     clock.lap("solve");
     let body = wire::write_answer(&question, &answer, &wire::fingerprint(body));
+    clock.lap("write");
+    Ok(Document { body, model: None, timings: clock.laps })
+}
+
+fn export(body: &[u8], models: &dyn ModelSource, cancel: &Arc<AtomicBool>) -> Result<Document, Refusal> {
+    let mut clock = Clock::start();
+    let question = wire::read_solve(body, models)?;
+    clock.lap("read");
+    let program = reference::export(&question, cancel).map_err(|trouble| refusal(&trouble))?;
+    clock.lap("assemble");
+    let body = wire::write_export(&question, &program, &wire::fingerprint(body));
     clock.lap("write");
     Ok(Document { body, model: None, timings: clock.laps })
 }

@@ -15,6 +15,7 @@ mod friction;
 mod gate;
 mod kinds;
 mod limit;
+mod market;
 mod model;
 mod number;
 mod openapi;
@@ -40,6 +41,7 @@ use std::sync::Arc;
 use crate::model::Model;
 use crate::problem::question::{DynamicsQuestion, Question};
 use crate::reference::answer::{Answer, DynamicsReport};
+use crate::reference::program::Program;
 
 pub use batch::{Batch, Entry, Operation, batch_problem, batch_summary, line_too_long, merge_patch};
 pub use canonical::{canonical, fingerprint};
@@ -99,6 +101,11 @@ pub fn write_model(model: &Model) -> Vec<u8> {
 /// The answer to a solve request.
 pub fn write_answer(question: &Question, answer: &Answer, fingerprint: &str) -> Vec<u8> {
     answer::write(question, answer, fingerprint)
+}
+
+/// The answer to an export request, which is a solve request.
+pub fn write_export(question: &Question, program: &Program, fingerprint: &str) -> Vec<u8> {
+    market::write(question, program, fingerprint)
 }
 
 /// The answer to a dynamics request.

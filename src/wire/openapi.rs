@@ -43,6 +43,9 @@ fn paths() -> Value {
             "The answer; `infeasible`, `not_reachable`, `ill_posed`, `inaccurate` and `cancelled` are \
              answers too, see `status`. Timings travel in the Server-Timing header."
         ) },
+        "/v1/export": { "post": post(
+            "export", "The assembled problem as Matrix Market files", "SolveRequest", "ExportAnswer", "The files."
+        ) },
         "/v1/batch": { "post": batch() },
         "/health": { "get": get(
             "health", "Says that the service runs", None, "application/json", json!({ "type": "object" }), &[]

@@ -101,6 +101,14 @@ class Client:
         reply = self._post("/v1/solve", document, model)
         return Answer.read(reply.document(), reply.body, reply.headers.get("server-timing", ""))
 
+    def export(self, request: Mapping[str, Any] | None = None, /, **members: Any) -> dict[str, str]:
+        """The assembled problem of a solve request as texts by file name: Matrix Market exchange format, and `names.json`."""
+        document = {"format": FORMAT, **(request or {}), **members}
+        model = document.get("model")
+        document["model"] = _reference(model)
+        found = self._post("/v1/export", document, model).document()
+        return shaped(lambda: {file["name"]: file["text"] for file in found["files"]})
+
     def batch(
         self,
         template: Mapping[str, Any],
