@@ -3,6 +3,7 @@
 //! Exit codes, the same for every command: 0 good, 1 the answer is bad news, 2 unusable input.
 
 mod batch;
+mod compare;
 mod demo;
 mod dynamics;
 mod export;
@@ -39,6 +40,8 @@ enum Command {
     Dynamics(dynamics::Dynamics),
     /// Answer many states, one JSON line each; prints what POST /v1/batch answers.
     Batch(batch::Batch),
+    /// Compare your own mass matrix, bias, Jacobians and momentum with ours; prints what POST /v1/compare answers.
+    Compare(compare::Compare),
     /// The assembled problem as Matrix Market files; prints what POST /v1/export answers, or writes the files.
     Export(export::Export),
     /// List the JSON Schemas, or print one.
@@ -76,6 +79,7 @@ pub fn main() -> ExitCode {
         Command::Dynamics(command) => command.run(),
         Command::Batch(command) => command.run(),
         Command::Export(command) => command.run(),
+        Command::Compare(command) => command.run(),
         Command::Schemas(command) => command.run(),
         Command::Demo(command) => command.run(),
     }

@@ -7,6 +7,7 @@ use std::time::{Duration, Instant};
 use super::lines::LineWork;
 use super::models::Models;
 use super::settings::MODELS_KEPT;
+use crate::compare;
 use crate::explain::ExplainError;
 use crate::reference::answer::Status;
 use crate::reference::{self, Trouble};
@@ -24,6 +25,8 @@ pub enum Errand {
     Solve,
     /// The assembled problem as files.
     Export,
+    /// The user's terms beside ours.
+    Compare,
 }
 
 /// A document, and what the transport needs to know of it.
@@ -73,6 +76,7 @@ impl Work for Catalogue {
             Errand::Register => self.register(body),
             Errand::Dynamics => dynamics(body, &self.models),
             Errand::Solve => solve(body, &self.models, cancel),
+            Errand::Compare => compare(body, &self.models),
             Errand::Export => export(body, &self.models, cancel),
         }
     }
@@ -138,6 +142,17 @@ fn export(body: &[u8], models: &dyn ModelSource, cancel: &Arc<AtomicBool>) -> Re
     let program = reference::export(&question, cancel).map_err(|trouble| refusal(&trouble))?;
     clock.lap("assemble");
     let body = wire::write_export(&question, &program, &wire::fingerprint(body));
+    clock.lap("write");
+    Ok(Document { body, model: None, timings: clock.laps })
+}
+
+fn compare(body: &[u8], models: &dyn ModelSource) -> Result<Document, Refusal> {
+    let mut clock = Clock::start();
+    let asked = wire::read_compare(body, models)?;
+    clock.lap("read");
+    let found = compare::compare(&asked.question, &asked.given, asked.tolerance);
+    clock.lap("compare");
+    let body = wire::write_compare(&asked, &found, &wire::fingerprint(body));
     clock.lap("write");
     Ok(Document { body, model: None, timings: clock.laps })
 }

@@ -39,6 +39,11 @@ pub async fn solve(State(shared): State<Arc<Shared>>, JsonBytes(body): JsonBytes
     run(shared, Errand::Solve, body).await
 }
 
+/// `POST /v1/compare`.
+pub async fn compare(State(shared): State<Arc<Shared>>, JsonBytes(body): JsonBytes) -> Result<Response, Problem> {
+    run(shared, Errand::Compare, body).await
+}
+
 /// `POST /v1/export`.
 pub async fn export(State(shared): State<Arc<Shared>>, JsonBytes(body): JsonBytes) -> Result<Response, Problem> {
     run(shared, Errand::Export, body).await

@@ -6,6 +6,7 @@ mod answer;
 mod batch;
 mod canonical;
 mod common;
+mod compare;
 mod contact;
 mod dynamics;
 mod explained;
@@ -38,6 +39,7 @@ pub mod view;
 
 use std::sync::Arc;
 
+use crate::compare::Comparison;
 use crate::model::Model;
 use crate::problem::question::{DynamicsQuestion, Question};
 use crate::reference::answer::{Answer, DynamicsReport};
@@ -45,6 +47,7 @@ use crate::reference::program::Program;
 
 pub use batch::{Batch, Entry, Operation, batch_problem, batch_summary, line_too_long, merge_patch};
 pub use canonical::{canonical, fingerprint};
+pub use compare::CompareQuestion;
 pub use openapi::openapi;
 pub use refusal::{Fault, Refusal};
 pub use schema::{schema, schema_names};
@@ -81,6 +84,19 @@ pub fn read_solve(body: &[u8], models: &dyn ModelSource) -> Result<Question, Ref
 /// [`Refusal`] with every fault that was found; 404 where the model's id is not known.
 pub fn read_dynamics(body: &[u8], models: &dyn ModelSource) -> Result<DynamicsQuestion, Refusal> {
     typed::<solve::DynamicsRequest>(body, Document::Dynamics)?.read(models)
+}
+
+/// Reads the body of `POST /v1/compare`.
+///
+/// # Errors
+/// [`Refusal`] with every fault that was found; 404 where the model's id is not known.
+pub fn read_compare(body: &[u8], models: &dyn ModelSource) -> Result<CompareQuestion, Refusal> {
+    typed::<compare::CompareRequest>(body, Document::Compare)?.read(models)
+}
+
+/// The answer to a comparison.
+pub fn write_compare(asked: &CompareQuestion, found: &Comparison, fingerprint: &str) -> Vec<u8> {
+    compare::write(asked, found, fingerprint)
 }
 
 /// Typed straight from the bytes; only a body that fails is gone through a second time, for the

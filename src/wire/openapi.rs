@@ -43,6 +43,10 @@ fn paths() -> Value {
             "The answer; `infeasible`, `not_reachable`, `ill_posed`, `inaccurate` and `cancelled` are \
              answers too, see `status`. Timings travel in the Server-Timing header."
         ) },
+        "/v1/compare": { "post": post(
+            "compare", "Your rigid-body terms beside ours, and the convention that explains the difference", "CompareRequest",
+            "CompareAnswer", "The comparison; see `verdict`."
+        ) },
         "/v1/export": { "post": post(
             "export", "The assembled problem as Matrix Market files", "SolveRequest", "ExportAnswer", "The files."
         ) },

@@ -19,6 +19,7 @@ pub(super) enum Document {
     Dynamics,
     Model,
     Batch,
+    Compare,
 }
 
 /// Why the body is refused, given what the typed pass said.
@@ -54,12 +55,13 @@ fn unlocated(typed: &serde_json::Error) -> Refusal {
 }
 
 fn validator(document: Document) -> Option<&'static Validator> {
-    static VALIDATORS: [OnceLock<Option<Validator>>; 4] = [const { OnceLock::new() }; 4];
+    static VALIDATORS: [OnceLock<Option<Validator>>; 5] = [const { OnceLock::new() }; 5];
     let (slot, name) = match document {
         Document::Solve => (&VALIDATORS[0], "solve-request"),
         Document::Dynamics => (&VALIDATORS[1], "dynamics-request"),
         Document::Model => (&VALIDATORS[2], "model-request"),
         Document::Batch => (&VALIDATORS[3], "batch-request"),
+        Document::Compare => (&VALIDATORS[4], "compare-request"),
     };
     slot.get_or_init(|| jsonschema::validator_for(&schema::value(name)?).ok()).as_ref()
 }

@@ -23,7 +23,7 @@ use crate::problem::question::{Contact, DynamicsQuestion, Include, Question, Tic
 use crate::spatial::Vec3;
 
 /// Standard gravity (m/s^2).
-const GRAVITY: [f64; 3] = [0.0, 0.0, -9.80665];
+pub(super) const GRAVITY: [f64; 3] = [0.0, 0.0, -9.80665];
 /// Contacts of one request.
 const MAX_CONTACTS: usize = 32;
 /// Tasks of one request.
@@ -246,7 +246,7 @@ impl TickBody {
 }
 
 /// The model: registered earlier, or given here.
-fn find(model: &TextOr<InlineModel>, models: &dyn ModelSource) -> Result<Arc<Model>, Refusal> {
+pub(super) fn find(model: &TextOr<InlineModel>, models: &dyn ModelSource) -> Result<Arc<Model>, Refusal> {
     let at = At::ROOT;
     let here = at.name("model");
     match model {

@@ -6,7 +6,7 @@ from dataclasses import dataclass, field
 from types import TracebackType
 from typing import Any, Iterable, Mapping, Sequence
 
-from .answer import Answer, Dynamics, shaped
+from .answer import Answer, Comparison, Dynamics, shaped
 from .batch import Batch
 from .build import FORMAT
 from .errors import Refused
@@ -108,6 +108,28 @@ class Client:
         document["model"] = _reference(model)
         found = self._post("/v1/export", document, model).document()
         return shaped(lambda: {file["name"]: file["text"] for file in found["files"]})
+
+    def compare(
+        self,
+        model: Model | str | Mapping[str, Any],
+        state: Mapping[str, Any],
+        *,
+        mass_matrix: Any = None,
+        bias: Any = None,
+        momentum: Any = None,
+        frames: Sequence[Mapping[str, Any]] = (),
+        **more: Any,
+    ) -> Comparison:
+        """Your own terms of one state beside the service's, and the convention that explains the difference.
+
+        Terms in your conventions, each optional: `mass_matrix` (n, n), `bias` (n,), `momentum` (6,), `frames` with `name`,
+        `jacobian` (6, n) and `bias_acceleration` (6,). `state` is in the service's conventions. `more`: further members of the
+        request, e.g. `gravity=`, `tolerance=`.
+        """
+        yours = {"mass_matrix": mass_matrix, "bias": bias, "momentum": momentum, "frames": list(frames) or None}
+        yours = {name: value for name, value in yours.items() if value is not None}
+        request = {"format": FORMAT, "model": _reference(model), "state": state, "yours": yours, **more}
+        return Comparison.read(self._post("/v1/compare", request, model).document())
 
     def batch(
         self,
