@@ -25,8 +25,11 @@ pub struct Terms {
     /// Momentum.
     pub momentum: Option<Vector6<f64>>,
     /// Jacobian and `J_dot nu` of every frame of the report.
-    pub frames: Vec<(Option<DMatrix<f64>>, Option<Vector6<f64>>)>,
+    pub frames: Vec<FrameTerms>,
 }
+
+/// Jacobian and `J_dot nu` of one frame.
+pub type FrameTerms = (Option<DMatrix<f64>>, Option<Vector6<f64>>);
 
 /// About which point angular momentum is taken.
 #[derive(Debug, Clone, Copy, PartialEq)]
@@ -162,7 +165,7 @@ impl Scenario {
         stack(&(turn * linear), &(turn * (angular + arm.cross(&linear))))
     }
 
-    fn frame(&self, frame: &FrameReport) -> (Option<DMatrix<f64>>, Option<Vector6<f64>>) {
+    fn frame(&self, frame: &FrameReport) -> FrameTerms {
         let mut jacobian = dense(&frame.jacobian);
         let [mut linear, mut angular] = frame.bias_acceleration;
         if self.spatial {
