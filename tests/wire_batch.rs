@@ -162,7 +162,7 @@ fn faults_are_pointed_at_where_the_user_wrote_them() {
     let good = json!({ "sole": "left", "friction": { "coefficient": 0.5 } });
     assert_eq!(pointers(&json!({ "contacts": [good], "state": { "base": { "position": [0.0, 0.0] } } })), ["/state/base/position"]);
     assert_eq!(pointers(&json!({ "contacts": [good], "frobnicate": 1 })), ["/frobnicate"]);
-    assert_eq!(pointers(&json!({ "contacts": [good, good] })), ["/contacts/1/law"]);
+    assert_eq!(pointers(&json!({ "contacts": [good, good] })), ["/contacts/1/law", "/contacts/1/friction/set"]);
     assert_eq!(pointers(&json!({ "model": "x" })), ["/model"]);
     assert_eq!(pointers(&json!({ "id": [] })), ["/id"]);
     assert_eq!(pointers(&json!({ "without": { "tasks": ["no such task"] } })), ["/without/tasks/0"]);
