@@ -55,7 +55,7 @@ fn question(limits: Vec<Limit>) -> Question {
         },
         velocity_axes: VelocityAxes::default(),
         gravity: Vec3::new(0.0, -9.81, 0.0),
-        tick: Tick { length: 0.005, rule: TickRule::BackwardEuler },
+        tick: Tick { length: 0.005, rule: TickRule::BackwardEuler, chosen: true },
         contacts: vec![],
         limits,
         tasks: vec![],

@@ -105,7 +105,7 @@ fn question(rule: TickRule, law: Law) -> Question {
         },
         velocity_axes: VelocityAxes::default(),
         gravity: Vec3::new(0.0, 0.0, -9.80665),
-        tick: Tick { length: TICK, rule },
+        tick: Tick { length: TICK, rule, chosen: true },
         contacts: vec![Contact {
             sole: 0,
             ground: Ground {

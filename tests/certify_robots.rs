@@ -113,7 +113,7 @@ fn question(seed: u64) -> Question {
         state,
         velocity_axes: VelocityAxes::default(),
         gravity: rng.vector(10.0),
-        tick: Tick { length: rng.uniform(0.001, 0.0049), rule },
+        tick: Tick { length: rng.uniform(0.001, 0.0049), rule, chosen: true },
         contacts,
         limits: vec![],
         tasks: vec![],

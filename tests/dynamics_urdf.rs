@@ -1,6 +1,9 @@
 //! Dynamics of robots read from URDF: the check robots, and random trees whose elements stand in
 //! shuffled order.
 
+// Both kinds of robot bring the generator of random numbers along.
+#![allow(clippy::duplicate_mod)]
+
 #[path = "common/hand_built.rs"]
 mod hand_built;
 #[path = "common/random_tree.rs"]

@@ -73,7 +73,7 @@ fn block(mass: f64, places: &[Vec3], material: Material, gravity: f64) -> Questi
         state,
         velocity_axes: VelocityAxes::default(),
         gravity: Vec3::new(0.0, 0.0, -gravity),
-        tick: Tick { length: 0.05, rule: TickRule::Held },
+        tick: Tick { length: 0.05, rule: TickRule::Held, chosen: true },
         contacts,
         limits: Vec::new(),
         tasks: Vec::new(),

@@ -269,6 +269,11 @@ fn answers_follow_their_schema() {
     let document = follows("solve-answer", &write_answer(&question, &answer, "f00d"));
     assert_eq!(document["status"], "solved");
     assert_eq!(document["fingerprint"], "f00d");
+    let tick = json!({ "length": 0.005, "rule": "backward_euler", "rule_by_default": false });
+    assert_eq!(document["tick"], tick);
+    let mut unnamed = question.clone();
+    unnamed.tick.chosen = false;
+    assert_eq!(follows("solve-answer", &write_answer(&unnamed, &answer, "00"))["tick"]["rule_by_default"], true);
     assert_eq!(document["velocity_axes"], json!({ "linear": "world", "angular": "base" }));
     assert_eq!(document["joints"][1], json!({ "name": "r_knee", "torque": 1.0, "acceleration": -0.5 }));
     let matrix = &document["problem"]["hard"]["matrix"];
@@ -390,4 +395,21 @@ fn refusals_follow_their_schema() {
     let document = follows("problem", &write_refusal(&refusal, "/v1/solve"));
     assert_eq!((&document["status"], &document["code"]), (&json!(400), &json!("not-json")));
     assert!(document["faults"][0].get("line").is_none());
+}
+
+/// What was withheld is named, and so are the members of the request that are too large to compute with.
+#[test]
+fn a_withheld_answer_names_the_members_at_fault() {
+    let mut answer = answer();
+    answer.certificate.as_mut().expect("a certificate").checks[0].value = f64::NAN;
+    answer.tasks[0].desired[0] = 5.1e14;
+    let mut question = question();
+    question.external[0].wrench.force.y = -1e12;
+    let document = follows("solve-answer", &write_answer(&question, &answer, "00"));
+    let warnings = document["warnings"].as_array().expect("warnings").clone();
+    let text = warnings.iter().find(|w| w["code"] == "not-finite").expect("a warning")["text"].to_string();
+    for part in ["in certificate;", "/tasks/0", "5.1e14", "/external/0/force (1.0e12 N)"] {
+        assert!(text.contains(part), "{part}: {text}");
+    }
+    assert!(!text.contains("/state") && !text.contains("/tasks/1"), "{text}");
 }

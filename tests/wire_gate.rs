@@ -214,7 +214,7 @@ fn wrong_values_are_refused_at_their_pointers() {
     refused(&with("/spread/covariance", json!([[0.0, 0.001], [0.001, 0.01]])), 422, "/spread/covariance");
     refused(&with("/limits/0/joints", two_joints), 422, "/limits/0/joints/1/name");
     refused(&with("/tasks/2/axes", json!(["x", "rx"])), 422, "/tasks/2/axes/1");
-    refused(&with("/loads/0/mass", json!(-1.0)), 422, "/loads/0");
+    refused(&with("/loads/0/mass", json!(-1.0)), 422, "/loads/0/mass");
     refused(&with("/contacts/0/friction/set", json!("wrench")), 422, "/contacts/0/friction/torsion");
     refused(&with("/limits/3/treatment", json!({ "kind": "decay", "rate": 1.0 })), 422, "/limits/3/treatment/kind");
     let decaying = json!({ "kind": "decay", "rate": 1.0 });
@@ -394,4 +394,52 @@ fn values_are_converted() {
     let one = with("/tasks/0/priority", json!(1.0));
     assert!(read_solve(&bytes(&one), &Nothing).is_ok());
     assert_eq!(question.latency.map(|latency| latency.torques), Some(vec![1.0, 1.0, 1.0, 1.0, 1.0, 0.0]));
+}
+
+/// Rows are divided by the bound they state. A torque limit of 1e-320 N m made such a row overflow, though every number of
+/// the request was finite, and the service answered 500.
+#[test]
+fn a_limit_too_small_to_divide_by_is_a_fault_and_no_defect() {
+    for tiny in [1e-320, 5e-324, 1e-12] {
+        refused(&with("/limits/0/joints/0/bound", json!(tiny)), 422, "/limits/0/joints/0/bound");
+        refused(&with("/limits/4/joints", json!([{ "name": "r_hip", "bound": tiny }])), 422, "/limits/4/joints/0/bound");
+        let line = json!([{ "name": "r_hip", "stall": 100.0, "no_load_speed": tiny }]);
+        refused(&with("/limits/1/joints", line), 422, "/limits/1/joints/0/no_load_speed");
+        let narrow = json!([{ "name": "r_knee", "lower": 0.0, "upper": tiny }]);
+        refused(&with("/limits/3/joints", narrow), 422, "/limits/3/joints/0/upper");
+    }
+    let single = json!([{ "name": "r_knee", "lower": 0.2, "upper": 0.2 }]);
+    assert!(read_solve(&bytes(&with("/limits/3/joints", single)), &Nothing).is_ok());
+}
+
+/// A sole without area is not called clockwise.
+#[test]
+fn a_flat_polygon_is_told_what_is_wrong_with_it() {
+    for flat in [
+        json!([[0.0, 0.0], [0.1, 0.0], [0.2, 0.0]]), json!([[0.2, 0.1], [0.1, 0.05], [0.0, 0.0], [-0.1, -0.05]]),
+        json!([[0.1, 0.3], [0.1, 0.3], [0.1, 0.3]]), json!([[0.0, 0.0], [0.1, 1e-12], [0.2, 0.0]]),
+    ] {
+        let refusal = refusal(&bytes(&with("/model/soles/0/vertices", flat)));
+        check(&refusal, 422, "/model/soles/0/vertices");
+        let got = &refusal.faults[0].got;
+        assert!(got.contains("one line") && !got.contains("clockwise"), "{got}");
+    }
+    let crossed = json!([[0.0, 0.0], [0.1, 0.1], [0.1, 0.0], [0.0, 0.1]]);
+    let refusal = refusal(&bytes(&with("/model/soles/0/vertices", crossed)));
+    assert!(refusal.faults[0].got.contains("not strictly convex"), "{refusal:?}");
+}
+
+/// A tick without a rule is held, and the question remembers that nobody chose it.
+#[test]
+fn the_default_tick_rule_is_held() {
+    use underfoot::contact::TickRule;
+    let tick = |request: &Value| read_solve(&bytes(request), &Nothing).expect("the request is good").tick;
+    let default = tick(&without("/tick/rule"));
+    assert_eq!((default.rule, default.chosen), (TickRule::Held, false));
+    for (name, rule) in [
+        ("held", TickRule::Held), ("backward_euler", TickRule::BackwardEuler), ("trapezoid", TickRule::Trapezoid),
+    ] {
+        let named = tick(&with("/tick/rule", json!(name)));
+        assert_eq!((named.rule, named.chosen), (rule, true));
+    }
 }

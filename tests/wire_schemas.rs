@@ -148,7 +148,7 @@ fn example() -> Value {
         "model": example_model(),
         "state": example_state(height),
         "gravity": [0.0, 0.0, -GRAVITY],
-        "tick": { "length": 0.005, "rule": "backward_euler" },
+        "tick": { "length": 0.005, "rule": "held" },
         "contacts": [contact("left", &soles[0]), contact("right", &soles[1])],
         "limits": [
             { "name": "torque", "kind": "torque", "treatment": { "kind": "hard" } },

@@ -80,6 +80,10 @@ fn section(out: &mut String, title: &str, table: &Table) {
 fn headline(out: &mut String, answer: View<'_>) {
     let status = answer.at("/status").text().unwrap_or("-");
     push_line(out, &format!("Status: {status} ({})", meaning(status)));
+    let tick = answer.at("/tick");
+    let by_default = tick.at("/rule_by_default").truth() == Some(true);
+    let origin = if by_default { ", the default" } else { "" };
+    push_line(out, &format!("Tick: {} ms, rule {}{origin}", scaled(tick.at("/length"), 1e3, 3), text(tick.at("/rule"))));
 }
 
 /// Torque limit that a torque comes closest to, as the share used: margins say how much is left

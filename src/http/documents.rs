@@ -207,3 +207,19 @@ impl Clock {
         self.last = now;
     }
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    /// Finite numbers, each within its bounds, that overflow on the way into the solver were once answered 500.
+    #[test]
+    fn numbers_that_overflow_together_are_the_requests_fault() {
+        let overflow =
+            SolveError::Number { what: "hard rows".to_owned(), index: 532, value: f64::INFINITY, expected: "finite" };
+        let refusal = refusal(&Trouble::Solver(overflow));
+        assert_eq!((refusal.status, refusal.code, refusal.faults.len()), (422, "unusable-request", 1));
+        let unfit = SolveError::Dimension { what: "columns".to_owned(), expected: 3, found: 4 };
+        assert_eq!(super::refusal(&Trouble::Solver(unfit)).status, 500);
+    }
+}

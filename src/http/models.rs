@@ -6,42 +6,67 @@ use std::sync::{Arc, Mutex, MutexGuard, PoisonError};
 use crate::model::Model;
 use crate::wire::ModelSource;
 
-/// Models by id, most recently used last.
+/// Models by id, and by the hash of the description in a request; most recently used last.
 #[derive(Debug)]
 pub struct Models {
     kept: Mutex<VecDeque<Arc<Model>>>,
+    described: Mutex<VecDeque<(Key, Arc<Model>)>>,
     most: usize,
 }
 
+/// Hash of a description as a request gave it.
+type Key = [u8; 32];
+
 impl Models {
-    /// An empty cache for at most `most` models.
+    /// An empty cache for at most `most` models of either kind.
     pub fn new(most: usize) -> Self {
-        Models { kept: Mutex::new(VecDeque::new()), most: most.max(1) }
+        Models { kept: Mutex::default(), described: Mutex::default(), most: most.max(1) }
     }
 
     /// Keeps a model; one with the same id has the same content, and only moves up.
     pub fn keep(&self, model: Arc<Model>) {
-        let mut kept = self.lock();
+        let mut kept = lock(&self.kept);
         kept.retain(|other| other.id != model.id);
         kept.push_back(model);
         while kept.len() > self.most {
             kept.pop_front();
         }
     }
+}
 
-    /// No code panics while it holds the lock; were it to happen, the list is whole all the same.
-    fn lock(&self) -> MutexGuard<'_, VecDeque<Arc<Model>>> {
-        self.kept.lock().unwrap_or_else(PoisonError::into_inner)
-    }
+/// No code panics while it holds a lock; were it to happen, the list is whole all the same.
+fn lock<T>(list: &Mutex<T>) -> MutexGuard<'_, T> {
+    list.lock().unwrap_or_else(PoisonError::into_inner)
 }
 
 impl ModelSource for Models {
     /// The model with this id, which thereby becomes the most recently used.
     fn find(&self, id: &str) -> Option<Arc<Model>> {
-        let mut kept = self.lock();
+        let mut kept = lock(&self.kept);
         let at = kept.iter().position(|model| model.id == id)?;
         let model = kept.remove(at)?;
         kept.push_back(Arc::clone(&model));
+        Some(model)
+    }
+
+    /// Kept for the next request that describes the same robot; it is not registered by that.
+    fn described(&self, key: &Key, make: &mut dyn FnMut() -> Option<Arc<Model>>) -> Option<Arc<Model>> {
+        let known = {
+            let mut list = lock(&self.described);
+            let at = list.iter().position(|(other, _)| other == key);
+            at.and_then(|at| list.remove(at))
+        };
+        // Made without the lock: others need not wait for it.
+        let model = match known {
+            Some((_, model)) => model,
+            None => make()?,
+        };
+        let mut list = lock(&self.described);
+        list.retain(|(other, _)| other != key);
+        list.push_back((*key, Arc::clone(&model)));
+        while list.len() > self.most {
+            list.pop_front();
+        }
         Some(model)
     }
 }
@@ -73,6 +98,24 @@ mod tests {
         models.keep(model("c"));
         assert!(models.find("b").is_none());
         assert!(models.find("a").is_some() && models.find("c").is_some());
+    }
+
+    #[test]
+    fn a_description_is_read_once() {
+        let models = Models::new(2);
+        let mut made = 0;
+        let mut ask = |key: u8| {
+            let found = models.described(&[key; 32], &mut || {
+                made += 1;
+                Some(model("described"))
+            });
+            (found.is_some(), made)
+        };
+        assert_eq!([ask(1), ask(1), ask(2), ask(1)], [(true, 1), (true, 1), (true, 2), (true, 2)]);
+        // The third takes the place of the second, which was used least recently.
+        assert_eq!([ask(3), ask(1), ask(2)], [(true, 3), (true, 3), (true, 4)]);
+        assert!(models.described(&[9; 32], &mut || None).is_none());
+        assert!(models.find("described").is_none(), "a described model is not registered");
     }
 
     #[test]

@@ -44,6 +44,8 @@ pub struct Tick {
     pub length: f64,
     /// How the wrench follows from the acceleration.
     pub rule: TickRule,
+    /// True where the rule was chosen, false where it is the default.
+    pub chosen: bool,
 }
 
 /// One sole on the ground.

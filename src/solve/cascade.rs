@@ -8,20 +8,23 @@ use super::faces::{ensure_interior, interior_program};
 use super::free::free_directions;
 use super::infeasible::{certify, certify_equality, project_dual};
 use super::level::{Assembled, LevelData, LevelProblem, assemble, assemble_reduced, reduce};
-use super::refine::{CONFIRMED, Damping, Mode, Point, Refined, classify, optimality, refine};
+use super::proximal::approach;
+use super::refine::{CONFIRMED, Mode, Point, Refined, accept, classify, optimality, refine};
 use super::system::{Contradiction, Kind, Part, Reduced, System, inside};
 use crate::conic::Hierarchy;
 use std::sync::Arc;
 use std::sync::atomic::{AtomicBool, Ordering};
 
 /// Rounds of taking rows into the active set and out of it, from the engine's point.
-const ROUNDS: usize = 24;
+const ROUNDS: usize = 8;
 /// The same without the engine: beyond a few, the engine is quicker.
 const WARM_ROUNDS: usize = 5;
 /// Optimality that lets a level do without the engine.
 const WARM: f64 = 1e-12;
 /// Optimality that the engine's own point needs to be taken for the answer.
 const TRUSTED: f64 = 1e-7;
+/// Newton's own point is taken at this optimality even where the engine's figures are smaller.
+const SHARP: f64 = 1e-14;
 /// A scaled point farther from the origin than this has run off along a direction that nothing bounds.
 const FAR: f64 = 1e4;
 /// Weight of the pull that holds such a point, of the cost's.
@@ -71,6 +74,8 @@ pub(super) struct Solved {
     pub(super) trusted: bool,
     pub(super) bound: f64,
     pub(super) cost_pivot: f64,
+    /// A multiplier of a refined point below this may be rounding.
+    pub(super) noise: f64,
     pub(super) iterations: u32,
 }
 
@@ -137,11 +142,17 @@ pub fn solve(
 /// Coordinates and multipliers of an interior point.
 type Near = (Vec<f64>, Vec<f64>);
 
-/// Newton steps on the active set read off an interior point, damped where they do not settle.
-fn sharpen(problem: &LevelProblem, u: &[f64], z: &[f64]) -> Refined {
+/// Newton steps on the active set read off an interior point; where they do not settle, the proximal method.
+fn sharpen(problem: &LevelProblem, u: &[f64], z: &[f64], engine: &Optimality) -> Refined {
     let identified = classify(problem, u.to_vec(), z.to_vec());
-    let plain = refine(problem, identified.clone(), ROUNDS, Damping::None);
-    if plain.confirmed { plain } else { refine(problem, identified, ROUNDS, Damping::ByResidual) }
+    let plain = refine(problem, identified, ROUNDS);
+    if plain.confirmed && plain.optimality.worst() <= engine.worst().max(SHARP) {
+        return plain;
+    }
+    match approach(problem, u, z) {
+        Some(near) => accept(problem, near),
+        None => plain,
+    }
 }
 
 impl Cascade<'_> {
@@ -270,7 +281,7 @@ impl Cascade<'_> {
             z: vec![0.0; problem.sets.at.len()],
             modes: vec![Mode::Off; problem.sets.blocks.len()],
         };
-        let refined = refine(problem, start, if unconstrained { 1 } else { WARM_ROUNDS }, Damping::None);
+        let refined = refine(problem, start, if unconstrained { 1 } else { WARM_ROUNDS });
         ((refined.confirmed && refined.optimality.worst() <= WARM) || unconstrained).then(|| Solved {
             problem: LevelProblem::default(),
             point: refined.point,
@@ -279,6 +290,7 @@ impl Cascade<'_> {
             trusted: refined.confirmed,
             bound: refined.bound,
             cost_pivot: refined.cost_pivot,
+            noise: refined.noise,
             iterations: 0,
         })
     }
@@ -307,7 +319,7 @@ impl Cascade<'_> {
             }
         }
         let mut engine = optimality(&problem, &u, &z);
-        let mut refined = sharpen(&problem, &u, &z);
+        let mut refined = sharpen(&problem, &u, &z, &engine);
         if !refined.confirmed && trusted {
             // Where rows bind that nearly depend on each other, the active set only shows closer to the optimum. And what is
             // left of the cost may be far smaller than its rows: seen by its own size, the multipliers stand out from the slacks.
@@ -317,7 +329,7 @@ impl Cascade<'_> {
             }
             if let Some((near_u, near_z)) = self.closer(data, &problem, &mut iterations)? {
                 let closer = optimality(&problem, &near_u, &near_z);
-                let again = sharpen(&problem, &near_u, &near_z);
+                let again = sharpen(&problem, &near_u, &near_z, &closer);
                 if again.confirmed {
                     refined = again;
                 }
@@ -326,16 +338,16 @@ impl Cascade<'_> {
                 }
             }
         }
-        if refined.confirmed && refined.optimality.worst() <= engine.worst() {
-            let Refined { point, optimality, bound, cost_pivot, .. } = refined;
-            return Ok(Some(Solved { problem, point, optimality, refined: true, trusted: true, bound, cost_pivot, iterations }));
+        if refined.confirmed {
+            let Refined { point, optimality, bound, cost_pivot, noise, .. } = refined;
+            return Ok(Some(Solved { problem, point, optimality, refined: true, trusted: true, bound, cost_pivot, noise, iterations }));
         }
         trusted &= engine.worst() <= TRUSTED;
         // Strong convexity in the weighted residuals: |M (u - u*)|^2 is at most the gap.
         let bound = (engine.worst() * problem.size * (1.0 + largest(&z) / problem.size)).sqrt();
         let modes = vec![Mode::Off; problem.sets.blocks.len()];
         let point = Point { u, z, modes };
-        Ok(Some(Solved { problem, point, optimality: engine, refined: false, trusted, bound, cost_pivot: 1.0, iterations }))
+        Ok(Some(Solved { problem, point, optimality: engine, refined: false, trusted, bound, cost_pivot: 1.0, noise: f64::INFINITY, iterations }))
     }
 
     /// The engine once more, as close as it gets, with its own iterative refinement: point and multipliers.

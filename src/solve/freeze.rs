@@ -9,10 +9,12 @@ use super::faces::{ensure_interior, exposed, restrict};
 use super::level::LevelData;
 use super::system::{DEPENDENT, DEPENDENT_FACE, Entries, Kind};
 
-/// A multiplier below this part of the problem's size exposes nothing; the interior test decides instead.
-const EXPOSING: f64 = 1e-10;
-/// The same where the point is the engine's own.
+/// A multiplier of the engine's own below this part of the problem's size exposes nothing; the interior test decides instead.
 const EXPOSING_UNREFINED: f64 = 1e-5;
+/// A row this close to its value (scaled, per unit of row length and value) holds to rounding.
+const HOLDS: f64 = 1e-12;
+/// A row of the data that a refined multiplier names counts as dependent below this: what is left free then moves it by no more.
+const DEPENDENT_EXACT: f64 = 1e-10;
 /// A multiplier this close to the boundary of the dual cone (relative) lies on it.
 const ON_BOUNDARY: f64 = 1e-9;
 /// The same where the point is the engine's own.
@@ -88,7 +90,10 @@ impl Cascade<'_> {
         let faces = self.expose(index, data, solved);
         let fixed: Vec<usize> = faces.iter().flat_map(|(block, face)| restrict(&mut self.system, *block, &face.kind)).collect();
         if !fixed.is_empty() {
-            outcome.rank.push(self.system.fix(&fixed, DEPENDENT_FACE, "faces of the level"));
+            // Rows of the data are exact; only the engine's own multipliers may have named one that is not quite active.
+            let threshold = if solved.refined { DEPENDENT_EXACT } else { DEPENDENT_FACE };
+            self.settle(&fixed);
+            outcome.rank.push(self.system.fix(&fixed, threshold, "faces of the level"));
         }
         outcome.faces.extend(faces.into_iter().map(|(_, face)| face));
         self.system.return_to_equalities();
@@ -102,6 +107,18 @@ impl Cascade<'_> {
         outcome.rank.extend(interior.rank);
         self.sets = Some(interior.sets);
         Ok(())
+    }
+
+    /// Rows that hold to rounding are fixed where they stand: rows that nearly depend on each other would turn the rounding into
+    /// a move.
+    fn settle(&mut self, rows: &[usize]) {
+        let system = &mut self.system;
+        for &row in rows {
+            let at = system.matrix.row_dot(row, &system.x);
+            if (at - system.rhs[row]).abs() <= HOLDS * (system.row_length(row) + system.rhs[row].abs()) {
+                system.rhs[row] = at;
+            }
+        }
     }
 
     /// Appends the independent ones of the level's residual rows as equalities at their present value.
@@ -121,7 +138,7 @@ impl Cascade<'_> {
     /// Appends the soft limits relaxed by their slacks, and lists the faces the level's multipliers expose.
     fn expose(&mut self, index: usize, data: &LevelData, solved: &Solved) -> Vec<(usize, FaceDecision)> {
         let (tolerance, boundary) = if solved.refined {
-            (EXPOSING.max(1e3 * solved.optimality.worst()) * solved.problem.size, ON_BOUNDARY)
+            (solved.noise, ON_BOUNDARY)
         } else {
             (EXPOSING_UNREFINED * solved.problem.size, ON_BOUNDARY_UNREFINED)
         };

@@ -14,6 +14,7 @@ mod free;
 mod freeze;
 mod infeasible;
 mod level;
+mod proximal;
 mod rank;
 mod refine;
 mod system;

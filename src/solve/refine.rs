@@ -10,27 +10,18 @@
 //! One Newton step is the least-squares problem `minimise |M du + r|^2 + |C du|^2, B du = c` (M the cost rows,
 //! C a root of the curvature, B the equations). Where it leaves directions open, the shortest step is taken.
 //!
-//! Where the optimum is not unique the plain step may fail: forces on parallel rays may be exchanged for one another
-//! at no cost, but at an iterate whose rays still differ by epsilon the same exchange has a cost row of length epsilon, so the
-//! step along it is large and means nothing. `Damping::ByResidual` adds `delta |du|^2` with delta the optimality residual
-//! times the problem's size (Levenberg-Marquardt). As epsilon^2 is far below delta, the exchange stands still while
-//! the rays turn parallel, and since delta vanishes with the residual the steps still converge faster than linearly
-//! (Yamashita and Fukushima 2001, for solutions that are not isolated).
+//! Where the optimum is not unique, or rows bind whose multipliers are lost beside the rest, the steps do not settle; `proximal`
+//! then carries on.
 
 use super::answer::Optimality;
 use super::dense::{axpy, dot, largest, norm};
 use super::level::LevelProblem;
+use super::proximal::Approached;
 use super::rank::{Factor, reference_lengths};
 use super::system::{Kind, ReducedBlock, inside};
 
 /// Newton steps per round.
 const MAX_STEPS: usize = 12;
-/// Newton steps per round with damping, whose first ones are short.
-const MAX_DAMPED_STEPS: usize = 40;
-/// Damped steps that may fail in a row.
-const MAX_STALLED: usize = 6;
-/// Each that fails is taken back and makes the damping larger by this; each that does not makes it smaller again.
-const STIFFER: f64 = 16.0;
 /// An equation counts as dependent below this relative length.
 const DEPENDENT_EQUATION: f64 = 1e-9;
 /// A cost row counts as dependent below this relative length.
@@ -46,6 +37,16 @@ const APEX: f64 = 1e-9;
 /// Optimality that counts as confirmed.
 pub(super) const CONFIRMED: f64 = 1e-10;
 
+/// A multiplier this close to the boundary of the dual cone (relative) lies on it.
+const ON_BOUNDARY: f64 = 1e-9;
+/// A multiplier below this part of the problem's size (of the largest multiplier where the proximal method found it) exposes
+/// nothing; the interior test decides instead.
+const EXPOSING: f64 = 1e-10;
+/// Slacks longer than this show their direction plainly.
+const PLAIN: f64 = 1e-6;
+/// Residual of the proximal method, in its own units, that counts as settled.
+const SETTLED: f64 = 1e-10;
+
 /// How a block takes part.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub(super) enum Mode {
@@ -55,15 +56,6 @@ pub(super) enum Mode {
     Flat,
     /// On the smooth boundary of a second-order cone.
     Smooth,
-}
-
-/// What holds a Newton step back.
-#[derive(Debug, Clone, Copy, PartialEq, Eq)]
-pub(super) enum Damping {
-    /// Nothing; open directions get the shortest step.
-    None,
-    /// The optimality residual: for optima that are not unique.
-    ByResidual,
 }
 
 /// A point with multipliers for every row of the reduced blocks.
@@ -85,6 +77,8 @@ pub(super) struct Refined {
     pub cost_pivot: f64,
     /// Whether the active set settled and the optimality conditions hold.
     pub confirmed: bool,
+    /// A multiplier below this may be rounding.
+    pub noise: f64,
 }
 
 /// The equations and cost rows at one iterate.
@@ -162,23 +156,61 @@ fn cost_gradient(problem: &LevelProblem, u: &[f64]) -> Vec<f64> {
 }
 
 /// Refines a point in at most so many rounds of changing the active set; `confirmed` tells whether the result may be used.
-pub(super) fn refine(problem: &LevelProblem, mut point: Point, rounds: usize, damping: Damping) -> Refined {
+pub(super) fn refine(problem: &LevelProblem, mut point: Point, rounds: usize) -> Refined {
     for _ in 0..rounds {
-        let Some((held, pivots)) = newton(problem, &mut point, damping) else { break };
+        let Some((held, pivots)) = newton(problem, &mut point) else { break };
         match revise(problem, &mut point) {
             Revision::Settled => {
                 let optimality = optimality(problem, &point.u, &point.z);
                 let bound = held.stationarity.max(ROUNDING) * problem.size / pivots.cost
                     + problem.size.sqrt() * held.violation.max(ROUNDING) / pivots.equation;
                 let confirmed = optimality.worst() <= CONFIRMED;
-                return Refined { point, optimality, bound, cost_pivot: pivots.cost, confirmed };
+                let noise = EXPOSING.max(1e3 * optimality.worst()) * problem.size;
+                return Refined { point, optimality, bound, cost_pivot: pivots.cost, confirmed, noise };
             }
             Revision::Changed => {}
             Revision::Lost => break,
         }
     }
     let optimality = optimality(problem, &point.u, &point.z);
-    Refined { point, optimality, bound: f64::INFINITY, cost_pivot: 1.0, confirmed: false }
+    Refined { point, optimality, bound: f64::INFINITY, cost_pivot: 1.0, confirmed: false, noise: f64::INFINITY }
+}
+
+/// A point that the proximal method has brought to the optimum, with the active set that its multipliers show.
+pub(super) fn accept(problem: &LevelProblem, near: Approached) -> Refined {
+    let Approached { u, mut z, residual, bound } = near;
+    let slack = problem.sets.slack(&u);
+    let modes = problem.sets.blocks.iter().map(|block| {
+        let range = block.first..block.first + block.len;
+        let (s, z) = (&slack[range.clone()], &mut z[range]);
+        let length = norm(&z[1..]);
+        match block.kind {
+            _ if z[0] <= 0.0 => Mode::Off,
+            Kind::SecondOrder if length >= z[0] * (1.0 - ON_BOUNDARY) => {
+                // The slack shows the ray better than a multiplier that may be tiny.
+                let radius = norm(&s[1..]);
+                if block.soft.is_none() && radius > PLAIN {
+                    for k in 1..s.len() {
+                        z[k] = -length * s[k] / radius;
+                    }
+                }
+                z[0] = length;
+                Mode::Smooth
+            }
+            _ => Mode::Flat,
+        }
+    });
+    let modes = modes.collect();
+    let optimality = optimality(problem, &u, &z);
+    let point = Point { u, z, modes };
+    let cost_pivot = linearise(problem, &point).map_or(1.0, |linear| {
+        let factor = factor_equations(problem.sets.d, &linear);
+        step(problem, &point, &linear, &factor).cost_pivot
+    });
+    let confirmed = residual <= SETTLED && optimality.worst() <= CONFIRMED;
+    // The method's projections leave exact zeros where nothing binds, and its residual is in units of its largest multipliers.
+    let noise = EXPOSING.max(1e3 * residual) * largest(&point.z);
+    Refined { point, optimality, bound, cost_pivot, confirmed, noise }
 }
 
 /// Smallest pivots that the last step divided by.
@@ -188,18 +220,12 @@ struct Pivots {
 }
 
 /// Newton steps with the active set held; leaves the best iterate in `point`. `None` where a block has lost its direction.
-fn newton(problem: &LevelProblem, point: &mut Point, damping: Damping) -> Option<(Optimality, Pivots)> {
+fn newton(problem: &LevelProblem, point: &mut Point) -> Option<(Optimality, Pivots)> {
     let curved = point.modes.contains(&Mode::Smooth);
     let mut best: Option<(f64, Optimality, Point)> = None;
     let mut pivots = Pivots { cost: 1.0, equation: 1.0 };
     let mut cached: Option<Factor> = None;
-    let (steps, patience) = match damping {
-        Damping::None => (MAX_STEPS, 0),
-        Damping::ByResidual => (MAX_DAMPED_STEPS, MAX_STALLED),
-    };
-    let mut stalled = 0;
-    let mut stiffness = 1.0f64;
-    for count in 0..=steps {
+    for count in 0..=MAX_STEPS {
         let Some(linear) = linearise(problem, point) else { break };
         let factor = match cached.take() {
             Some(factor) if !curved => factor,
@@ -212,42 +238,16 @@ fn newton(problem: &LevelProblem, point: &mut Point, damping: Damping) -> Option
         if worst < previous {
             best = Some((worst, found, point.clone()));
         }
-        stalled = if count > 0 && worst > 0.5 * previous { stalled + 1 } else { 0 };
-        if count > 0 && (worst <= ROUNDING || stalled > patience) {
+        if count > 0 && (worst <= ROUNDING || worst > 0.5 * previous) {
             break;
         }
-        let mut delta = 0.0;
-        if damping == Damping::ByResidual {
-            if worst > previous {
-                // Taken back: the same step again, shorter.
-                stiffness *= STIFFER;
-                if let Some((_, _, at)) = &best {
-                    *point = at.clone();
-                    delta = stiffness * previous * problem.size;
-                    let Some(linear) = linearise(problem, point) else { break };
-                    let factor = factor_equations(problem.sets.d, &linear);
-                    let step = step(problem, point, &linear, &factor, delta);
-                    axpy(1.0, &step.du, &mut point.u);
-                    continue;
-                }
-            }
-            stiffness = (stiffness / STIFFER).max(1.0);
-            delta = stiffness * worst * problem.size;
-        }
-        let step = step(problem, point, &linear, &factor, delta);
+        let step = step(problem, point, &linear, &factor);
         pivots = Pivots { cost: step.cost_pivot, equation: factor.decision.smallest_kept };
         axpy(1.0, &step.du, &mut point.u);
         cached = Some(factor);
     }
     let (_, found, at) = best?;
     *point = at;
-    if damping == Damping::ByResidual {
-        // The damping's own pivots say nothing about the problem.
-        let linear = linearise(problem, point)?;
-        let factor = factor_equations(problem.sets.d, &linear);
-        let plain = step(problem, point, &linear, &factor, 0.0);
-        pivots = Pivots { cost: plain.cost_pivot, equation: factor.decision.smallest_kept };
-    }
     Some((found, pivots))
 }
 
@@ -428,7 +428,7 @@ struct Step {
     cost_pivot: f64,
 }
 
-fn step(problem: &LevelProblem, point: &Point, linear: &Linear, factor: &Factor, delta: f64) -> Step {
+fn step(problem: &LevelProblem, point: &Point, linear: &Linear, factor: &Factor) -> Step {
     let d = problem.sets.d;
     let rank = factor.rank();
     // Q'du = (p, y): p solves the equations, y the least squares.
@@ -457,15 +457,6 @@ fn step(problem: &LevelProblem, point: &Point, linear: &Linear, factor: &Factor,
     }
     if d > 0 {
         linear.curvature.chunks_exact(d).zip(&linear.curvature_length).for_each(|(row, &length)| add(row, 0.0, length));
-    }
-    if delta > 0.0 {
-        for c in 0..q {
-            let begin = columns.len();
-            columns.resize(begin + q, 0.0);
-            columns[begin + c] = delta.sqrt();
-            value.push(0.0);
-            lengths.push(delta.sqrt());
-        }
     }
     let (y, cost_pivot) = shortest_least_squares(columns, q, &lengths, &value);
     local[rank..].copy_from_slice(&y);

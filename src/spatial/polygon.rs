@@ -1,5 +1,8 @@
 //! Plane polygons and their moments.
 
+/// A corner turns, and a polygon is wide, if the sine of the angle is above this: rounding stays far below.
+const FLAT: f64 = 1e-9;
+
 /// A flat convex polygon, counter-clockwise (m). See [`Polygon::new`].
 #[derive(Debug, Clone, PartialEq)]
 pub struct Polygon {
@@ -26,6 +29,9 @@ pub enum PolygonError {
     /// A vertex is not finite.
     #[error("vertex {0} is not finite")]
     NotFinite(usize),
+    /// The vertices lie on one line, or on one point.
+    #[error("the vertices lie on one line, so that the sole has no area; the kind \"point\" needs no vertices")]
+    NoArea,
     /// The vertices run clockwise.
     #[error("the vertices run clockwise (signed area {0} m^2); list them counter-clockwise seen from +z")]
     Clockwise(f64),
@@ -44,8 +50,12 @@ impl Polygon {
         if let Some(i) = vertices.iter().position(|v| !(v[0].is_finite() && v[1].is_finite())) {
             return Err(PolygonError::NotFinite(i));
         }
+        if on_one_line(&vertices) {
+            return Err(PolygonError::NoArea);
+        }
+        // A crossed outline that encloses as much to its left as to its right passes here; its corners give it away.
         let area = moments(&vertices).area;
-        if area <= 0.0 {
+        if area < 0.0 {
             return Err(PolygonError::Clockwise(area));
         }
         let mut turning = 0.0;
@@ -54,7 +64,7 @@ impl Polygon {
             let (u, v) = ([b[0] - a[0], b[1] - a[1]], [c[0] - b[0], c[1] - b[1]]);
             let cross = u[0] * v[1] - u[1] * v[0];
             let lengths = u[0].hypot(u[1]) * v[0].hypot(v[1]);
-            if cross <= 1e-9 * lengths || lengths == 0.0 {
+            if cross <= FLAT * lengths || lengths == 0.0 {
                 return Err(PolygonError::NotConvex(i));
             }
             turning += cross.atan2(u[0] * v[0] + u[1] * v[1]);
@@ -75,6 +85,16 @@ impl Polygon {
     pub fn moments(&self) -> Moments {
         moments(&self.vertices)
     }
+}
+
+/// True where no vertex is further from the line through the first vertex and the one farthest from it than [`FLAT`] of
+/// their distance.
+fn on_one_line(vertices: &[[f64; 2]]) -> bool {
+    let from_first = |v: &[f64; 2]| [v[0] - vertices[0][0], v[1] - vertices[0][1]];
+    let along = vertices.iter().map(from_first).max_by(|a, b| a[0].hypot(a[1]).total_cmp(&b[0].hypot(b[1])));
+    let Some([x, y]) = along else { return true };
+    let square = x * x + y * y;
+    vertices.iter().map(from_first).all(|[u, v]| (x * v - y * u).abs() <= FLAT * square)
 }
 
 /// Moments of any simple polygon (signed: negative when clockwise), by Green's theorem: sums over

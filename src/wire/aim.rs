@@ -3,9 +3,9 @@
 use super::common::{LinearAngularGainBody, WrenchBody};
 use super::friction::positive;
 use super::gate::{At, Gate, listed, quoted};
+use super::joints::{JointList, Named};
 use super::kinds::given;
-use super::limit::MAX_JOINTS;
-use super::state::{frame_index, joint_index};
+use super::state::frame_index;
 use super::task::{
     AxisBody, GainsBody, TASK_JOINT_KINDS, TASK_KINDS, TaskBody, TaskJointBody, TaskKindBody,
 };
@@ -26,6 +26,8 @@ pub(super) struct Surroundings<'a> {
     pub(super) soles: Vec<&'a str>,
     /// The contacts, in the same order.
     pub(super) contacts: &'a [Option<Contact>],
+    /// False where contacts were left out of what is read.
+    pub(super) complete: bool,
 }
 
 impl Surroundings<'_> {
@@ -43,7 +45,8 @@ impl Surroundings<'_> {
     /// the rate of momentum cannot be chosen.
     fn momentum_rate_is_given(&self) -> bool {
         let soft = |c: &Option<Contact>| c.as_ref().is_none_or(|c| matches!(c.ground.law, Law::Bonded(_)));
-        self.tick.rule == TickRule::Explicit
+        self.complete
+            && self.tick.rule == TickRule::Explicit
             && self.model.base == BaseKind::Floating
             && self.contacts.iter().all(soft)
     }
@@ -51,7 +54,7 @@ impl Surroundings<'_> {
     /// Index in `contacts` of a sole by name.
     fn contact(&self, gate: &mut Gate, at: At<'_>, name: &str) -> Option<usize> {
         let index = self.soles.iter().position(|sole| *sole == name);
-        if index.is_none() {
+        if index.is_none() && (self.complete || self.model.sole(name).is_none()) {
             let known = listed(self.soles.iter().copied());
             let got = match self.model.sole(name) {
                 Some(_) => format!("{}, which is in the air", quoted(name)),
@@ -99,7 +102,9 @@ impl TaskBody {
                 Importance::MustHold
             }
             (None, false) => {
-                gate.missing(at.name("priority"), "a priority, or must_hold: true");
+                if !gate.lacks(at.name("must_hold")) {
+                    gate.missing(at.name("priority"), "a priority, or must_hold: true");
+                }
                 Importance::MustHold
             }
         }
@@ -309,35 +314,19 @@ impl TaskBody {
         model: &Model,
         read: impl Fn(usize, &Joint, &TaskJointBody) -> T,
     ) -> Vec<T> {
-        let mut out = Vec::new();
-        let list = at.name("joints");
-        let Some(entries) = &self.joints else { return out };
-        if entries.is_empty() {
-            gate.fault(list, "at least one joint", "none");
-        }
-        if !gate.at_most(list, entries.len(), MAX_JOINTS, "joints") {
-            return out;
-        }
-        let mut seen = vec![false; model.joints.len()];
-        for (k, entry) in entries.iter().enumerate() {
-            let here = list.index(k);
+        let Some(entries) = &self.joints else { return Vec::new() };
+        let list = JointList { at: at.name("joints"), model, actuated: self.kind == TaskKindBody::Effort };
+        let check = |gate: &mut Gate, here: At<'_>, entry: &TaskJointBody| {
             let given = given!(entry, position, velocity, acceleration, torque);
             TASK_JOINT_KINDS.check(gate, here, self.kind.word(), &given);
-            let name = here.name("name");
-            let Some(i) = joint_index(gate, name, model, &entry.name, k) else { continue };
-            let Some(joint) = model.joints.get(i) else { continue };
-            if let Some(seen) = seen.get_mut(i)
-                && std::mem::replace(seen, true)
-            {
-                gate.fault(name, "each joint once", format!("{} again", quoted(&entry.name)));
-            }
-            if self.kind == TaskKindBody::Effort && !joint.actuated {
-                let got = format!("{}, which is passive", quoted(&entry.name));
-                gate.fault(name, "the name of an actuated joint", got);
-            }
-            out.push(read(i, joint, entry));
-        }
-        out
+        };
+        list.read(gate, entries, check, |_, _, i, joint, entry| Some(read(i, joint, entry)))
+    }
+}
+
+impl Named for TaskJointBody {
+    fn name(&self) -> &str {
+        &self.name
     }
 }
 

@@ -10,10 +10,12 @@ use super::export::ProblemOut;
 use super::number::{LinearAngularOut, Number, Numbers, Tuple, WrenchOut};
 use super::report::{BindingOut, BlockingOut, CertificateOut, FreeOut, GroundOut, LevelOut, MarginOut};
 use super::sensitivity::SensitivityOut;
+use super::solve::RuleBody;
 use super::spread::SpreadOut;
 use super::uniqueness::UniquenessOut;
+use super::withheld;
 use crate::model::Model;
-use crate::problem::question::Question;
+use crate::problem::question::{Question, Tick};
 use crate::reference::answer::{Answer, Motion, SoleAnswer, Status, TaskAnswer};
 
 /// How a request ended. `solved`: the certificate holds. `infeasible`: no answer obeys what must
@@ -51,6 +53,8 @@ pub(super) struct AnswerOut<'a> {
     status: StatusOut,
     /// Id of the model, carried loads included (no unit).
     model: &'a str,
+    /// The control tick (s), and the rule by which the wrench over it was predicted.
+    tick: TickOut,
     /// Axes of `base_acceleration` (m/s^2, rad/s^2), as the request gave them.
     velocity_axes: AxesOut,
     /// Torque and acceleration of every moving joint in model order (N m, rad/s^2; N, m/s^2); null
@@ -191,6 +195,24 @@ pub(super) struct TaskOut<'a> {
     residual: Numbers<'a>,
 }
 
+/// The control tick of an answer.
+#[derive(Debug, Clone, Copy, Serialize, JsonSchema)]
+#[schemars(rename = "TickAnswer")]
+struct TickOut {
+    /// Length T (s).
+    length: Number,
+    /// Tick rule (no unit): `held`, `backward_euler`, `trapezoid` or `explicit`.
+    rule: RuleBody,
+    /// True where the request named no rule, so that the default was taken (no unit).
+    rule_by_default: bool,
+}
+
+impl From<Tick> for TickOut {
+    fn from(tick: Tick) -> Self {
+        TickOut { length: Number(tick.length), rule: tick.rule.into(), rule_by_default: !tick.chosen }
+    }
+}
+
 /// A remark.
 #[derive(Debug, Clone, Serialize, JsonSchema)]
 #[schemars(rename = "Warning")]
@@ -201,14 +223,18 @@ struct WarningOut<'a> {
     text: &'a str,
 }
 
+/// Room to begin with (bytes): an answer for two soles and some twenty joints.
+const USUAL_LENGTH: usize = 32 * 1024;
+
 /// The document. Should a number not be finite, it is withheld with all others: the status then is
 /// `inaccurate` and a warning says so.
 pub(super) fn write(question: &Question, answer: &Answer, fingerprint: &str) -> Vec<u8> {
     let document = AnswerOut::of(question, answer, fingerprint);
-    match serde_json::to_vec(&document) {
-        Ok(bytes) => bytes,
+    let mut bytes = Vec::with_capacity(USUAL_LENGTH);
+    match serde_json::to_writer(&mut bytes, &document) {
+        Ok(()) => bytes,
         Err(error) => {
-            let text = format!("the answer is withheld: {error}");
+            let text = withheld::reason(question, answer, &document.not_finite(), &error.to_string());
             let withheld = document.withheld(&text);
             serde_json::to_vec(&withheld).unwrap_or_else(|_| b"{\"status\":\"inaccurate\"}".to_vec())
         }
@@ -224,6 +250,7 @@ impl<'a> AnswerOut<'a> {
             fingerprint,
             status: answer.status.into(),
             model: &question.model.id,
+            tick: question.tick.into(),
             velocity_axes: question.velocity_axes.into(),
             joints: motion.map(|motion| JointOut::all(&question.model, motion)),
             base_acceleration: motion.and_then(|motion| motion.base_acceleration).map(Into::into),
@@ -248,6 +275,22 @@ impl<'a> AnswerOut<'a> {
             sensitivity: answer.sensitivity.as_deref().map(|found| SensitivityOut::of(question, answer, found)),
             spread: answer.spread.as_deref().map(|spread| SpreadOut::of(&question.model, answer, spread)),
         }
+    }
+
+    /// The parts that hold a number that is not finite.
+    fn not_finite(&self) -> Vec<&'static str> {
+        fn bad<T: Serialize>(name: &'static str, part: &T) -> Option<&'static str> {
+            serde_json::to_vec(part).is_err().then_some(name)
+        }
+        let parts = [
+            bad("joints", &self.joints), bad("base_acceleration", &self.base_acceleration), bad("soles", &self.soles),
+            bad("tasks", &self.tasks), bad("levels", &self.levels), bad("binding", &self.binding),
+            bad("margins", &self.margins), bad("free", &self.free), bad("certificate", &self.certificate),
+            bad("blocking", &self.blocking), bad("ground", &self.ground), bad("problem", &self.problem),
+            bad("dynamics", &self.dynamics), bad("explained", &self.explained), bad("uniqueness", &self.uniqueness),
+            bad("sensitivity", &self.sensitivity), bad("spread", &self.spread),
+        ];
+        parts.into_iter().flatten().collect()
     }
 
     fn withheld(self, text: &'a str) -> Self {

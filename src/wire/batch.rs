@@ -12,10 +12,10 @@ use serde::{Deserialize, Serialize};
 use serde_json::{Map, Value, json};
 
 use super::common::Format;
-use super::gate::{quoted, push_token};
+use super::gate::{Gate, push_token, quoted};
 use super::refusal::{Fault, Refusal};
 use super::second::Document;
-use super::{ModelSource, raw, solve, typed};
+use super::{ModelSource, Request, raw, read, solve};
 use crate::cases::tally::{End, Tally};
 use crate::model::Model;
 
@@ -43,8 +43,8 @@ impl Operation {
     /// Reads a request of this kind for its form alone, and finds its model.
     fn check(self, request: &[u8], models: &dyn ModelSource) -> Result<Arc<Model>, Refusal> {
         match self {
-            Operation::Solve => typed::<solve::SolveRequest>(request, Document::Solve)?.model(models),
-            Operation::Dynamics => typed::<solve::DynamicsRequest>(request, Document::Dynamics)?.model(models),
+            Operation::Solve => read::<solve::SolveForm>(request, Document::Solve, models),
+            Operation::Dynamics => read::<solve::DynamicsForm>(request, Document::Dynamics, models),
         }
     }
 
@@ -71,6 +71,14 @@ pub(super) struct HeadBody {
     template: AnyObject,
     /// Members of the answer that are sent back (no unit), e.g. `["status", "joints"]`; all when left out.
     members: Option<Vec<String>>,
+}
+
+impl Request for HeadBody {
+    type Question = HeadBody;
+
+    fn read(self, gate: Gate, _: &dyn ModelSource) -> Result<HeadBody, Refusal> {
+        gate.finish().map(|()| self)
+    }
 }
 
 /// An object that other schemas describe.
@@ -213,7 +221,7 @@ impl Batch {
     /// [`Refusal`] with every fault of form that was found in it or in its template; 404 where the model is not known.
     pub fn open(head: &[u8], models: &dyn ModelSource) -> Result<Batch, Refusal> {
         object(head)?;
-        let body = typed::<HeadBody>(head, Document::Batch)?;
+        let body = read::<HeadBody>(head, Document::Batch, models)?;
         let operation = body.operation.unwrap_or(Operation::Solve);
         let AnyObject(mut template) = body.template;
         template.entry("format").or_insert_with(|| json!("underfoot/1"));

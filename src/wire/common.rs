@@ -106,9 +106,11 @@ impl LinearAngularBody {
 pub(super) struct LinearAngularGainBody {
     /// Gain of the linear part, 0 or more, in the unit of the member this stands in (1/s or 1/s^2);
     /// zero when left out.
+    #[schemars(extend("minimum" = 0.0))]
     pub(super) linear: Option<f64>,
     /// Gain of the angular part, 0 or more, in the unit of the member this stands in (1/s or 1/s^2);
     /// zero when left out.
+    #[schemars(extend("minimum" = 0.0))]
     pub(super) angular: Option<f64>,
 }
 

@@ -6,7 +6,7 @@ use nalgebra::{DMatrix, DVector, Vector6};
 use schemars::JsonSchema;
 use serde::{Deserialize, Serialize};
 
-use super::ModelSource;
+use super::{ModelSource, Request};
 use super::common::{Format, TextOr};
 use super::extras::{LoadBody, loaded};
 use super::gate::{At, Gate, quoted};
@@ -90,12 +90,12 @@ pub struct CompareQuestion {
     pub tolerance: f64,
 }
 
-impl CompareRequest {
-    /// The question.
-    pub(super) fn read(self, models: &dyn ModelSource) -> Result<CompareQuestion, Refusal> {
-        let mut gate = Gate::default();
+impl Request for CompareRequest {
+    type Question = CompareQuestion;
+
+    fn read(self, mut gate: Gate, models: &dyn ModelSource) -> Result<CompareQuestion, Refusal> {
         let at = At::ROOT;
-        let model = find(&self.model, models)?;
+        let Some(model) = find(&mut gate, &self.model, models)? else { return Err(gate.refuse()) };
         let model = loaded(&mut gate, at.name("loads"), model, self.loads.as_deref());
         let (state, velocity_axes) = self.state.read(&mut gate, at.name("state"), &model);
         let mut frames = Vec::new();

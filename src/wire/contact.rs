@@ -81,9 +81,11 @@ struct LawBody {
     kind: LawKind,
     /// For `bonded`: stiffness, 0 or more (N/m^3 per area, N/m per sole); one number for ground that
     /// is equally stiff in all directions.
+    #[schemars(extend("minimum" = 0.0))]
     stiffness: Option<NumberOr<DirectionsBody>>,
     /// For `bonded`: damping, 0 or more (N s/m^3 per area, N s/m per sole); one number for ground
     /// that damps equally in all directions.
+    #[schemars(extend("minimum" = 0.0))]
     damping: Option<NumberOr<DirectionsBody>>,
     /// For `bonded`: whether stiffness and damping are per `area` of the sole (N/m^3, N s/m^3) or
     /// for the whole `sole` (N/m, N s/m; divided by the polygon's area). A point sole has no area:
@@ -100,8 +102,10 @@ struct LawBody {
 #[schemars(rename = "NormalTangential")]
 struct DirectionsBody {
     /// Along the ground normal, 0 or more (stiffness N/m^3 or N/m, damping N s/m^3 or N s/m).
+    #[schemars(extend("minimum" = 0.0))]
     normal: f64,
     /// In the plane of the ground, 0 or more (stiffness N/m^3 or N/m, damping N s/m^3 or N s/m).
+    #[schemars(extend("minimum" = 0.0))]
     tangential: f64,
 }
 
@@ -234,7 +238,11 @@ impl ContactBody {
     }
 
     fn measured(&self, gate: &mut Gate, at: At<'_>, scene: &Scene<'_>, sole: &Sole) -> Option<Wrench> {
-        let body = self.measured_wrench?;
+        let Some(body) = self.measured_wrench else {
+            // One that was left out for its form is a measurement all the same.
+            let left_out = gate.lacks(at.name("measured_wrench"));
+            return left_out.then(|| Wrench { force: Vec3::zeros(), moment: Vec3::zeros() });
+        };
         let given = WrenchBody { force: body.force, moment: body.moment };
         let point = sole.shape == SoleShape::Point;
         let wrench = given.read(gate, at.name("measured_wrench"), point);

@@ -137,6 +137,9 @@ impl<'a> DynamicsOut<'a> {
     }
 }
 
+/// Room to begin with (bytes): some twenty joints and a few frames.
+const USUAL_LENGTH: usize = 32 * 1024;
+
 /// The document.
 pub(super) fn write(question: &DynamicsQuestion, report: &DynamicsReport, fingerprint: &str) -> Vec<u8> {
     let document = |dynamics| DynamicsAnswerOut {
@@ -147,7 +150,9 @@ pub(super) fn write(question: &DynamicsQuestion, report: &DynamicsReport, finger
         velocity_axes: question.velocity_axes.into(),
         dynamics,
     };
-    serde_json::to_vec(&document(Some(DynamicsOut::of(report))))
-        .or_else(|_| serde_json::to_vec(&document(None)))
-        .unwrap_or_default()
+    let mut bytes = Vec::with_capacity(USUAL_LENGTH);
+    match serde_json::to_writer(&mut bytes, &document(Some(DynamicsOut::of(report)))) {
+        Ok(()) => bytes,
+        Err(_) => serde_json::to_vec(&document(None)).unwrap_or_default(),
+    }
 }

@@ -16,7 +16,9 @@ use crate::problem::question::{ExternalWrench, Latency};
 use crate::spatial::{Mat3, Vec3};
 
 /// Loads and external wrenches of one request, each.
-const MAX_ENTRIES: usize = 200;
+pub(super) const MAX_ENTRIES: usize = 200;
+/// The largest mass of a load (kg).
+const MAX_MASS: f64 = 1e9;
 /// The longest latency (s).
 const MAX_DELAY: f64 = 1.0;
 
@@ -27,7 +29,8 @@ const MAX_DELAY: f64 = 1.0;
 pub(super) struct LoadBody {
     /// Link that carries it, as named in the URDF (no unit).
     frame: String,
-    /// Mass, 0 or more (kg).
+    /// Mass, 0 to 1e9 (kg).
+    #[schemars(extend("minimum" = 0.0, "maximum" = MAX_MASS))]
     mass: f64,
     /// Centre of mass in the link's frame [x, y, z] (m); its origin when left out.
     center: Option<[f64; 3]>,
@@ -50,7 +53,12 @@ pub(super) fn loaded(
     let mut loads = Vec::with_capacity(bodies.len());
     for (i, body) in bodies.iter().enumerate() {
         let here = at.index(i);
+        let before = gate.seen();
+        gate.within(here.name("mass"), body.mass, 0.0, MAX_MASS, "kg");
         let Some(frame) = frame_index(gate, here.name("frame"), &model, &body.frame) else { continue };
+        if gate.seen() > before {
+            continue;
+        }
         loads.push(Load {
             frame,
             mass: body.mass,
@@ -123,8 +131,10 @@ impl ExternalBody {
 #[schemars(rename = "Latency")]
 pub(super) struct LatencyBody {
     /// Time until the new torques act, more than 0, at most 1 (s).
+    #[schemars(extend("exclusiveMinimum" = 0.0, "maximum" = MAX_DELAY))]
     delay: f64,
     /// Torques that act until then (N m, or N for sliding joints): every actuated joint exactly once.
+    #[schemars(extend("maxItems" = MAX_JOINTS))]
     torques: Vec<JointTorqueBody>,
 }
 

@@ -4,7 +4,7 @@ use schemars::JsonSchema;
 use serde::Deserialize;
 
 use super::common::Whole;
-use super::gate::{At, Gate};
+use super::gate::{At, Gate, number};
 use super::treatment::{TreatmentBody, treatment};
 use crate::problem::question::{Friction, FrictionSet, NormalForce, WrenchRate};
 
@@ -34,11 +34,14 @@ pub(super) struct FrictionBody {
     /// `vertex` or `wrench` (no unit).
     set: SetBody,
     /// Friction coefficient, more than 0 (no unit).
+    #[schemars(extend("exclusiveMinimum" = 0.0, "maximum" = MAX_COEFFICIENT))]
     coefficient: f64,
     /// For the set `wrench` on a polygon: largest yaw moment about the polygon's centroid per
     /// normal force, more than 0 (m).
+    #[schemars(extend("exclusiveMinimum" = 0.0, "maximum" = MAX_COEFFICIENT))]
     torsion: Option<f64>,
     /// Facets of an inscribed pyramid, 3 to 64 (no unit); exact circular cones when left out.
+    #[schemars(extend("minimum" = FACETS.start(), "maximum" = FACETS.end()))]
     facets: Option<Whole>,
     /// How strictly it holds (excess in N); hard when left out.
     treatment: Option<TreatmentBody>,
@@ -120,8 +123,10 @@ impl NormalForceBody {
 #[schemars(rename = "WrenchRate")]
 pub(super) struct WrenchRateBody {
     /// Largest rate of each force component, more than 0 (N/s); none when left out.
+    #[schemars(extend("exclusiveMinimum" = 0.0))]
     force: Option<f64>,
     /// Largest rate of each moment component, more than 0 (N m/s); none when left out.
+    #[schemars(extend("exclusiveMinimum" = 0.0))]
     moment: Option<f64>,
     /// How strictly it holds (excess in N/s, N m/s), `hard` or `soft`; hard when left out.
     treatment: Option<TreatmentBody>,
@@ -160,7 +165,7 @@ impl WrenchRateBody {
 pub(super) fn positive(gate: &mut Gate, at: At<'_>, value: f64, most: f64, unit: &str) {
     if !(value > 0.0 && value <= most) {
         let space = if unit.is_empty() { "" } else { " " };
-        let expected = format!("a number above 0 and not above {most}{space}{unit}");
-        gate.fault(at, expected, value.to_string());
+        let expected = format!("a number above 0 and not above {}{space}{unit}", number(most));
+        gate.fault(at, expected, number(value));
     }
 }

@@ -1,5 +1,6 @@
 //! Where a value stands in a request, and the collector of everything that is wrong with it.
 
+use super::gaps::Gaps;
 use super::refusal::{Fault, Refusal};
 use crate::spatial::{Mat3, Vec3, rotation_from_quaternion};
 
@@ -60,15 +61,64 @@ pub(super) fn push_token(pointer: &mut String, token: &str) {
 #[derive(Debug, Default)]
 pub(super) struct Gate {
     faults: Vec<Fault>,
+    gaps: Gaps,
+    /// Things found wrong, kept among the faults or not.
+    seen: usize,
+    /// Code, title and detail of a refused robot.
+    robot: Option<(&'static str, &'static str, String)>,
 }
 
 impl Gate {
-    /// Notes that something is wrong here.
+    /// For a request of which parts were left out.
+    pub(super) fn with(gaps: Gaps) -> Self {
+        Gate { gaps, ..Gate::default() }
+    }
+
+    /// Notes that something is wrong here; unless a part that was left out may be why.
     pub(super) fn fault(&mut self, at: At<'_>, expected: impl Into<String>, got: impl Into<String>) {
-        if self.faults.len() < MAX_FAULTS {
-            let (expected, got) = (expected.into(), got.into());
-            self.faults.push(Fault { pointer: at.pointer(), expected, got, line: None });
+        self.note(Fault { pointer: at.pointer(), expected: expected.into(), got: got.into(), line: None });
+    }
+
+    fn note(&mut self, fault: Fault) {
+        self.seen += 1;
+        let pointer = self.gaps.original(&fault.pointer);
+        if self.faults.len() < MAX_FAULTS && !self.gaps.touch(&pointer) {
+            self.faults.push(Fault { pointer, ..fault });
         }
+    }
+
+    /// Notes why a robot cannot be used.
+    pub(super) fn robot(&mut self, fault: Fault, code: &'static str, title: &'static str, detail: String) {
+        self.robot = Some((code, title, detail));
+        self.note(fault);
+    }
+
+    /// Faults kept so far.
+    pub(super) fn kept(&self) -> usize {
+        self.faults.len()
+    }
+
+    /// Lets the faults kept since `before` point here: what is wrong comes from elsewhere, as `whence` says.
+    pub(super) fn gather(&mut self, before: usize, at: At<'_>, whence: &str) {
+        for fault in self.faults.iter_mut().skip(before) {
+            fault.pointer = self.gaps.original(&at.pointer());
+            fault.got = format!("{} {whence}", fault.got);
+        }
+    }
+
+    /// True where parts of the request were left out.
+    pub(super) fn partial(&self) -> bool {
+        !self.gaps.is_empty()
+    }
+
+    /// True where this member, or something in it, was left out.
+    pub(super) fn lacks(&self, at: At<'_>) -> bool {
+        self.partial() && self.gaps.within(&self.gaps.original(&at.pointer()))
+    }
+
+    /// True where this list, or an element of it, was left out.
+    pub(super) fn incomplete(&self, at: At<'_>) -> bool {
+        self.partial() && self.gaps.shortened(&self.gaps.original(&at.pointer()))
     }
 
     /// Notes that a member is missing.
@@ -81,7 +131,8 @@ impl Gate {
         // Written so that NaN is refused as well.
         if !(least..=largest).contains(&value) {
             let space = if unit.is_empty() { "" } else { " " };
-            self.fault(at, format!("a number from {least} to {largest}{space}{unit}"), value.to_string());
+            let expected = format!("a number from {} to {}{space}{unit}", number(least), number(largest));
+            self.fault(at, expected, number(value));
         }
         value
     }
@@ -126,13 +177,35 @@ impl Gate {
 
     /// True while nothing was wrong.
     pub(super) fn clean(&self) -> bool {
-        self.faults.is_empty()
+        self.seen == 0
+    }
+
+    /// How many things were wrong so far, said or not.
+    pub(super) fn seen(&self) -> usize {
+        self.seen
     }
 
     /// The refusal, if anything was wrong.
     pub(super) fn finish(self) -> Result<(), Refusal> {
-        if self.faults.is_empty() { Ok(()) } else { Err(Refusal::unusable(self.faults)) }
+        if self.clean() { Ok(()) } else { Err(self.refuse()) }
     }
+
+    /// The refusal, with what was found so far.
+    pub(super) fn refuse(self) -> Refusal {
+        let refusal = Refusal::unusable(self.faults);
+        match self.robot {
+            Some((code, title, detail)) if refusal.faults.len() == 1 => {
+                Refusal { code, title: title.to_string(), detail, ..refusal }
+            }
+            _ => refusal,
+        }
+    }
+}
+
+/// A number in few digits, with an exponent where it is far from 1.
+pub(super) fn number(value: f64) -> String {
+    let plain = value == 0.0 || (1e-4..1e7).contains(&value.abs()) || !value.is_finite();
+    if plain { value.to_string() } else { format!("{value:e}") }
 }
 
 /// A foreign text in quotation marks, cut to a length fit for a message.

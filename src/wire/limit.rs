@@ -3,10 +3,10 @@
 use schemars::JsonSchema;
 use serde::Deserialize;
 
-use super::friction::positive;
 use super::gate::{At, Gate, quoted};
+use super::joints::{JointList, Named};
 use super::kinds::{KindRule, KindTable, given};
-use super::state::joint_index;
+use super::solve::{MAX_NAME, TICK};
 use super::strict::MAX_MAGNITUDE;
 use super::treatment::{TreatmentBody, treatment};
 use crate::model::{Joint, MAX_MOVING_JOINTS, Model};
@@ -14,6 +14,9 @@ use crate::problem::question::{Limit, LimitKind, Tick};
 
 /// Joints one list may hold: as many as a model can have.
 pub(super) const MAX_JOINTS: usize = MAX_MOVING_JOINTS;
+/// The smallest bound of a torque or speed, and the narrowest range that is not a single position: rows are divided by them,
+/// which must not overflow (N m, N, rad/s, m/s, rad or m).
+const MIN_BOUND: f64 = 1e-9;
 /// The longest horizon of a joint limit (s).
 const MAX_HORIZON: f64 = 10.0;
 /// Ticks the horizon spans where the request gives none.
@@ -65,16 +68,19 @@ const ENTRY_KINDS: KindTable = KindTable {
 pub(super) struct LimitBody {
     /// Name by which the answer reports it, unique among limits and tasks (no unit); the kind when
     /// left out.
+    #[schemars(extend("minLength" = 1, "maxLength" = MAX_NAME))]
     name: Option<String>,
     /// `torque`, `torque_speed`, `coupled_torque`, `position` or `velocity` (no unit).
     kind: LimitKindBody,
     /// Joints it holds for (bounds in N m or N, rad/s or m/s, rad or m). When left out: every joint
     /// for which the model gives such a limit. Not for `coupled_torque`, which needs them.
+    #[schemars(extend("minItems" = 1, "maxItems" = MAX_JOINTS))]
     joints: Option<Vec<LimitJointBody>>,
     /// For `coupled_torque`: bound of the weighted sum of torques (N m, or N for sliding joints).
     bound: Option<f64>,
     /// For `position` and `velocity`: horizon H (s), at least one tick, at most 10 s; ten ticks when
     /// left out.
+    #[schemars(extend("minimum" = TICK.0, "maximum" = MAX_HORIZON))]
     horizon: Option<f64>,
     /// How strictly it holds, `hard` or `soft` (excess in N m or N, rad or m, rad/s or m/s); hard
     /// when left out.
@@ -88,19 +94,28 @@ pub(super) struct LimitBody {
 struct LimitJointBody {
     /// Joint name as in the URDF (no unit).
     name: String,
-    /// For `torque`: largest torque or force, more than 0 (N m or N). For `velocity`: largest speed,
-    /// more than 0 (rad/s or m/s).
+    /// For `torque`: largest torque or force, 1e-9 or more (N m or N). For `velocity`: largest speed,
+    /// 1e-9 or more (rad/s or m/s).
+    #[schemars(extend("minimum" = MIN_BOUND))]
     bound: Option<f64>,
     /// For `position`: lower end (rad or m).
     lower: Option<f64>,
-    /// For `position`: upper end (rad or m).
+    /// For `position`: upper end (rad or m); the lower one, or at least 1e-9 above it.
     upper: Option<f64>,
-    /// For `torque_speed`: torque at standstill, more than 0 (N m or N).
+    /// For `torque_speed`: torque at standstill, 1e-9 or more (N m or N).
+    #[schemars(extend("minimum" = MIN_BOUND))]
     stall: Option<f64>,
-    /// For `torque_speed`: speed at which no torque is left, more than 0 (rad/s or m/s).
+    /// For `torque_speed`: speed at which no torque is left, 1e-9 or more (rad/s or m/s).
+    #[schemars(extend("minimum" = MIN_BOUND))]
     no_load_speed: Option<f64>,
     /// For `coupled_torque`: coefficient of this joint's torque (no unit).
     coefficient: Option<f64>,
+}
+
+impl Named for LimitJointBody {
+    fn name(&self) -> &str {
+        &self.name
+    }
 }
 
 impl LimitJointBody {
@@ -194,11 +209,15 @@ impl LimitBody {
         model: &Model,
         read: impl Fn(&mut Gate, At<'_>, usize, &Joint, &LimitJointBody) -> Option<T>,
     ) -> Vec<T> {
-        let mut out = Vec::new();
         let Some(entries) = &self.joints else {
+            let mut out = Vec::new();
             for (i, joint) in model.joints.iter().enumerate() {
                 if self.kind.in_model(joint) {
+                    let before = gate.kept();
                     out.extend(read(gate, at, i, joint, &LimitJointBody::named(&joint.name)));
+                    if gate.kept() > before {
+                        gate.gather(before, at, &format!("from the model's joint {}", quoted(&joint.name)));
+                    }
                 }
             }
             if out.is_empty() && self.kind != LimitKindBody::CoupledTorque {
@@ -206,33 +225,12 @@ impl LimitBody {
             }
             return out;
         };
-        if entries.is_empty() {
-            gate.fault(at, "at least one joint", "none");
-        }
-        if !gate.at_most(at, entries.len(), MAX_JOINTS, "joints") {
-            return out;
-        }
-        let mut seen = vec![false; model.joints.len()];
-        for (k, entry) in entries.iter().enumerate() {
-            let here = at.index(k);
-            let given =
-                given!(entry, bound, lower, upper, stall, no_load_speed, coefficient);
+        let list = JointList { at, model, actuated: self.kind.on_torque() };
+        let check = |gate: &mut Gate, here: At<'_>, entry: &LimitJointBody| {
+            let given = given!(entry, bound, lower, upper, stall, no_load_speed, coefficient);
             ENTRY_KINDS.check(gate, here, self.kind.word(), &given);
-            let name = here.name("name");
-            let Some(i) = joint_index(gate, name, model, &entry.name, k) else { continue };
-            let Some(joint) = model.joints.get(i) else { continue };
-            if let Some(seen) = seen.get_mut(i)
-                && std::mem::replace(seen, true)
-            {
-                gate.fault(name, "each joint once", format!("{} again", quoted(&entry.name)));
-            }
-            if self.kind.on_torque() && !joint.actuated {
-                let got = format!("{}, which is passive", quoted(&entry.name));
-                gate.fault(name, "the name of an actuated joint", got);
-            }
-            out.extend(read(gate, here, i, joint, entry));
-        }
-        out
+        };
+        list.read(gate, entries, check, read)
     }
 }
 
@@ -247,7 +245,7 @@ fn torque_bound(
         gate.missing(at.name("bound"), "a bound, for the model gives this joint no effort limit");
         return None;
     };
-    positive(gate, at.name("bound"), bound, MAX_MAGNITUDE, "N m or N");
+    gate.within(at.name("bound"), bound, MIN_BOUND, MAX_MAGNITUDE, "N m or N");
     Some((i, bound))
 }
 
@@ -262,7 +260,7 @@ fn speed_bound(
         gate.missing(at.name("bound"), "a bound, for the model gives this joint no largest speed");
         return None;
     };
-    positive(gate, at.name("bound"), bound, MAX_MAGNITUDE, "rad/s or m/s");
+    gate.within(at.name("bound"), bound, MIN_BOUND, MAX_MAGNITUDE, "rad/s or m/s");
     Some((i, bound))
 }
 
@@ -278,7 +276,9 @@ fn torque_speed(
     let speed = entry.no_load_speed.or(line.map(|line| line.no_load_speed));
     for (name, value, unit) in [("stall", stall, "N m or N"), ("no_load_speed", speed, "rad/s or m/s")] {
         match value {
-            Some(value) => positive(gate, at.name(name), value, MAX_MAGNITUDE, unit),
+            Some(value) => {
+                gate.within(at.name(name), value, MIN_BOUND, MAX_MAGNITUDE, unit);
+            }
             None => gate.missing(at.name(name), "a number, for the model gives no torque-speed line"),
         }
     }
@@ -302,6 +302,9 @@ fn position_range(
     let (lower, upper) = (lower?, upper?);
     if lower > upper {
         gate.fault(at.name("upper"), format!("{lower} or more"), upper.to_string());
+    } else if lower < upper && upper - lower < MIN_BOUND {
+        let expected = format!("{lower}, or at least {MIN_BOUND} above it");
+        gate.fault(at.name("upper"), expected, upper.to_string());
     }
     Some((i, lower, upper))
 }

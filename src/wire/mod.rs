@@ -13,7 +13,9 @@ mod explained;
 mod export;
 mod extras;
 mod friction;
+mod gaps;
 mod gate;
+mod joints;
 mod kinds;
 mod limit;
 mod market;
@@ -36,6 +38,7 @@ mod task;
 mod treatment;
 mod uniqueness;
 pub mod view;
+mod withheld;
 
 use std::sync::Arc;
 
@@ -51,12 +54,20 @@ pub use compare::CompareQuestion;
 pub use openapi::openapi;
 pub use refusal::{Fault, Refusal};
 pub use schema::{schema, schema_names};
+use gate::Gate;
 use second::Document;
 
 /// Where models registered earlier are kept.
 pub trait ModelSource {
     /// The model with this id, if it is still kept.
     fn find(&self, id: &str) -> Option<Arc<Model>>;
+
+    /// The model that a request describes itself: the one made from the same description before, or else what `make`
+    /// makes of it. `key`: a hash of the description.
+    fn described(&self, key: &[u8; 32], make: &mut dyn FnMut() -> Option<Arc<Model>>) -> Option<Arc<Model>> {
+        let _ = key;
+        make()
+    }
 }
 
 /// The largest request body (bytes).
@@ -67,7 +78,7 @@ pub const MAX_BODY: usize = 4 * 1024 * 1024;
 /// # Errors
 /// [`Refusal`] with every fault that was found.
 pub fn read_model(body: &[u8]) -> Result<Model, Refusal> {
-    typed::<model::ModelRequest>(body, Document::Model)?.read()
+    read::<model::ModelRequest>(body, Document::Model, &NoModels)
 }
 
 /// Reads the body of `POST /v1/solve`.
@@ -75,7 +86,7 @@ pub fn read_model(body: &[u8]) -> Result<Model, Refusal> {
 /// # Errors
 /// [`Refusal`] with every fault that was found; 404 where the model's id is not known.
 pub fn read_solve(body: &[u8], models: &dyn ModelSource) -> Result<Question, Refusal> {
-    typed::<solve::SolveRequest>(body, Document::Solve)?.read(models)
+    read::<solve::SolveRequest>(body, Document::Solve, models)
 }
 
 /// Reads the body of `POST /v1/dynamics`.
@@ -83,7 +94,25 @@ pub fn read_solve(body: &[u8], models: &dyn ModelSource) -> Result<Question, Ref
 /// # Errors
 /// [`Refusal`] with every fault that was found; 404 where the model's id is not known.
 pub fn read_dynamics(body: &[u8], models: &dyn ModelSource) -> Result<DynamicsQuestion, Refusal> {
-    typed::<solve::DynamicsRequest>(body, Document::Dynamics)?.read(models)
+    read::<solve::DynamicsRequest>(body, Document::Dynamics, models)
+}
+
+/// No models are kept.
+struct NoModels;
+
+impl ModelSource for NoModels {
+    fn find(&self, _: &str) -> Option<Arc<Model>> {
+        None
+    }
+}
+
+/// A request document that becomes something the domain understands.
+trait Request: serde::de::DeserializeOwned {
+    /// What it becomes.
+    type Question;
+
+    /// Checks and converts it.
+    fn read(self, gate: Gate, models: &dyn ModelSource) -> Result<Self::Question, Refusal>;
 }
 
 /// Reads the body of `POST /v1/compare`.
@@ -91,7 +120,7 @@ pub fn read_dynamics(body: &[u8], models: &dyn ModelSource) -> Result<DynamicsQu
 /// # Errors
 /// [`Refusal`] with every fault that was found; 404 where the model's id is not known.
 pub fn read_compare(body: &[u8], models: &dyn ModelSource) -> Result<CompareQuestion, Refusal> {
-    typed::<compare::CompareRequest>(body, Document::Compare)?.read(models)
+    read::<compare::CompareRequest>(body, Document::Compare, models)
 }
 
 /// The answer to a comparison.
@@ -101,12 +130,19 @@ pub fn write_compare(asked: &CompareQuestion, found: &Comparison, fingerprint: &
 
 /// Typed straight from the bytes; only a body that fails is gone through a second time, for the
 /// sake of every fault's pointer.
-fn typed<T: serde::de::DeserializeOwned>(body: &[u8], document: Document) -> Result<T, Refusal> {
+fn read<T: Request>(body: &[u8], document: Document, models: &dyn ModelSource) -> Result<T::Question, Refusal> {
     if body.len() > MAX_BODY {
         let detail = format!("a request may have {MAX_BODY} bytes, this one has {}", body.len());
         return Err(Refusal::new(413, "body-too-large", "The request is too large", detail));
     }
-    strict::read(body).map_err(|error| second::refusal(document, body, &error))
+    match strict::read::<T>(body) {
+        Ok(request) => {
+            request.read(Gate::default(), models).map_err(|refusal| second::completed(document, body, refusal))
+        }
+        Err(error) => Err(second::refusal(document, body, &error, |rest, gaps| {
+            strict::read::<T>(rest).ok()?.read(Gate::with(gaps), models).err()
+        })),
+    }
 }
 
 /// The document that describes a model.

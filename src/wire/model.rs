@@ -1,19 +1,24 @@
 //! A robot in a request.
 
+use std::fmt::{self, Write as _};
+use std::sync::Arc;
+
 use schemars::JsonSchema;
 use serde::Deserialize;
+use sha2::{Digest, Sha256};
 
 use super::common::{Format, pose};
 use super::gate::{At, Gate, push_token};
 use super::refusal::{Fault, Refusal};
+use super::{ModelSource, Request};
 use crate::model::{
-    JointSpec, Model, ModelError, ModelOptions, SoleSpec, Subject, TorqueSpeedLine, read_urdf,
+    JointSpec, MAX_SOLES, Model, ModelError, ModelOptions, SoleSpec, Subject, TorqueSpeedLine, read_urdf,
 };
 use crate::spatial::polygon::{Polygon, PolygonError, SoleShape};
 
 /// Vertices of a sole polygon.
 const MAX_VERTICES: usize = 64;
-/// Soles and joint settings of one model.
+/// Joint settings of one model.
 const MAX_ENTRIES: usize = 200;
 
 /// Registers a robot (`POST /v1/models`): a URDF and what it does not hold.
@@ -29,9 +34,11 @@ pub(super) struct ModelRequest {
     /// True: the base link is welded to the world (no unit); false when left out.
     fixed_base: Option<bool>,
     /// Soles, at most 64 (m); none when left out.
+    #[schemars(extend("maxItems" = MAX_SOLES))]
     soles: Option<Vec<SoleBody>>,
     /// Settings of single joints, at most one entry a joint (kg m^2, N m, rad, s); what is left out
     /// keeps the URDF's value.
+    #[schemars(extend("maxItems" = MAX_ENTRIES))]
     joints: Option<Vec<JointBody>>,
 }
 
@@ -45,9 +52,11 @@ pub(super) struct InlineModel {
     /// True: the base link is welded to the world (no unit); false when left out.
     fixed_base: Option<bool>,
     /// Soles, at most 64 (m); none when left out.
+    #[schemars(extend("maxItems" = MAX_SOLES))]
     soles: Option<Vec<SoleBody>>,
     /// Settings of single joints, at most one entry a joint (kg m^2, N m, rad, s); what is left out
     /// keeps the URDF's value.
+    #[schemars(extend("maxItems" = MAX_ENTRIES))]
     joints: Option<Vec<JointBody>>,
 }
 
@@ -79,6 +88,7 @@ struct SoleBody {
     orientation: Option<[f64; 4]>,
     /// Vertices [x, y] in the sole frame (m), 3 to 64, strictly convex, counter-clockwise seen from
     /// +z. Not for a point.
+    #[schemars(extend("minItems" = 3, "maxItems" = MAX_VERTICES))]
     vertices: Option<Vec<[f64; 2]>>,
 }
 
@@ -90,10 +100,13 @@ struct JointBody {
     /// Joint name as in the URDF (no unit).
     name: String,
     /// Reflected rotor inertia, 0 or more (kg m^2 or kg); zero when left out.
+    #[schemars(extend("minimum" = 0.0))]
     rotor_inertia: Option<f64>,
     /// Viscous friction, 0 or more (N m s/rad or N s/m); the URDF's `damping` when left out.
+    #[schemars(extend("minimum" = 0.0))]
     viscous_friction: Option<f64>,
     /// Coulomb friction, 0 or more (N m or N); the URDF's `friction` when left out.
+    #[schemars(extend("minimum" = 0.0))]
     coulomb_friction: Option<f64>,
     /// Torque that falls linearly with speed (N m and rad/s, or N and m/s); none when left out.
     torque_speed: Option<TorqueSpeedBody>,
@@ -104,8 +117,10 @@ struct JointBody {
     /// Position limits (rad or m); the URDF's when left out.
     position: Option<RangeBody>,
     /// Largest speed, more than 0 (rad/s or m/s); the URDF's when left out.
+    #[schemars(extend("exclusiveMinimum" = 0.0))]
     speed: Option<f64>,
     /// Largest torque or force, more than 0 (N m or N); the URDF's when left out.
+    #[schemars(extend("exclusiveMinimum" = 0.0))]
     effort: Option<f64>,
 }
 
@@ -115,8 +130,10 @@ struct JointBody {
 #[schemars(rename = "TorqueSpeed")]
 struct TorqueSpeedBody {
     /// Torque or force at standstill, more than 0 (N m or N).
+    #[schemars(extend("exclusiveMinimum" = 0.0))]
     stall: f64,
     /// Speed at which none is left, more than 0 (rad/s or m/s).
+    #[schemars(extend("exclusiveMinimum" = 0.0))]
     no_load_speed: f64,
 }
 
@@ -131,26 +148,62 @@ struct RangeBody {
     upper: f64,
 }
 
-impl ModelRequest {
-    /// The robot.
-    pub(super) fn read(self) -> Result<Model, Refusal> {
+impl Request for ModelRequest {
+    type Question = Model;
+
+    fn read(self, mut gate: Gate, _: &dyn ModelSource) -> Result<Model, Refusal> {
         let inline = InlineModel {
             urdf: self.urdf,
             fixed_base: self.fixed_base,
             soles: self.soles,
             joints: self.joints,
         };
-        inline.read(At::ROOT)
+        inline.read(&mut gate, At::ROOT).ok_or_else(|| gate.refuse())
+    }
+}
+
+/// Hashes what is written to it.
+struct Hashed(Sha256);
+
+impl fmt::Write for Hashed {
+    fn write_str(&mut self, text: &str) -> fmt::Result {
+        self.0.update(text.as_bytes());
+        Ok(())
     }
 }
 
 impl InlineModel {
-    /// The robot described at this place of the request.
-    pub(super) fn read(&self, at: At<'_>) -> Result<Model, Refusal> {
-        let mut gate = Gate::default();
-        let options = self.options(&mut gate, at);
-        gate.finish()?;
-        read_urdf(&self.urdf, &options).map_err(|error| refusal(&error, at))
+    /// The robot described at this place of the request, which is not read anew where the source has kept it.
+    pub(super) fn find(&self, gate: &mut Gate, at: At<'_>, models: &dyn ModelSource) -> Option<Arc<Model>> {
+        if gate.partial() {
+            return self.read(gate, at).map(Arc::new);
+        }
+        models.described(&self.key(), &mut || self.read(gate, at).map(Arc::new))
+    }
+
+    /// A hash of everything in the description, the URDF's text as it stands.
+    fn key(&self) -> [u8; 32] {
+        let mut hash = Hashed(Sha256::new());
+        // Writing to a hash cannot fail; numbers are written so that different ones differ.
+        let _ = write!(hash, "{}:{}{:?}{:?}{:?}", self.urdf.len(), self.urdf, self.fixed_base, self.soles, self.joints);
+        hash.0.finalize().into()
+    }
+
+    /// The robot described at this place of the request; none where it cannot be used. Where a part of it was left out, the
+    /// rest describes another robot, of which only the options are looked at.
+    pub(super) fn read(&self, gate: &mut Gate, at: At<'_>) -> Option<Model> {
+        let before = gate.seen();
+        let options = self.options(gate, at);
+        if gate.seen() > before || gate.lacks(at) {
+            return None;
+        }
+        match read_urdf(&self.urdf, &options) {
+            Ok(model) => Some(model),
+            Err(error) => {
+                refuse(gate, &error, at);
+                None
+            }
+        }
     }
 
     fn options(&self, gate: &mut Gate, at: At<'_>) -> ModelOptions {
@@ -161,7 +214,7 @@ impl InlineModel {
             ..ModelOptions::default()
         };
         let list = at.name("soles");
-        if gate.at_most(list, soles.len(), MAX_ENTRIES, "soles") {
+        if gate.at_most(list, soles.len(), MAX_SOLES, "soles") {
             options.soles =
                 soles.iter().enumerate().map(|(i, sole)| sole.read(gate, list.index(i))).collect();
         }
@@ -181,14 +234,15 @@ impl SoleBody {
             name: self.name.clone(),
             link: self.link.clone(),
             placement,
-            shape: self.shape(gate, at.name("vertices")),
+            shape: self.shape(gate, at),
         }
     }
 
-    fn shape(&self, gate: &mut Gate, at: At<'_>) -> SoleShape {
+    fn shape(&self, gate: &mut Gate, sole: At<'_>) -> SoleShape {
+        let at = sole.name("vertices");
         let point = self.kind == Some(SoleKind::Point);
         let Some(vertices) = &self.vertices else {
-            if !point {
+            if !point && !gate.lacks(sole.name("kind")) {
                 gate.missing(at, "the vertices of the polygon, or kind \"point\"");
             }
             return SoleShape::Point;
@@ -261,8 +315,8 @@ impl JointBody {
     }
 }
 
-/// A refused description as a refused request.
-fn refusal(error: &ModelError, at: At<'_>) -> Refusal {
+/// Notes a refused description.
+fn refuse(gate: &mut Gate, error: &ModelError, at: At<'_>) {
     let (mut pointer, line) = match error.subject {
         Subject::Urdf { line, .. } => (at.name("urdf").pointer(), u32::try_from(line).ok()),
         Subject::Sole(i) => (at.name("soles").index(i).pointer(), None),
@@ -271,16 +325,11 @@ fn refusal(error: &ModelError, at: At<'_>) -> Refusal {
     for token in error.member().into_iter().flat_map(|member| member.split('.')) {
         push_token(&mut pointer, token);
     }
-    Refusal {
-        status: 422,
-        code: error.code(),
-        title: "The robot description cannot be used".to_string(),
-        detail: error.to_string(),
-        faults: vec![Fault {
-            pointer,
-            expected: "a robot that can be modelled".to_string(),
-            got: format!("{}: {}", error.element, error.fault),
-            line,
-        }],
-    }
+    let fault = Fault {
+        pointer,
+        expected: "a robot that can be modelled".to_string(),
+        got: format!("{}: {}", error.element, error.fault),
+        line,
+    };
+    gate.robot(fault, error.code(), "The robot description cannot be used", error.to_string());
 }

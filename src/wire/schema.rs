@@ -37,6 +37,25 @@ pub fn schema(name: &str) -> Option<String> {
 
 /// The JSON Schema (draft 2020-12) of this name.
 pub(super) fn value(name: &str) -> Option<Value> {
+    let (mut schema, request) = plain(name)?;
+    if request {
+        tighten(&mut schema);
+        add_kinds(&mut schema);
+    }
+    Some(schema)
+}
+
+/// What the typed pass asks of a request, and no more: types, members, words and the size of numbers; neither ranges nor which
+/// members go with which kind.
+pub(super) fn form(name: &str) -> Option<Value> {
+    let (mut schema, _) = plain(name)?;
+    loosen(&mut schema);
+    tighten(&mut schema);
+    Some(schema)
+}
+
+/// The schema as the types give it, and whether it is that of a request.
+fn plain(name: &str) -> Option<(Value, bool)> {
     let reading = || SchemaSettings::draft2020_12().for_deserialize().into_generator();
     let writing = || SchemaSettings::draft2020_12().for_serialize().into_generator();
     let (schema, request) = match name {
@@ -55,12 +74,7 @@ pub(super) fn value(name: &str) -> Option<Value> {
         "problem" => (writing().into_root_schema_for::<problem::ProblemOut<'_>>(), false),
         _ => return None,
     };
-    let mut schema = Value::from(schema);
-    if request {
-        tighten(&mut schema);
-        add_kinds(&mut schema);
-    }
-    Some(schema)
+    Some((Value::from(schema), request))
 }
 
 /// Requests know no null: what is optional is left out. And their numbers are bounded.
@@ -70,10 +84,35 @@ fn tighten(schema: &mut Value) {
         Value::Object(members) => {
             without_null(members);
             if members.get("type") == Some(&json!("number")) {
-                members.insert("minimum".to_string(), json!(-MAX_MAGNITUDE));
-                members.insert("maximum".to_string(), json!(MAX_MAGNITUDE));
+                if !members.contains_key("exclusiveMinimum") {
+                    members.entry("minimum").or_insert(json!(-MAX_MAGNITUDE));
+                }
+                members.entry("maximum").or_insert(json!(MAX_MAGNITUDE));
             }
             members.values_mut().for_each(tighten);
+        }
+        _ => {}
+    }
+}
+
+/// Takes ranges away: of numbers, of the length of names, of the length of arrays that are not of one fixed length.
+fn loosen(schema: &mut Value) {
+    match schema {
+        Value::Array(elements) => elements.iter_mut().for_each(loosen),
+        Value::Object(members) => {
+            let whole = members.get("type").is_some_and(|kind| kind.to_string().contains("integer"));
+            for name in ["minimum", "maximum", "exclusiveMinimum", "minLength", "maxLength"] {
+                members.shift_remove(name);
+            }
+            if whole {
+                members.insert("minimum".to_string(), json!(0));
+                members.insert("maximum".to_string(), json!(u32::MAX));
+            }
+            if members.get("minItems") != members.get("maxItems") {
+                members.shift_remove("minItems");
+                members.shift_remove("maxItems");
+            }
+            members.values_mut().for_each(loosen);
         }
         _ => {}
     }

@@ -1,16 +1,20 @@
-//! The second pass over a request that the typed one refused: find every fault of form, each with
-//! its pointer.
+//! The second pass over a request that was refused: every fault, each with its pointer. What the schema sees comes first,
+//! then what the gate makes of the parts that have the right form.
 
 use std::sync::OnceLock;
 
 use jsonschema::error::{TypeKind, ValidationErrorKind};
 use jsonschema::{ValidationError, Validator};
-use serde_json::Value;
+use serde_json::{Value, json};
 
+use super::gaps::{Gaps, Misfit};
 use super::gate::{MAX_FAULTS, push_token, quoted};
 use super::raw;
 use super::refusal::{Fault, Refusal};
 use super::schema;
+
+/// Schema errors of one request that are looked at.
+const MAX_ERRORS: usize = 200;
 
 /// Request documents.
 #[derive(Debug, Clone, Copy)]
@@ -22,23 +26,115 @@ pub(super) enum Document {
     Compare,
 }
 
-/// Why the body is refused, given what the typed pass said.
-pub(super) fn refusal(document: Document, body: &[u8], typed: &serde_json::Error) -> Refusal {
-    let value = match raw::parse(body) {
+impl Document {
+    const COUNT: usize = 5;
+
+    /// Name of its schema.
+    fn name(self) -> &'static str {
+        match self {
+            Document::Solve => "solve-request",
+            Document::Dynamics => "dynamics-request",
+            Document::Model => "model-request",
+            Document::Batch => "batch-request",
+            Document::Compare => "compare-request",
+        }
+    }
+
+    /// What stands in for members that the rest cannot be read without. The tick is the shortest there is, which no
+    /// other member is too large or too small for.
+    fn stand_ins(self) -> Vec<(&'static str, Value)> {
+        let (format, text) = (("/format", json!("underfoot/1")), json!(""));
+        match self {
+            Document::Model => vec![format, ("/urdf", text)],
+            Document::Batch => vec![format, ("/template", json!({}))],
+            Document::Compare => vec![
+                format,
+                ("/model/urdf", text.clone()),
+                ("/model", text),
+                ("/state", json!({})),
+                ("/yours", json!({})),
+            ],
+            Document::Solve | Document::Dynamics => vec![
+                format,
+                ("/model/urdf", text.clone()),
+                ("/model", text),
+                ("/state", json!({})),
+                ("/tick", json!({ "length": 1e-6 })),
+            ],
+        }
+    }
+}
+
+/// Why a body is refused that the typed pass could not read, given what that pass said. `rest` reads what is left of the
+/// body once the parts without the right form are out.
+pub(super) fn refusal(
+    document: Document,
+    body: &[u8],
+    typed: &serde_json::Error,
+    rest: impl FnOnce(&[u8], Gaps) -> Option<Refusal>,
+) -> Refusal {
+    let mut value = match raw::parse(body) {
         Ok(value) => value,
         Err(raw::Failure::Refused(refusal)) => return refusal,
         Err(raw::Failure::TooManyValues) => return unlocated(typed),
     };
-    let Some(validator) = validator(document) else { return unlocated(typed) };
+    let mut faults = by_schema(document, &value);
+    if faults.is_empty() {
+        return unlocated(typed);
+    }
+    let read_rest = || {
+        let form = validator(document, Pass::Form)?;
+        let gaps = Gaps::make(&mut value, &document.stand_ins(), |value| misfits(form, value))?;
+        rest(&serde_json::to_vec(&value).ok()?, gaps)
+    };
+    if let Some(refusal) = read_rest() {
+        join(&mut faults, refusal.faults);
+    }
+    Refusal::unusable(faults)
+}
+
+/// A refusal of the gate, with what the schema sees besides: parts that the gate could not look at, for something they
+/// hang on is wrong.
+pub(super) fn completed(document: Document, body: &[u8], refusal: Refusal) -> Refusal {
+    let Ok(value) = raw::parse(body) else { return refusal };
+    let mut faults = refusal.faults.clone();
+    join(&mut faults, by_schema(document, &value));
+    if refusal.status != 422 || faults.len() == refusal.faults.len() { refusal } else { Refusal::unusable(faults) }
+}
+
+/// Adds the faults whose place has none yet.
+fn join(faults: &mut Vec<Fault>, more: Vec<Fault>) {
+    for fault in more {
+        if faults.len() < MAX_FAULTS && faults.iter().all(|known| known.pointer != fault.pointer) {
+            faults.push(fault);
+        }
+    }
+}
+
+/// What the published schema finds wrong.
+fn by_schema(document: Document, value: &Value) -> Vec<Fault> {
     let mut faults = Vec::new();
-    for error in validator.iter_errors(&value) {
+    let errors = validator(document, Pass::Published).into_iter().flat_map(|v| v.iter_errors(value));
+    for error in errors.take(MAX_ERRORS) {
         add(&error, &mut faults);
         if faults.len() >= MAX_FAULTS {
             faults.truncate(MAX_FAULTS);
             break;
         }
     }
-    if faults.is_empty() { unlocated(typed) } else { Refusal::unusable(faults) }
+    faults
+}
+
+/// What does not have the form that the typed pass asks for.
+fn misfits(form: &Validator, value: &Value) -> Vec<Misfit> {
+    let mut misfits = Vec::new();
+    for error in form.iter_errors(value).take(MAX_ERRORS) {
+        let unknown = matches!(error.kind(), ValidationErrorKind::AdditionalProperties { .. });
+        let mut faults = Vec::new();
+        add(&error, &mut faults);
+        misfits.extend(faults.into_iter().map(|fault| Misfit { pointer: fault.pointer, unknown }));
+    }
+    misfits
 }
 
 /// The typed pass's own words, where the second pass cannot point at members. Not met unless the
@@ -54,20 +150,27 @@ fn unlocated(typed: &serde_json::Error) -> Refusal {
     Refusal { code: "unusable-form", ..refusal }
 }
 
-fn validator(document: Document) -> Option<&'static Validator> {
-    static VALIDATORS: [OnceLock<Option<Validator>>; 5] = [const { OnceLock::new() }; 5];
-    let (slot, name) = match document {
-        Document::Solve => (&VALIDATORS[0], "solve-request"),
-        Document::Dynamics => (&VALIDATORS[1], "dynamics-request"),
-        Document::Model => (&VALIDATORS[2], "model-request"),
-        Document::Batch => (&VALIDATORS[3], "batch-request"),
-        Document::Compare => (&VALIDATORS[4], "compare-request"),
-    };
-    slot.get_or_init(|| jsonschema::validator_for(&schema::value(name)?).ok()).as_ref()
+/// Which schema: the published one, or the form that the typed pass asks for.
+#[derive(Debug, Clone, Copy)]
+enum Pass {
+    Published,
+    Form,
 }
 
-/// Adds what one schema error says. Errors that are already there are left out: a member that is
-/// unknown may be so under several keywords.
+fn validator(document: Document, pass: Pass) -> Option<&'static Validator> {
+    static VALIDATORS: [[OnceLock<Option<Validator>>; Document::COUNT]; 2] =
+        [const { [const { OnceLock::new() }; Document::COUNT] }; 2];
+    let make = || {
+        let schema = match pass {
+            Pass::Published => schema::value(document.name())?,
+            Pass::Form => schema::form(document.name())?,
+        };
+        jsonschema::validator_for(&schema).ok()
+    };
+    VALIDATORS.get(pass as usize)?.get(document as usize)?.get_or_init(make).as_ref()
+}
+
+/// Adds what one schema error says: the first at each place, which may be wrong under several keywords.
 fn add(error: &ValidationError<'_>, faults: &mut Vec<Fault>) {
     let pointer = error.instance_path().as_str().to_string();
     let got = shown(error.instance().as_ref());
@@ -90,13 +193,20 @@ fn add(error: &ValidationError<'_>, faults: &mut Vec<Fault>) {
             return add_closest(context, &pointer, got, faults);
         }
         ValidationErrorKind::Type { kind } => (pointer, types(kind), got),
-        ValidationErrorKind::Enum { options } => (pointer, format!("one of {options}"), got),
+        ValidationErrorKind::Enum { options } => {
+            // It says more than that the type is wrong, which may have been noted as well.
+            faults.retain(|fault| fault.pointer != pointer);
+            (pointer, format!("one of {options}"), got)
+        }
         ValidationErrorKind::Constant { expected_value } => (pointer, expected_value.to_string(), got),
         ValidationErrorKind::FalseSchema => {
             (pointer, "no such member with this kind".to_string(), "one".to_string())
         }
         ValidationErrorKind::Minimum { limit } => (pointer, format!("{limit} or more"), got),
         ValidationErrorKind::Maximum { limit } => (pointer, format!("{limit} or less"), got),
+        ValidationErrorKind::ExclusiveMinimum { limit } => (pointer, format!("more than {limit}"), got),
+        ValidationErrorKind::MinLength { limit } => (pointer, format!("at least {limit} characters"), got),
+        ValidationErrorKind::MaxLength { limit } => (pointer, format!("at most {limit} characters"), got),
         ValidationErrorKind::MinItems { limit } => {
             (pointer, format!("at least {limit} elements"), elements(error))
         }
@@ -131,7 +241,7 @@ fn add_closest(
 
 fn push(faults: &mut Vec<Fault>, pointer: String, expected: String, got: String) {
     let fault = Fault { pointer, expected, got, line: None };
-    if !faults.contains(&fault) {
+    if faults.iter().all(|known| known.pointer != fault.pointer) {
         faults.push(fault);
     }
 }

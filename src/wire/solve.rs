@@ -3,13 +3,13 @@
 use std::sync::Arc;
 
 use schemars::JsonSchema;
-use serde::Deserialize;
+use serde::{Deserialize, Serialize};
 
-use super::ModelSource;
+use super::{ModelSource, Request};
 use super::aim::Surroundings;
 use super::common::{Format, TextOr};
 use super::contact::{ContactBody, Scene};
-use super::extras::{ExternalBody, LatencyBody, LoadBody, loaded};
+use super::extras::{ExternalBody, LatencyBody, LoadBody, MAX_ENTRIES, loaded};
 use super::gate::{At, Gate, quoted};
 use super::limit::LimitBody;
 use super::model::InlineModel;
@@ -33,9 +33,9 @@ const MAX_LIMITS: usize = 200;
 /// Frames of one dynamics request.
 const MAX_FRAMES: usize = 200;
 /// Shortest and longest tick (s).
-const TICK: (f64, f64) = (1e-6, 1.0);
-/// The longest name of a task or limit (bytes).
-const MAX_NAME: usize = 200;
+pub(super) const TICK: (f64, f64) = (1e-6, 1.0);
+/// The longest name of a task or limit (characters).
+pub(super) const MAX_NAME: usize = 200;
 
 /// Asks for torques and sole wrenches (`POST /v1/solve`).
 #[derive(Debug, Clone, Deserialize, JsonSchema)]
@@ -54,14 +54,19 @@ pub(super) struct SolveRequest {
     /// The control tick over which the torques are held (s).
     tick: TickBody,
     /// Soles on the ground, at most 32 (N/m^3, N s/m^3, m, N); none when left out.
+    #[schemars(extend("maxItems" = MAX_CONTACTS))]
     contacts: Option<Vec<ContactBody>>,
     /// Limits of joints and torques, at most 200 (N m, rad, rad/s); none when left out.
+    #[schemars(extend("maxItems" = MAX_LIMITS))]
     limits: Option<Vec<LimitBody>>,
     /// Tasks, at most 200, each in its own unit; none when left out.
+    #[schemars(extend("maxItems" = MAX_TASKS))]
     tasks: Option<Vec<TaskBody>>,
     /// Loads from outside other than the ground, at most 200 (N, N m); none when left out.
+    #[schemars(extend("maxItems" = MAX_ENTRIES))]
     external: Option<Vec<ExternalBody>>,
     /// Masses the robot carries, at most 200 (kg, m, kg m^2); none when left out.
+    #[schemars(extend("maxItems" = MAX_ENTRIES))]
     loads: Option<Vec<LoadBody>>,
     /// Torques that act until the answer takes effect (s, N m); the state is predicted under them
     /// first. No delay when left out.
@@ -82,17 +87,18 @@ pub(super) struct SolveRequest {
 #[schemars(rename = "Tick")]
 struct TickBody {
     /// Length T, 1e-6 to 1 (s).
+    #[schemars(extend("minimum" = TICK.0, "maximum" = TICK.1))]
     length: f64,
-    /// How the wrench over the tick follows from the acceleration (no unit): `backward_euler`
-    /// (default), `trapezoid`, `explicit` or `held` (the contact motion of all soft soles solved exactly).
+    /// How the wrench over the tick follows from the acceleration (no unit): `held` (the contact motion of all soft soles
+    /// solved exactly), `backward_euler`, `trapezoid` or `explicit`; `held` when left out.
     rule: Option<RuleBody>,
 }
 
 /// Tick rules.
-#[derive(Debug, Clone, Copy, Deserialize, JsonSchema)]
+#[derive(Debug, Clone, Copy, Deserialize, Serialize, JsonSchema)]
 #[serde(rename_all = "snake_case")]
 #[schemars(inline)]
-enum RuleBody {
+pub(super) enum RuleBody {
     BackwardEuler,
     Trapezoid,
     Explicit,
@@ -126,25 +132,23 @@ pub(super) struct DynamicsRequest {
     /// Gravitational acceleration [x, y, z], world axes (m/s^2); [0, 0, -9.80665] when left out.
     gravity: Option<[f64; 3]>,
     /// Links whose frames are reported besides the soles, at most 200 (no unit); none when left out.
+    #[schemars(extend("maxItems" = MAX_FRAMES))]
     frames: Option<Vec<String>>,
     /// Masses the robot carries, at most 200 (kg, m, kg m^2); none when left out.
+    #[schemars(extend("maxItems" = MAX_ENTRIES))]
     loads: Option<Vec<LoadBody>>,
 }
 
-impl SolveRequest {
-    /// The model alone.
-    pub(super) fn model(&self, models: &dyn ModelSource) -> Result<Arc<Model>, Refusal> {
-        find(&self.model, models)
-    }
+impl Request for SolveRequest {
+    type Question = Question;
 
-    /// The question.
-    pub(super) fn read(self, models: &dyn ModelSource) -> Result<Question, Refusal> {
-        let mut gate = Gate::default();
+    fn read(self, mut gate: Gate, models: &dyn ModelSource) -> Result<Question, Refusal> {
         let at = At::ROOT;
-        let model = find(&self.model, models)?;
+        let tick = self.tick.read(&mut gate, at.name("tick"));
+        let spread = self.spread.as_ref().map(|spread| spread.read(&mut gate, at.name("spread")));
+        let Some(model) = find(&mut gate, &self.model, models)? else { return Err(gate.refuse()) };
         let model = loaded(&mut gate, at.name("loads"), model, self.loads.as_deref());
         let (state, velocity_axes) = self.state.read(&mut gate, at.name("state"), &model);
-        let tick = self.tick.read(&mut gate, at.name("tick"));
         let scene = Scene { model: &model, state: &state, tick };
         let bodies = self.contacts.as_deref().unwrap_or_default();
         let contacts = contacts(&mut gate, at.name("contacts"), bodies, &scene);
@@ -153,14 +157,12 @@ impl SolveRequest {
             tick,
             soles: bodies.iter().map(ContactBody::sole).collect(),
             contacts: &contacts,
+            complete: !gate.incomplete(at.name("contacts")),
         };
         let (limits, tasks) = self.aims(&mut gate, at, &around);
         let external = ExternalBody::read_all(&mut gate, at.name("external"), self.external.as_deref(), &model);
         let latency = self.latency.as_ref().map(|latency| latency.read(&mut gate, at.name("latency"), &model));
-        let include = Include {
-            spread: self.spread.as_ref().map(|spread| spread.read(&mut gate, at.name("spread"))),
-            ..include(self.include.as_deref().unwrap_or_default())
-        };
+        let include = Include { spread, ..include(self.include.as_deref().unwrap_or_default()) };
         gate.finish()?;
         let contacts = contacts.into_iter().flatten().collect();
         let gravity = Vec3::from(self.gravity.unwrap_or(GRAVITY));
@@ -168,7 +170,9 @@ impl SolveRequest {
             model, state, velocity_axes, gravity, tick, contacts, limits, tasks, external, latency, include,
         })
     }
+}
 
+impl SolveRequest {
     fn aims(
         &self,
         gate: &mut Gate,
@@ -199,17 +203,38 @@ impl SolveRequest {
     }
 }
 
-impl DynamicsRequest {
-    /// The model alone.
-    pub(super) fn model(&self, models: &dyn ModelSource) -> Result<Arc<Model>, Refusal> {
-        find(&self.model, models)
-    }
+/// A solve request of which the form counts, and the model.
+#[derive(Deserialize)]
+#[serde(transparent)]
+pub(super) struct SolveForm(SolveRequest);
 
-    /// The question.
-    pub(super) fn read(self, models: &dyn ModelSource) -> Result<DynamicsQuestion, Refusal> {
-        let mut gate = Gate::default();
+/// The same of a dynamics request.
+#[derive(Deserialize)]
+#[serde(transparent)]
+pub(super) struct DynamicsForm(DynamicsRequest);
+
+impl Request for SolveForm {
+    type Question = Arc<Model>;
+
+    fn read(self, mut gate: Gate, models: &dyn ModelSource) -> Result<Arc<Model>, Refusal> {
+        find(&mut gate, &self.0.model, models)?.ok_or_else(|| gate.refuse())
+    }
+}
+
+impl Request for DynamicsForm {
+    type Question = Arc<Model>;
+
+    fn read(self, mut gate: Gate, models: &dyn ModelSource) -> Result<Arc<Model>, Refusal> {
+        find(&mut gate, &self.0.model, models)?.ok_or_else(|| gate.refuse())
+    }
+}
+
+impl Request for DynamicsRequest {
+    type Question = DynamicsQuestion;
+
+    fn read(self, mut gate: Gate, models: &dyn ModelSource) -> Result<DynamicsQuestion, Refusal> {
         let at = At::ROOT;
-        let model = find(&self.model, models)?;
+        let Some(model) = find(&mut gate, &self.model, models)? else { return Err(gate.refuse()) };
         let model = loaded(&mut gate, at.name("loads"), model, self.loads.as_deref());
         let (state, velocity_axes) = self.state.read(&mut gate, at.name("state"), &model);
         let list = at.name("frames");
@@ -230,40 +255,66 @@ impl DynamicsRequest {
     }
 }
 
+impl From<TickRule> for RuleBody {
+    fn from(rule: TickRule) -> Self {
+        match rule {
+            TickRule::BackwardEuler => RuleBody::BackwardEuler,
+            TickRule::Trapezoid => RuleBody::Trapezoid,
+            TickRule::Explicit => RuleBody::Explicit,
+            TickRule::Held => RuleBody::Held,
+        }
+    }
+}
+
 impl TickBody {
     fn read(&self, gate: &mut Gate, at: At<'_>) -> Tick {
         let length = gate.within(at.name("length"), self.length, TICK.0, TICK.1, "s");
         let rule = match self.rule {
-            None | Some(RuleBody::BackwardEuler) => TickRule::BackwardEuler,
+            None | Some(RuleBody::Held) => TickRule::Held,
+            Some(RuleBody::BackwardEuler) => TickRule::BackwardEuler,
             Some(RuleBody::Trapezoid) => TickRule::Trapezoid,
             Some(RuleBody::Explicit) => TickRule::Explicit,
-            Some(RuleBody::Held) => TickRule::Held,
         };
-        // A tick that was refused still has to serve the checks that follow.
-        let length = if length > 0.0 { length } else { TICK.1 };
-        Tick { length, rule }
+        // A tick that was refused still has to serve the checks that follow: the shortest makes none of them fail.
+        let length = if (TICK.0..=TICK.1).contains(&length) { length } else { TICK.0 };
+        Tick { length, rule, chosen: self.rule.is_some() }
     }
 }
 
-/// The model: registered earlier, or given here.
-pub(super) fn find(model: &TextOr<InlineModel>, models: &dyn ModelSource) -> Result<Arc<Model>, Refusal> {
+/// The model: registered earlier, or given here. None where it cannot be used, which the gate then knows; an unknown
+/// id is a refusal of its own where nothing else was found wrong with the form of the request.
+pub(super) fn find(
+    gate: &mut Gate,
+    model: &TextOr<InlineModel>,
+    models: &dyn ModelSource,
+) -> Result<Option<Arc<Model>>, Refusal> {
     let at = At::ROOT;
     let here = at.name("model");
-    match model {
-        TextOr::Object(inline) => inline.read(here).map(Arc::new),
-        TextOr::Text(id) => models.find(id).ok_or_else(|| Refusal {
-            status: 404,
-            code: "unknown-model",
-            title: "No such model is registered".to_string(),
-            detail: "registered models are kept for a while only: send the model again to /v1/models".to_string(),
-            faults: vec![Fault {
-                pointer: here.pointer(),
-                expected: "the id of a registered model, or the model itself".to_string(),
-                got: quoted(id),
-                line: None,
-            }],
-        }),
+    let id = match model {
+        TextOr::Object(inline) => return Ok(inline.find(gate, here, models)),
+        TextOr::Text(id) => id,
+    };
+    let found = models.find(id);
+    if found.is_some() {
+        return Ok(found);
     }
+    let expected = "the id of a registered model, or the model itself";
+    if gate.partial() {
+        gate.fault(here, expected, quoted(id));
+        return Ok(None);
+    }
+    Err(Refusal {
+        status: 404,
+        code: "unknown-model",
+        title: "No such model is registered".to_string(),
+        detail: "registered models are kept for a while only: send the model again to /v1/models".to_string(),
+        faults: vec![Fault {
+            pointer: here.pointer(),
+            expected: expected.to_string(),
+            got: quoted(id),
+            line: None,
+        }],
+    })
 }
 
 fn contacts(
@@ -290,8 +341,12 @@ fn contacts(
 
 /// Notes a name that is empty, too long or taken.
 fn unique<'a>(gate: &mut Gate, at: At<'_>, names: &mut Vec<&'a str>, name: &'a str) {
-    if name.is_empty() || name.len() > MAX_NAME {
-        gate.fault(at, format!("a name of 1 to {MAX_NAME} bytes"), format!("{} bytes", name.len()));
+    let length = name.chars().count();
+    if length == 0 || length > MAX_NAME {
+        gate.fault(at, format!("a name of 1 to {MAX_NAME} characters"), format!("{length} characters"));
+    }
+    if gate.lacks(at) {
+        return;
     }
     if names.contains(&name) {
         gate.fault(at, "a name that no other task or limit has", quoted(name));

@@ -1,6 +1,6 @@
 //! Spread of the answer under uncertain ground: asked for in a request, told in an answer.
 
-use schemars::JsonSchema;
+use schemars::{JsonSchema, Schema, SchemaGenerator, json_schema};
 use serde::{Deserialize, Serialize};
 
 use super::common::Whole;
@@ -25,13 +25,28 @@ pub(super) struct SpreadBody {
     /// Covariance of the relative errors of stiffness and of damping, two rows (no unit): symmetric and positive
     /// semidefinite, variances at most 1. [[0.04, 0], [0, 0.01]] is 20 % on stiffness and 10 % on damping. Normal and
     /// tangential values move together.
+    #[schemars(schema_with = "covariance_schema")]
     covariance: [[f64; 2]; 2],
     /// True: the same error under every sole. False: every sole has its own, independent of the others (no unit).
     shared: bool,
     /// Seeded samples besides the sigma points, 0 to 2000 (no unit); 0 when left out.
+    #[schemars(extend("maximum" = MOST_SAMPLES))]
     samples: Option<Whole>,
     /// Seed of the samples, 0 to 4294967295 (no unit); 0 when left out.
     seed: Option<Whole>,
+}
+
+/// Variances on the diagonal, anything beside it.
+fn covariance_schema(_: &mut SchemaGenerator) -> Schema {
+    let variance = || json_schema!({ "type": "number", "minimum": 0.0, "maximum": MAX_VARIANCE });
+    let other = || json_schema!({ "type": "number" });
+    let row = |a: Schema, b: Schema| json_schema!({ "type": "array", "prefixItems": [a, b], "minItems": 2, "maxItems": 2 });
+    json_schema!({
+        "type": "array",
+        "prefixItems": [row(variance(), other()), row(other(), variance())],
+        "minItems": 2,
+        "maxItems": 2,
+    })
 }
 
 impl SpreadBody {

@@ -19,7 +19,9 @@ pub(super) const MAX_MAGNITUDE: f64 = 1e15;
 
 /// Reads a whole document.
 pub(super) fn read<T: DeserializeOwned>(body: &[u8]) -> Result<T, serde_json::Error> {
-    let mut json = serde_json::Deserializer::from_slice(body);
+    // Once for the whole text, and no string in it has to be looked at again.
+    let text = std::str::from_utf8(body).map_err(serde_json::Error::custom)?;
+    let mut json = serde_json::Deserializer::from_str(text);
     let value = T::deserialize(Strict(&mut json))?;
     json.end()?;
     Ok(value)

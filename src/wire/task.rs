@@ -5,6 +5,9 @@ use serde::Deserialize;
 
 use super::common::{LinearAngularBody, LinearAngularGainBody, Whole, WrenchBody};
 use super::kinds::{KindRule, KindTable};
+use super::limit::MAX_JOINTS;
+use super::solve::MAX_NAME;
+use super::treatment::{MAX_PRIORITY, MAX_RATIO, MIN_RATIO};
 
 /// Kinds of task.
 #[derive(Debug, Clone, Copy, PartialEq, Deserialize, JsonSchema)]
@@ -114,8 +117,10 @@ pub(super) enum AxisBody {
 #[schemars(rename = "Gains")]
 pub(super) struct GainsBody {
     /// Gain on the position error, 0 or more (1/s^2); zero when left out.
+    #[schemars(extend("minimum" = 0.0))]
     pub(super) position: Option<f64>,
     /// Gain on the velocity error, 0 or more (1/s); zero when left out.
+    #[schemars(extend("minimum" = 0.0))]
     pub(super) velocity: Option<f64>,
 }
 
@@ -152,23 +157,29 @@ pub(super) struct TaskJointBody {
 #[schemars(rename = "Task")]
 pub(super) struct TaskBody {
     /// Name by which the answer reports it, unique among tasks and limits (no unit).
+    #[schemars(extend("minLength" = 1, "maxLength" = MAX_NAME))]
     pub(super) name: String,
     /// What is wanted (no unit); decides which of the members below may be given.
     pub(super) kind: TaskKindBody,
     /// Priority, 1 to 100, 1 first, strictly in order (no unit).
+    #[schemars(extend("minimum" = 1, "maximum" = MAX_PRIORITY))]
     pub(super) priority: Option<Whole>,
     /// True: it holds like physics, though it may be blamed when nothing is feasible (no unit).
     pub(super) must_hold: Option<bool>,
     /// Weight within the priority, more than 0 (no unit); 1 when left out.
+    #[schemars(extend("minimum" = MIN_RATIO, "maximum" = MAX_RATIO))]
     pub(super) weight: Option<f64>,
     /// Residual of the linear (or only) part that costs `weight`, more than 0, in the task's unit
     /// (N, N/s, m/s^2, rad/s^2, N m or N); 1 when left out.
+    #[schemars(extend("minimum" = MIN_RATIO, "maximum" = MAX_RATIO))]
     pub(super) scale: Option<f64>,
     /// The same for the angular part of tasks that have a linear and an angular one (N m, N m/s or
     /// rad/s^2); 1 when left out.
+    #[schemars(extend("minimum" = MIN_RATIO, "maximum" = MAX_RATIO))]
     pub(super) scale_angular: Option<f64>,
     /// Which components count, world axes (no unit): x, y, z of the linear part; rx, ry, rz, about
     /// x, y, z, of the angular part. All that the kind has when left out.
+    #[schemars(extend("minItems" = 1))]
     pub(super) axes: Option<Vec<AxisBody>>,
     /// Link whose frame moves, as named in the URDF (no unit).
     pub(super) frame: Option<String>,
@@ -178,6 +189,7 @@ pub(super) struct TaskBody {
     pub(super) sole: Option<String>,
     /// Joints (rad, rad/s, rad/s^2, N m; m, m/s, m/s^2, N for sliding joints). For `effort` all
     /// actuated joints at zero torque when left out.
+    #[schemars(extend("minItems" = 1, "maxItems" = MAX_JOINTS))]
     pub(super) joints: Option<Vec<TaskJointBody>>,
     /// Linear acceleration [x, y, z], world axes: feedforward or value (m/s^2); zero when left out.
     pub(super) acceleration: Option<[f64; 3]>,
@@ -212,11 +224,13 @@ pub(super) struct TaskBody {
     pub(super) momentum_gain: Option<LinearAngularGainBody>,
     /// Gain on the centre-of-mass error times mass, linear part, 0 or more (1/s^2 at first rate,
     /// 1/s^3 at second); zero when left out.
+    #[schemars(extend("minimum" = 0.0))]
     pub(super) position_gain: Option<f64>,
     /// Wanted wrench of the ground on the sole, about the sole origin, world axes (N, N m).
     pub(super) wrench: Option<WrenchBody>,
     /// Rate at which the wrench is approached, more than 0 and at most one per tick (1/s): wanted is
     /// present + tick * rate * (wrench - present). The wrench itself when left out.
+    #[schemars(extend("exclusiveMinimum" = 0.0))]
     pub(super) approach: Option<f64>,
 }
 

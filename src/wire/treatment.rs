@@ -10,7 +10,9 @@ use crate::problem::question::Treatment;
 
 /// The largest priority number.
 pub(super) const MAX_PRIORITY: u32 = 100;
-/// Weights and scales may differ from 1 by this factor at most.
+/// The smallest weight or scale.
+pub(super) const MIN_RATIO: f64 = 1e-9;
+/// The largest weight or scale.
 pub(super) const MAX_RATIO: f64 = 1e9;
 
 /// Kinds of treatment.
@@ -43,13 +45,17 @@ pub(super) struct TreatmentBody {
     /// `hard`, `soft` or `decay` (no unit). `decay` is for friction and normal force only.
     kind: TreatmentKind,
     /// For `soft`: priority at which the excess costs, 1 to 100, 1 first (no unit).
+    #[schemars(extend("minimum" = 1, "maximum" = MAX_PRIORITY))]
     priority: Option<Whole>,
     /// For `soft`: weight, more than 0 (no unit); 1 when left out.
+    #[schemars(extend("minimum" = MIN_RATIO, "maximum" = MAX_RATIO))]
     weight: Option<f64>,
     /// For `soft`: the excess that costs `weight`, more than 0, in the unit of the limit (N, N m,
     /// N/s, rad or rad/s; m or m/s for sliding joints); 1 when left out.
+    #[schemars(extend("minimum" = MIN_RATIO, "maximum" = MAX_RATIO))]
     scale: Option<f64>,
     /// For `decay`: rate (1/s), 0 or more; rate times tick length must not exceed 1.
+    #[schemars(extend("minimum" = 0.0))]
     rate: Option<f64>,
 }
 
@@ -103,5 +109,5 @@ pub(super) fn priority(gate: &mut Gate, at: At<'_>, value: Whole) -> u32 {
 
 /// A weight or scale: positive, 1 when left out.
 pub(super) fn ratio(gate: &mut Gate, at: At<'_>, value: Option<f64>) -> f64 {
-    gate.within(at, value.unwrap_or(1.0), 1.0 / MAX_RATIO, MAX_RATIO, "")
+    gate.within(at, value.unwrap_or(1.0), MIN_RATIO, MAX_RATIO, "")
 }

@@ -6,6 +6,11 @@ use std::time::Instant;
 
 /// Median time (s) of each candidate over `rounds` rounds, after a tenth as many unmeasured ones.
 pub fn interleaved(rounds: usize, candidates: &mut [&mut dyn FnMut() -> f64]) -> Vec<f64> {
+    interleaved_at(0.5, rounds, candidates)
+}
+
+/// The same, another quantile than the median: a low one leaves out what other programs on the machine do.
+pub fn interleaved_at(quantile: f64, rounds: usize, candidates: &mut [&mut dyn FnMut() -> f64]) -> Vec<f64> {
     let mut times = vec![Vec::with_capacity(rounds); candidates.len()];
     for round in 0..rounds + rounds / 10 {
         for (k, candidate) in candidates.iter_mut().enumerate() {
@@ -16,12 +21,12 @@ pub fn interleaved(rounds: usize, candidates: &mut [&mut dyn FnMut() -> f64]) ->
             }
         }
     }
-    times.iter_mut().map(|t| median(t)).collect()
+    times.iter_mut().map(|t| at(quantile, t)).collect()
 }
 
-fn median(times: &mut [f64]) -> f64 {
+fn at(quantile: f64, times: &mut [f64]) -> f64 {
     times.sort_by(f64::total_cmp);
-    times[times.len() / 2]
+    times[((times.len() - 1) as f64 * quantile).round() as usize]
 }
 
 /// One line: a median, and its ratio to another.

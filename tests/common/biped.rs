@@ -108,7 +108,7 @@ pub fn standing(stiffness: f64) -> Question {
         model: model.clone(),
         velocity_axes: VelocityAxes::default(),
         gravity: Vec3::new(0.0, 0.0, -GRAVITY),
-        tick: Tick { length: 0.005, rule: TickRule::BackwardEuler },
+        tick: Tick { length: 0.005, rule: TickRule::BackwardEuler, chosen: true },
         contacts,
         limits: vec![Limit { name: "torque".into(), kind: LimitKind::Torque(torque), treatment: Treatment::Hard }],
         tasks,

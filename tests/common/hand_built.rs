@@ -7,32 +7,14 @@
 use underfoot::model::{BaseKind, Body, Joint, JointKind, Model, State};
 use underfoot::spatial::{Inertia, Mat3, Pose, Twist, Vec3, exp_so3};
 
-/// Splitmix64: small, seeded, good enough for test data.
-pub struct Rng(pub u64);
+#[path = "rng.rs"]
+mod rng;
+
+pub use rng::Rng;
 
 impl Rng {
-    pub fn next_u64(&mut self) -> u64 {
-        self.0 = self.0.wrapping_add(0x9e37_79b9_7f4a_7c15);
-        let mut z = self.0;
-        z = (z ^ (z >> 30)).wrapping_mul(0xbf58_476d_1ce4_e5b9);
-        z = (z ^ (z >> 27)).wrapping_mul(0x94d0_49bb_1331_11eb);
-        z ^ (z >> 31)
-    }
-
-    pub fn uniform(&mut self, low: f64, high: f64) -> f64 {
-        low + (high - low) * (self.next_u64() >> 11) as f64 / (1u64 << 53) as f64
-    }
-
-    pub fn below(&mut self, n: usize) -> usize {
-        (self.next_u64() % n as u64) as usize
-    }
-
     pub fn vector(&mut self, size: f64) -> Vec3 {
-        Vec3::new(self.uniform(-size, size), self.uniform(-size, size), self.uniform(-size, size))
-    }
-
-    pub fn list(&mut self, n: usize, size: f64) -> Vec<f64> {
-        (0..n).map(|_| self.uniform(-size, size)).collect()
+        Vec3::from(self.triple(size))
     }
 
     pub fn pose(&mut self) -> Pose {
@@ -130,10 +112,7 @@ pub fn random_model(seed: u64, joints: usize, kind: BaseKind) -> Model {
         joint.viscous_friction = rng.uniform(0.0, 2.0);
         joint.coulomb_friction = rng.uniform(0.0, 1.0);
     }
-    for i in (1..joints).rev() {
-        let other = rng.below(i + 1);
-        model.joints.swap(i, other);
-    }
+    rng.shuffle(&mut model.joints);
     for i in 0..joints {
         let body = model.joints[i].body;
         model.bodies[body].joint = Some(i);

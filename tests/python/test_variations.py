@@ -12,17 +12,8 @@ from cases import ROOT
 
 REQUESTS = {"example": ROOT / "schemas/example-solve.json", "demo": ROOT / "src/cli/demo/request.json"}
 
-# Limits that bind at the first priority, where refinement does not settle. Kept, not wanted.
-WEAK = {
-    "demo normal force capped",
-    "demo normal force capped, no friction",
-    "demo push of 300 N",
-    "example centre of mass far",
-    "example normal force capped",
-    "example normal force capped, no friction",
-    "example one foot",
-    "example torque 10 N m",
-}
+# Changes whose answer is not settled. None is known; a new one has to be written down here by name, with the reason.
+WEAK: set[str] = set()
 
 
 def contacts(d):
@@ -141,8 +132,8 @@ CHANGES = {
     "push of 300 N": push(300),
     "conflicting must-hold": conflict,
     "trapezoid": rule("trapezoid"),
-    "held": rule("held"),
-    "held, far": both(rule("held"), far),
+    "backward Euler": rule("backward_euler"),
+    "backward Euler, far": both(rule("backward_euler"), far),
     "falling": falling,
     "leaning": leaning,
     "in the air": in_the_air,

@@ -256,6 +256,10 @@ class Answer:
 
     status: str
     """`solved`, `infeasible`, `not_reachable`, `ill_posed`, `inaccurate` or `cancelled`."""
+    tick_rule: str
+    """By which the wrench over the tick was predicted: `held`, `backward_euler`, `trapezoid` or `explicit`."""
+    tick_rule_by_default: bool
+    """True where the request named no rule."""
     joints: tuple[str, ...]
     """Joint names, in the order of the arrays beside them; empty where there is no answer."""
     torques: Array | None
@@ -291,6 +295,8 @@ class Answer:
         base = d["base_acceleration"]
         return Answer(
             status=d["status"],
+            tick_rule=d["tick"]["rule"],
+            tick_rule_by_default=d["tick"]["rule_by_default"],
             joints=tuple(j["name"] for j in joints or ()),
             torques=None if joints is None else vector([j["torque"] for j in joints]),
             joint_accelerations=None if joints is None else vector([j["acceleration"] for j in joints]),

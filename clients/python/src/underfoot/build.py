@@ -115,7 +115,7 @@ def state(
 
 
 def tick(length: float, rule: str | None = None) -> Part:
-    """One control tick of `length` s. `rule`: `backward_euler` (the default), `trapezoid` or `explicit`."""
+    """One control tick of `length` s. `rule`: `held` (the default), `backward_euler`, `trapezoid` or `explicit`."""
     return given(length=length, rule=rule)
 
 
