@@ -146,7 +146,7 @@ fn damage(rng: &mut Rng, request: &mut Value) {
                     members.extend(more);
                 }
             }
-            (6 | 7 | 8, Value::Number(number)) => {
+            (6..=8, Value::Number(number)) => {
                 let factors = [-1.0, 0.0, 1e-12, 0.5, 2.0, 1e3, 1e6, 1e12, 1e-300];
                 *value = json!(number.as_f64().unwrap_or(1.0) * rng.pick(&factors));
             }

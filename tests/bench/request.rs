@@ -54,7 +54,7 @@ fn typed(bytes: usize) -> Typed {
     let entry = |i: usize| Entry {
         name: format!("joint {i}"),
         values: [0.1 * i as f64, 1.0 / (1 + i) as f64, -2.5],
-        weight: (i % 2 == 0).then_some(3.0),
+        weight: i.is_multiple_of(2).then_some(3.0),
     };
     let mut document = Typed { entries: Vec::new() };
     while serde_json::to_vec(&document).map_or(0, |text| text.len()) < bytes {

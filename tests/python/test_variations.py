@@ -12,8 +12,9 @@ from cases import ROOT
 
 REQUESTS = {"example": ROOT / "schemas/example-solve.json", "demo": ROOT / "src/cli/demo/request.json"}
 
-# Changes whose answer is not settled. None is known; a new one has to be written down here by name, with the reason.
-WEAK: set[str] = set()
+# Changes whose answer is not settled; a new one has to be written down here by name, with the reason. Under the held rule, which couples the
+# soles, the cap binds at the first priority and refinement does not settle; under backward Euler it does.
+WEAK = {"example normal force capped"}
 
 
 def contacts(d):
