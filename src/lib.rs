@@ -13,6 +13,8 @@ pub mod solve;
 pub mod certify;
 pub mod explain;
 pub mod reference;
+pub mod compare;
+pub mod cases;
 pub mod wire;
 pub mod http;
 pub mod cli;

@@ -7,7 +7,7 @@ use std::sync::{Arc, Condvar, Mutex};
 use std::time::{Duration, Instant};
 
 use http_support::{Line, PATIENCE, get, post, posting, settings, start};
-use underfoot::http::{Document, Errand, Settings, Work};
+use underfoot::http::{Document, Errand, LineWork, Settings, Work};
 use underfoot::wire::Refusal;
 
 /// What the injected work does with a body.
@@ -66,6 +66,10 @@ impl Work for Injected {
         }
         bench.now.fetch_sub(1, Ordering::SeqCst);
         Ok(Document { body: body.to_vec(), model: None, timings: vec![("solve", Duration::from_millis(1))] })
+    }
+
+    fn open(&self, _: &[u8]) -> Result<Arc<dyn LineWork>, Refusal> {
+        Err(Refusal::new(404, "unknown-path", "No batches here", "this work answers single requests"))
     }
 
     fn model(&self, _: &str) -> Option<Vec<u8>> {

@@ -2,8 +2,11 @@
 //!
 //! Exit codes, the same for every command: 0 good, 1 the answer is bad news, 2 unusable input.
 
+mod batch;
+mod compare;
 mod demo;
 mod dynamics;
+mod export;
 mod files;
 mod log;
 mod report;
@@ -35,6 +38,12 @@ enum Command {
     Solve(solve::Solve),
     /// Rigid-body terms of a state from a file; prints what POST /v1/dynamics answers.
     Dynamics(dynamics::Dynamics),
+    /// Answer many states, one JSON line each; prints what POST /v1/batch answers.
+    Batch(batch::Batch),
+    /// Compare your own mass matrix, bias, Jacobians and momentum with ours; prints what POST /v1/compare answers.
+    Compare(compare::Compare),
+    /// The assembled problem as Matrix Market files; prints what POST /v1/export answers, or writes the files.
+    Export(export::Export),
     /// List the JSON Schemas, or print one.
     Schemas(schemas::Schemas),
     /// Show the whole path on a built-in scenario, through a real service.
@@ -68,6 +77,9 @@ pub fn main() -> ExitCode {
         Command::Serve(command) => command.run(),
         Command::Solve(command) => command.run(),
         Command::Dynamics(command) => command.run(),
+        Command::Batch(command) => command.run(),
+        Command::Export(command) => command.run(),
+        Command::Compare(command) => command.run(),
         Command::Schemas(command) => command.run(),
         Command::Demo(command) => command.run(),
     }

@@ -19,7 +19,7 @@ impl FromRequest<Arc<Shared>> for JsonBytes {
     type Rejection = Problem;
 
     async fn from_request(request: Request, shared: &Arc<Shared>) -> Result<Self, Problem> {
-        check_type(request.headers())?;
+        check_type(request.headers(), "application/json")?;
         let limit = shared.settings.body_limit;
         check_length(request.headers(), limit)?;
         let reading = read(request.into_body(), limit);
@@ -36,18 +36,21 @@ impl FromRequest<Arc<Shared>> for JsonBytes {
 }
 
 /// A page in a browser can send a form or plain text to any address without asking; JSON it cannot.
-fn check_type(headers: &HeaderMap) -> Result<(), Problem> {
+///
+/// # Errors
+/// 415 unless the one Content-Type is `wanted` and nothing is encoded.
+pub fn check_type(headers: &HeaderMap, wanted: &str) -> Result<(), Problem> {
     let mut given = headers.get_all(header::CONTENT_TYPE).iter();
-    let json = match (given.next(), given.next()) {
-        (Some(value), None) => value.to_str().is_ok_and(is_json),
+    let good = match (given.next(), given.next()) {
+        (Some(value), None) => value.to_str().is_ok_and(|value| is(value, wanted)),
         _ => false,
     };
-    if !json {
+    if !good {
         return Err(Problem::new(
             StatusCode::UNSUPPORTED_MEDIA_TYPE,
             "not-json",
-            "Content-Type is not application/json",
-            "send one Content-Type header with application/json",
+            &format!("Content-Type is not {wanted}"),
+            format!("send one Content-Type header with {wanted}"),
         ));
     }
     let encoded = headers.get_all(header::CONTENT_ENCODING).iter().any(|value| value != "identity");
@@ -62,9 +65,9 @@ fn check_type(headers: &HeaderMap) -> Result<(), Problem> {
     Ok(())
 }
 
-fn is_json(value: &str) -> bool {
+fn is(value: &str, wanted: &str) -> bool {
     let essence = value.split(';').next().unwrap_or_default();
-    essence.trim_matches([' ', '\t']).eq_ignore_ascii_case("application/json")
+    essence.trim_matches([' ', '\t']).eq_ignore_ascii_case(wanted)
 }
 
 /// Refuses by the announced length, before a byte of the body is read.
@@ -114,17 +117,17 @@ fn broken() -> Problem {
 
 #[cfg(test)]
 mod tests {
-    use super::is_json;
+    use super::is;
 
     #[test]
     fn json_types_are_told_from_the_rest() {
         for good in ["application/json", "Application/JSON", "application/json; charset=utf-8", "application/json ;x=y"] {
-            assert!(is_json(good), "{good}");
+            assert!(is(good, "application/json"), "{good}");
         }
         let form = "application/x-www-form-urlencoded";
         let trick = "text/plain; application/json";
         for bad in ["", "text/plain", "application/jsonp", "application/json+x", trick, ";application/json", form] {
-            assert!(!is_json(bad), "{bad}");
+            assert!(!is(bad, "application/json"), "{bad}");
         }
     }
 }

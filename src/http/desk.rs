@@ -74,6 +74,38 @@ impl Desk {
         }
     }
 
+    /// Runs the job of one line of a batch: it waits for a permit as long as it must, in one queue with all other
+    /// requests, and takes no seat, for a batch has few lines under way. The time limit counts from the permit on:
+    /// past it the flag is raised, and past it once more the line is given up.
+    ///
+    /// # Errors
+    /// 504 where the job does not heed the flag, 500 when it panics.
+    pub async fn run_line<T, J>(&self, job: J) -> Result<T, Problem>
+    where
+        T: Send + 'static,
+        J: FnOnce(&Arc<AtomicBool>) -> T + Send + 'static,
+    {
+        let flag = Arc::new(AtomicBool::new(false));
+        let _cancel = CancelOnDrop(Arc::clone(&flag));
+        let permit = Arc::clone(&self.permits).acquire_owned().await.map_err(|_| internal())?;
+        let raised = Arc::clone(&flag);
+        let mut running = tokio::task::spawn_blocking(move || {
+            let _held = permit;
+            job(&flag)
+        });
+        let mut outcome = tokio::time::timeout(self.time_limit, &mut running).await;
+        if outcome.is_err() {
+            // A job that heeds the flag says itself that it was called off, and whose line it was.
+            raised.store(true, Ordering::Relaxed);
+            outcome = tokio::time::timeout(self.time_limit, &mut running).await;
+        }
+        match outcome {
+            Ok(Ok(result)) => Ok(result),
+            Ok(Err(failure)) => Err(after_failure(failure)),
+            Err(_) => Err(self.too_late()),
+        }
+    }
+
     fn too_late(&self) -> Problem {
         Problem::new(
             StatusCode::GATEWAY_TIMEOUT,

@@ -4,8 +4,10 @@ use std::sync::Arc;
 use std::sync::atomic::AtomicBool;
 use std::time::{Duration, Instant};
 
+use super::lines::LineWork;
 use super::models::Models;
 use super::settings::MODELS_KEPT;
+use crate::compare;
 use crate::explain::ExplainError;
 use crate::reference::answer::Status;
 use crate::reference::{self, Trouble};
@@ -21,6 +23,10 @@ pub enum Errand {
     Dynamics,
     /// Torques and wrenches.
     Solve,
+    /// The assembled problem as files.
+    Export,
+    /// The user's terms beside ours.
+    Compare,
 }
 
 /// A document, and what the transport needs to know of it.
@@ -42,6 +48,12 @@ pub trait Work: Send + Sync + 'static {
     /// A refusal names what is wrong with the request.
     fn run(&self, errand: Errand, body: &[u8], cancel: &Arc<AtomicBool>) -> Result<Document, Refusal>;
 
+    /// Opens a batch by its first line.
+    ///
+    /// # Errors
+    /// A refusal names what is wrong with the line.
+    fn open(&self, head: &[u8]) -> Result<Arc<dyn LineWork>, Refusal>;
+
     /// The document of a registered model.
     fn model(&self, id: &str) -> Option<Vec<u8>>;
 }
@@ -62,9 +74,15 @@ impl Work for Catalogue {
     fn run(&self, errand: Errand, body: &[u8], cancel: &Arc<AtomicBool>) -> Result<Document, Refusal> {
         match errand {
             Errand::Register => self.register(body),
-            Errand::Dynamics => self.dynamics(body),
-            Errand::Solve => self.solve(body, cancel),
+            Errand::Dynamics => dynamics(body, &self.models),
+            Errand::Solve => solve(body, &self.models, cancel),
+            Errand::Compare => compare(body, &self.models),
+            Errand::Export => export(body, &self.models, cancel),
         }
+    }
+
+    fn open(&self, head: &[u8]) -> Result<Arc<dyn LineWork>, Refusal> {
+        Ok(Arc::new(wire::Batch::open(head, &self.models)?))
     }
 
     fn model(&self, id: &str) -> Option<Vec<u8>> {
@@ -82,31 +100,61 @@ impl Catalogue {
         clock.lap("write");
         Ok(Document { body, model: Some(model.id.clone()), timings: clock.laps })
     }
+}
 
-    fn dynamics(&self, body: &[u8]) -> Result<Document, Refusal> {
-        let mut clock = Clock::start();
-        let question = wire::read_dynamics(body, &self.models)?;
-        clock.lap("read");
-        let report = reference::dynamics(&question);
-        clock.lap("dynamics");
-        let body = wire::write_dynamics(&question, &report, &wire::fingerprint(body));
-        clock.lap("write");
-        Ok(Document { body, model: None, timings: clock.laps })
-    }
+/// The document of a dynamics request.
+///
+/// # Errors
+/// A refusal names what is wrong with the request.
+pub(super) fn dynamics(body: &[u8], models: &dyn ModelSource) -> Result<Document, Refusal> {
+    let mut clock = Clock::start();
+    let question = wire::read_dynamics(body, models)?;
+    clock.lap("read");
+    let report = reference::dynamics(&question);
+    clock.lap("dynamics");
+    let body = wire::write_dynamics(&question, &report, &wire::fingerprint(body));
+    clock.lap("write");
+    Ok(Document { body, model: None, timings: clock.laps })
+}
 
-    fn solve(&self, body: &[u8], cancel: &Arc<AtomicBool>) -> Result<Document, Refusal> {
-        let mut clock = Clock::start();
-        let question = wire::read_solve(body, &self.models)?;
-        clock.lap("read");
-        let answer = reference::solve(&question, cancel).map_err(|trouble| refusal(&trouble))?;
-        if answer.status == Status::Cancelled {
-            return Err(Refusal::new(504, "time-limit", "Time limit reached", "the work was called off"));
-        }
-        clock.lap("solve");
-        let body = wire::write_answer(&question, &answer, &wire::fingerprint(body));
-        clock.lap("write");
-        Ok(Document { body, model: None, timings: clock.laps })
+/// The document of a solve request; stops soon after `cancel` is raised.
+///
+/// # Errors
+/// A refusal names what is wrong with the request.
+pub(super) fn solve(body: &[u8], models: &dyn ModelSource, cancel: &Arc<AtomicBool>) -> Result<Document, Refusal> {
+    let mut clock = Clock::start();
+    let question = wire::read_solve(body, models)?;
+    clock.lap("read");
+    let answer = reference::solve(&question, cancel).map_err(|trouble| refusal(&trouble))?;
+    if answer.status == Status::Cancelled {
+        return Err(Refusal::new(504, "time-limit", "Time limit reached", "the work was called off"));
     }
+    clock.lap("solve");
+    let body = wire::write_answer(&question, &answer, &wire::fingerprint(body));
+    clock.lap("write");
+    Ok(Document { body, model: None, timings: clock.laps })
+}
+
+fn export(body: &[u8], models: &dyn ModelSource, cancel: &Arc<AtomicBool>) -> Result<Document, Refusal> {
+    let mut clock = Clock::start();
+    let question = wire::read_solve(body, models)?;
+    clock.lap("read");
+    let program = reference::export(&question, cancel).map_err(|trouble| refusal(&trouble))?;
+    clock.lap("assemble");
+    let body = wire::write_export(&question, &program, &wire::fingerprint(body));
+    clock.lap("write");
+    Ok(Document { body, model: None, timings: clock.laps })
+}
+
+fn compare(body: &[u8], models: &dyn ModelSource) -> Result<Document, Refusal> {
+    let mut clock = Clock::start();
+    let asked = wire::read_compare(body, models)?;
+    clock.lap("read");
+    let found = compare::compare(&asked.question, &asked.given, asked.tolerance);
+    clock.lap("compare");
+    let body = wire::write_compare(&asked, &found, &wire::fingerprint(body));
+    clock.lap("write");
+    Ok(Document { body, model: None, timings: clock.laps })
 }
 
 /// A question that passed the gate and yet leads nowhere: the member at fault is named where there is one.

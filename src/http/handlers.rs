@@ -39,6 +39,16 @@ pub async fn solve(State(shared): State<Arc<Shared>>, JsonBytes(body): JsonBytes
     run(shared, Errand::Solve, body).await
 }
 
+/// `POST /v1/compare`.
+pub async fn compare(State(shared): State<Arc<Shared>>, JsonBytes(body): JsonBytes) -> Result<Response, Problem> {
+    run(shared, Errand::Compare, body).await
+}
+
+/// `POST /v1/export`.
+pub async fn export(State(shared): State<Arc<Shared>>, JsonBytes(body): JsonBytes) -> Result<Response, Problem> {
+    run(shared, Errand::Export, body).await
+}
+
 /// `GET /v1/models/{id}`.
 pub async fn show_model(State(shared): State<Arc<Shared>>, Path(id): Path<String>) -> Result<Response, Problem> {
     match shared.work.model(&id) {

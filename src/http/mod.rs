@@ -5,11 +5,14 @@
 //! document's bytes in [`documents`], which the command line calls as well.
 
 pub mod background;
+pub mod batch;
 pub mod body;
 pub mod desk;
 pub mod documents;
+pub mod feed;
 pub mod guard;
 pub mod handlers;
+pub mod lines;
 pub mod listen;
 pub mod models;
 pub mod problem;
@@ -19,5 +22,6 @@ pub mod stream;
 
 pub use background::Running;
 pub use documents::{Catalogue, Document, Errand, Work};
+pub use lines::{LineDone, LineWork};
 pub use listen::{Bound, bind, runtime};
 pub use settings::Settings;

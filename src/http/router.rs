@@ -12,7 +12,7 @@ use tracing::Level;
 use super::desk::Desk;
 use super::documents::Work;
 use super::settings::Settings;
-use super::{guard, handlers, problem};
+use super::{batch, guard, handlers, problem};
 
 /// What all handlers share.
 pub struct Shared {
@@ -32,6 +32,9 @@ pub fn router(settings: Settings, work: Arc<dyn Work>) -> Router {
         .route("/v1/models/{id}", get(handlers::show_model))
         .route("/v1/dynamics", post(handlers::dynamics))
         .route("/v1/solve", post(handlers::solve))
+        .route("/v1/compare", post(handlers::compare))
+        .route("/v1/export", post(handlers::export))
+        .route("/v1/batch", post(batch::batch))
         .route("/health", get(handlers::health))
         .route("/schemas", get(handlers::schemas))
         .route("/schemas/{name}", get(handlers::schema))

@@ -15,6 +15,10 @@ pub const DEFAULT_TIME_LIMIT: Duration = Duration::from_secs(10);
 pub const BODY_LIMIT: usize = 4 << 20;
 /// Time for a client to deliver a request body.
 pub const BODY_TIME: Duration = Duration::from_secs(10);
+/// Longest line of a batch after the first (bytes); the first may be as long as a body.
+pub const LINE_LIMIT: usize = 1 << 20;
+/// Time without a whole line of a batch, nor an answer to one, after which the batch ends.
+pub const LINE_IDLE: Duration = Duration::from_secs(60);
 /// Time for a client to deliver a request head; an idle connection is closed after it too.
 pub const HEADER_TIME: Duration = Duration::from_secs(30);
 /// Time a client may leave a response unread before the connection is dropped.
@@ -43,6 +47,10 @@ pub struct Settings {
     pub body_limit: usize,
     /// Time for a client to deliver a request body.
     pub body_time: Duration,
+    /// Longest line of a batch after the first (bytes).
+    pub line_limit: usize,
+    /// Time without a whole line of a batch, nor an answer to one, after which the batch ends.
+    pub line_idle: Duration,
     /// Time for a client to deliver a request head.
     pub header_time: Duration,
     /// Time a client may leave a response unread.
@@ -62,6 +70,8 @@ impl Default for Settings {
             time_limit: DEFAULT_TIME_LIMIT,
             body_limit: BODY_LIMIT,
             body_time: BODY_TIME,
+            line_limit: LINE_LIMIT,
+            line_idle: LINE_IDLE,
             header_time: HEADER_TIME,
             stall_time: STALL_TIME,
             grace: GRACE,

@@ -9,6 +9,7 @@ mod extras;
 mod ground;
 mod latency;
 mod limits;
+pub mod program;
 mod report;
 mod warnings;
 
@@ -92,6 +93,15 @@ fn assembled(question: &Question, cancel: &Arc<AtomicBool>) -> Result<(Question,
     let violations = limits::vertex_violations(&question, &scene, cancel)?;
     let assembly = assemble(&question, &scene, &violations);
     Ok((question, scene, assembly))
+}
+
+/// The assembled problem of `question` over the unknowns that general-purpose solvers take; nothing is solved.
+///
+/// # Errors
+/// As [`solve`]; [`Trouble::Solver`] does not occur.
+pub fn export(question: &Question, cancel: &Arc<AtomicBool>) -> Result<program::Program, Trouble> {
+    let (_, _, assembly) = assembled(question, cancel)?;
+    Ok(program::program(&assembly.hierarchy))
 }
 
 /// What given torques (joint order, N m or N) lead to over `question`'s tick, by its rule. A latency in the question is not

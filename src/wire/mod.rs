@@ -3,8 +3,10 @@
 
 mod aim;
 mod answer;
+mod batch;
 mod canonical;
 mod common;
+mod compare;
 mod contact;
 mod dynamics;
 mod explained;
@@ -16,6 +18,7 @@ mod gate;
 mod joints;
 mod kinds;
 mod limit;
+mod market;
 mod model;
 mod number;
 mod openapi;
@@ -39,11 +42,15 @@ mod withheld;
 
 use std::sync::Arc;
 
+use crate::compare::Comparison;
 use crate::model::Model;
 use crate::problem::question::{DynamicsQuestion, Question};
 use crate::reference::answer::{Answer, DynamicsReport};
+use crate::reference::program::Program;
 
+pub use batch::{Batch, Entry, Operation, batch_problem, batch_summary, line_too_long, merge_patch};
 pub use canonical::{canonical, fingerprint};
+pub use compare::CompareQuestion;
 pub use openapi::openapi;
 pub use refusal::{Fault, Refusal};
 pub use schema::{schema, schema_names};
@@ -108,6 +115,19 @@ trait Request: serde::de::DeserializeOwned {
     fn read(self, gate: Gate, models: &dyn ModelSource) -> Result<Self::Question, Refusal>;
 }
 
+/// Reads the body of `POST /v1/compare`.
+///
+/// # Errors
+/// [`Refusal`] with every fault that was found; 404 where the model's id is not known.
+pub fn read_compare(body: &[u8], models: &dyn ModelSource) -> Result<CompareQuestion, Refusal> {
+    read::<compare::CompareRequest>(body, Document::Compare, models)
+}
+
+/// The answer to a comparison.
+pub fn write_compare(asked: &CompareQuestion, found: &Comparison, fingerprint: &str) -> Vec<u8> {
+    compare::write(asked, found, fingerprint)
+}
+
 /// Typed straight from the bytes; only a body that fails is gone through a second time, for the
 /// sake of every fault's pointer.
 fn read<T: Request>(body: &[u8], document: Document, models: &dyn ModelSource) -> Result<T::Question, Refusal> {
@@ -133,6 +153,11 @@ pub fn write_model(model: &Model) -> Vec<u8> {
 /// The answer to a solve request.
 pub fn write_answer(question: &Question, answer: &Answer, fingerprint: &str) -> Vec<u8> {
     answer::write(question, answer, fingerprint)
+}
+
+/// The answer to an export request, which is a solve request.
+pub fn write_export(question: &Question, program: &Program, fingerprint: &str) -> Vec<u8> {
+    market::write(question, program, fingerprint)
 }
 
 /// The answer to a dynamics request.

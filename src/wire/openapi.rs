@@ -43,6 +43,14 @@ fn paths() -> Value {
             "The answer; `infeasible`, `not_reachable`, `ill_posed`, `inaccurate` and `cancelled` are \
              answers too, see `status`. Timings travel in the Server-Timing header."
         ) },
+        "/v1/compare": { "post": post(
+            "compare", "Your rigid-body terms beside ours, and the convention that explains the difference", "CompareRequest",
+            "CompareAnswer", "The comparison; see `verdict`."
+        ) },
+        "/v1/export": { "post": post(
+            "export", "The assembled problem as Matrix Market files", "SolveRequest", "ExportAnswer", "The files."
+        ) },
+        "/v1/batch": { "post": batch() },
         "/health": { "get": get(
             "health", "Says that the service runs", None, "application/json", json!({ "type": "object" }), &[]
         ) },
@@ -78,6 +86,23 @@ fn post(id: &str, summary: &str, request: &str, answer: &str, good: &str) -> Val
         },
         "responses": responses(good, "application/json", reference(answer), statuses),
     })
+}
+
+/// Lines of JSON both ways.
+fn batch() -> Value {
+    let mut operation = post(
+        "batch", "Many states, one line each", "BatchRequest", "BatchAnswer",
+        "One line for each line after the first, in order, while more may be sent, then a summary. A line that cannot \
+         be used is answered with a problem on its own line; only a first line that cannot be used refuses the whole."
+    );
+    let lines = |schema: &str| json!({ "application/x-ndjson": { "schema": reference(schema) } });
+    operation["requestBody"]["content"] = lines("BatchRequest");
+    operation["requestBody"]["description"] = json!(
+        "Lines of JSON: a BatchRequest, then a BatchLine for every question. Each line has a limit, the whole has none; the \
+         batch ends where no whole line comes for a while."
+    );
+    operation["responses"]["200"]["content"] = lines("BatchAnswer");
+    operation
 }
 
 fn get(
@@ -132,7 +157,7 @@ fn meaning(status: u16) -> &'static str {
         405 => "The path exists, but not with this method.",
         408 => "The body came too slowly.",
         413 => "The body is too large.",
-        415 => "The body is not declared as application/json.",
+        415 => "The body is not declared as application/json, or for a batch as application/x-ndjson.",
         421 => "The Host header names another host.",
         422 => "Well-formed, but some members do not hold what they must; each is pointed at.",
         503 => "Too much work is waiting; try again later.",

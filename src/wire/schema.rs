@@ -5,7 +5,7 @@ use serde_json::{Map, Value, json};
 
 use super::kinds::KindTable;
 use super::strict::MAX_MAGNITUDE;
-use super::{answer, contact, dynamics, limit, model, problem, robot, solve, task, treatment};
+use super::{answer, batch, compare, contact, dynamics, limit, market, model, problem, robot, solve, task, treatment};
 
 /// Objects whose members depend on a `kind`.
 const TABLES: [&KindTable; 5] = [
@@ -19,6 +19,8 @@ const TABLES: [&KindTable; 5] = [
 /// Names of the documents.
 const NAMES: &[&str] = &[
     "model-request", "model", "dynamics-request", "dynamics-answer", "solve-request", "solve-answer", "problem",
+    "batch-request", "batch-line", "batch-answer", "export-answer",
+    "compare-request", "compare-answer",
 ];
 
 /// Names that [`schema`] knows.
@@ -60,6 +62,12 @@ fn plain(name: &str) -> Option<(Value, bool)> {
         "model-request" => (reading().into_root_schema_for::<model::ModelRequest>(), true),
         "dynamics-request" => (reading().into_root_schema_for::<solve::DynamicsRequest>(), true),
         "solve-request" => (reading().into_root_schema_for::<solve::SolveRequest>(), true),
+        "batch-request" => (reading().into_root_schema_for::<batch::HeadBody>(), true),
+        "batch-line" => (reading().into_root_schema_for::<batch::LineBody>(), true),
+        "batch-answer" => (writing().into_root_schema_for::<batch::LineOut<'_>>(), false),
+        "export-answer" => (writing().into_root_schema_for::<market::ExportOut<'_>>(), false),
+        "compare-request" => (reading().into_root_schema_for::<compare::CompareRequest>(), true),
+        "compare-answer" => (writing().into_root_schema_for::<compare::CompareOut<'_>>(), false),
         "model" => (writing().into_root_schema_for::<robot::ModelOut<'_>>(), false),
         "dynamics-answer" => (writing().into_root_schema_for::<dynamics::DynamicsAnswerOut<'_>>(), false),
         "solve-answer" => (writing().into_root_schema_for::<answer::AnswerOut<'_>>(), false),

@@ -22,10 +22,12 @@ pub(super) enum Document {
     Solve,
     Dynamics,
     Model,
+    Batch,
+    Compare,
 }
 
 impl Document {
-    const COUNT: usize = 3;
+    const COUNT: usize = 5;
 
     /// Name of its schema.
     fn name(self) -> &'static str {
@@ -33,6 +35,8 @@ impl Document {
             Document::Solve => "solve-request",
             Document::Dynamics => "dynamics-request",
             Document::Model => "model-request",
+            Document::Batch => "batch-request",
+            Document::Compare => "compare-request",
         }
     }
 
@@ -42,6 +46,14 @@ impl Document {
         let (format, text) = (("/format", json!("underfoot/1")), json!(""));
         match self {
             Document::Model => vec![format, ("/urdf", text)],
+            Document::Batch => vec![format, ("/template", json!({}))],
+            Document::Compare => vec![
+                format,
+                ("/model/urdf", text.clone()),
+                ("/model", text),
+                ("/state", json!({})),
+                ("/yours", json!({})),
+            ],
             Document::Solve | Document::Dynamics => vec![
                 format,
                 ("/model/urdf", text.clone()),

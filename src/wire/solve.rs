@@ -23,7 +23,7 @@ use crate::problem::question::{Contact, DynamicsQuestion, Include, Question, Tic
 use crate::spatial::Vec3;
 
 /// Standard gravity (m/s^2).
-const GRAVITY: [f64; 3] = [0.0, 0.0, -9.80665];
+pub(super) const GRAVITY: [f64; 3] = [0.0, 0.0, -9.80665];
 /// Contacts of one request.
 const MAX_CONTACTS: usize = 32;
 /// Tasks of one request.
@@ -203,6 +203,32 @@ impl SolveRequest {
     }
 }
 
+/// A solve request of which the form counts, and the model.
+#[derive(Deserialize)]
+#[serde(transparent)]
+pub(super) struct SolveForm(SolveRequest);
+
+/// The same of a dynamics request.
+#[derive(Deserialize)]
+#[serde(transparent)]
+pub(super) struct DynamicsForm(DynamicsRequest);
+
+impl Request for SolveForm {
+    type Question = Arc<Model>;
+
+    fn read(self, mut gate: Gate, models: &dyn ModelSource) -> Result<Arc<Model>, Refusal> {
+        find(&mut gate, &self.0.model, models)?.ok_or_else(|| gate.refuse())
+    }
+}
+
+impl Request for DynamicsForm {
+    type Question = Arc<Model>;
+
+    fn read(self, mut gate: Gate, models: &dyn ModelSource) -> Result<Arc<Model>, Refusal> {
+        find(&mut gate, &self.0.model, models)?.ok_or_else(|| gate.refuse())
+    }
+}
+
 impl Request for DynamicsRequest {
     type Question = DynamicsQuestion;
 
@@ -257,7 +283,7 @@ impl TickBody {
 
 /// The model: registered earlier, or given here. None where it cannot be used, which the gate then knows; an unknown
 /// id is a refusal of its own where nothing else was found wrong with the form of the request.
-fn find(
+pub(super) fn find(
     gate: &mut Gate,
     model: &TextOr<InlineModel>,
     models: &dyn ModelSource,

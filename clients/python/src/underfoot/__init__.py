@@ -1,18 +1,22 @@
 """Client of Underfoot, the reference solver for legged robots on ground that gives."""
 
 from . import build, limits, tasks
-from .answer import Answer, Dynamics, FrameTerms, Sole, Task
+from .answer import Answer, Comparison, Dynamics, FrameTerms, Sole, Task
+from .batch import Batch, Line
 from .client import Client, Model
 from .errors import Busy, Fault, Garbled, NotFinite, Refused, UnderfootError, Unreachable
 
 __all__ = [
     "Answer",
+    "Batch",
     "Busy",
     "Client",
+    "Comparison",
     "Dynamics",
     "Fault",
     "FrameTerms",
     "Garbled",
+    "Line",
     "Model",
     "NotFinite",
     "Refused",

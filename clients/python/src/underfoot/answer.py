@@ -143,6 +143,40 @@ class Dynamics:
 
 
 @dataclass(frozen=True)
+class Comparison:
+    """The caller's own rigid-body terms beside the service's."""
+
+    verdict: str
+    """`agrees`, `explained` (by a convention or a pair of them) or `unexplained`."""
+    explanations: tuple[tuple[str, ...], ...]
+    """Codes of the conventions, one tuple per explanation; more than one where this state does not tell them apart."""
+    texts: tuple[str, ...]
+    """What the first explanation says, a sentence per convention."""
+    joints: tuple[str, ...]
+    """Joint names in the caller's order, where the first explanation is about it."""
+    velocities: Mapping[str, float]
+    """Largest relative error of each generalised velocity's rows and columns, as it stands."""
+    document: Mapping[str, Any] = field(repr=False)
+
+    @staticmethod
+    def read(document: Mapping[str, Any]) -> Comparison:
+        """From the service's answer to a comparison."""
+        return shaped(lambda: Comparison._read(document))
+
+    @staticmethod
+    def _read(d: Mapping[str, Any]) -> Comparison:
+        first = d["explanations"][0]["conventions"] if d["explanations"] else []
+        return Comparison(
+            verdict=d["verdict"],
+            explanations=tuple(tuple(c["code"] for c in e["conventions"]) for e in d["explanations"]),
+            texts=tuple(c["text"] for c in first),
+            joints=next((tuple(c["joints"]) for c in first if c.get("joints")), ()),
+            velocities={v["name"]: v["relative"] for v in d["velocities"]},
+            document=d,
+        )
+
+
+@dataclass(frozen=True)
 class Sole:
     """One sole of an answer."""
 

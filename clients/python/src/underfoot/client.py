@@ -4,9 +4,10 @@ from __future__ import annotations
 
 from dataclasses import dataclass, field
 from types import TracebackType
-from typing import Any, Mapping, Sequence
+from typing import Any, Iterable, Mapping, Sequence
 
-from .answer import Answer, Dynamics, shaped
+from .answer import Answer, Comparison, Dynamics, shaped
+from .batch import Batch
 from .build import FORMAT
 from .errors import Refused
 from .transport import Reply, Transport, segment
@@ -100,6 +101,60 @@ class Client:
         reply = self._post("/v1/solve", document, model)
         return Answer.read(reply.document(), reply.body, reply.headers.get("server-timing", ""))
 
+    def export(self, request: Mapping[str, Any] | None = None, /, **members: Any) -> dict[str, str]:
+        """The assembled problem of a solve request as texts by file name: Matrix Market exchange format, and `names.json`."""
+        document = {"format": FORMAT, **(request or {}), **members}
+        model = document.get("model")
+        document["model"] = _reference(model)
+        found = self._post("/v1/export", document, model).document()
+        return shaped(lambda: {file["name"]: file["text"] for file in found["files"]})
+
+    def compare(
+        self,
+        model: Model | str | Mapping[str, Any],
+        state: Mapping[str, Any],
+        *,
+        mass_matrix: Any = None,
+        bias: Any = None,
+        momentum: Any = None,
+        frames: Sequence[Mapping[str, Any]] = (),
+        **more: Any,
+    ) -> Comparison:
+        """Your own terms of one state beside the service's, and the convention that explains the difference.
+
+        Terms in your conventions, each optional: `mass_matrix` (n, n), `bias` (n,), `momentum` (6,), `frames` with `name`,
+        `jacobian` (6, n) and `bias_acceleration` (6,). `state` is in the service's conventions. `more`: further members of the
+        request, e.g. `gravity=`, `tolerance=`.
+        """
+        yours = {"mass_matrix": mass_matrix, "bias": bias, "momentum": momentum, "frames": list(frames) or None}
+        yours = {name: value for name, value in yours.items() if value is not None}
+        request = {"format": FORMAT, "model": _reference(model), "state": state, "yours": yours, **more}
+        return Comparison.read(self._post("/v1/compare", request, model).document())
+
+    def batch(
+        self,
+        template: Mapping[str, Any],
+        lines: Iterable[Mapping[str, Any]],
+        *,
+        operation: str = "solve",
+        members: Sequence[str] | None = None,
+    ) -> Batch:
+        """Answers many states in one exchange: iterate over what comes back, one `Line` for each of `lines`, in order.
+
+        `template`: a request (model, contacts, tasks, ...), with or without `state`; a `Model` may stand for its id. Each of
+        `lines` is put over it: members replace members, objects are merged, None removes; entries of `contacts`,
+        `tasks` and `limits` are merged by name, and `without` names those to leave out. An `id` comes back with the answer.
+        `lines` is taken as it comes, on a thread of its own; any length needs the memory of a few lines. `operation`:
+        `solve` or `dynamics`. `members`: what of each answer is sent back; everything when left out.
+        """
+        request = {"format": FORMAT, **template}
+        model = request.get("model")
+        request["model"] = _reference(model)
+        head: dict[str, Any] = {"format": FORMAT, "operation": operation, "template": request}
+        if members is not None:
+            head["members"] = list(members)
+        return Batch(self._transport, head, lines, lambda refused: self._register_again(refused, model))
+
     def raw(self, method: str, path: str, body: bytes | None = None, headers: Mapping[str, str] | None = None) -> Reply:
         """One exchange as it is: no exceptions for refusals, no re-sending of models."""
         return self._transport.raw(method, path, body, dict(headers or {}))
@@ -108,12 +163,17 @@ class Client:
         try:
             return self._transport.post(path, document)
         except Refused as refused:
-            source = self._source(model)
-            if refused.status != 404 or refused.code != UNKNOWN_MODEL or source is None:
+            if not self._register_again(refused, model):
                 raise
-        # Registered models are a bounded cache: send it again, once.
-        self._transport.post("/v1/models", source)
         return self._transport.post(path, document)
+
+    def _register_again(self, refused: Refused, model: Any) -> bool:
+        """Registered models are a bounded cache: sends one that was lost again. False where that is not what was wrong."""
+        source = self._source(model)
+        if refused.status != 404 or refused.code != UNKNOWN_MODEL or source is None:
+            return False
+        self._transport.post("/v1/models", source)
+        return True
 
     def _source(self, model: Any) -> Mapping[str, Any] | None:
         if isinstance(model, Model):

@@ -118,14 +118,19 @@ class Transport:
         connection = getattr(self._own, "connection", None)
         if connection is not None and connection.sock is not None:
             return connection, False
+        connection = self.fresh()
+        self._own.connection = connection
+        return connection, True
+
+    def fresh(self) -> http.client.HTTPConnection:
+        """A new connection, for the caller alone."""
         connection = http.client.HTTPConnection(self.host, self.port, timeout=self.timeout)
         try:
             connection.connect()
         except OSError as error:
             raise Unreachable(f"{self._name()}: {error}") from error
         connection.sock.setsockopt(socket.IPPROTO_TCP, socket.TCP_NODELAY, 1)
-        self._own.connection = connection
-        return connection, True
+        return connection
 
     @staticmethod
     def _exchange(connection: http.client.HTTPConnection, method: str, path: str, body: bytes | None, headers: dict[str, str]) -> Reply:
