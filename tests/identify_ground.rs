@@ -110,7 +110,8 @@ fn row(line: u64, time: f64, sample: &underfoot::identify::Matched, twist: bool)
     Row { line, time, soles: vec![SoleRow { sole: 0, wrench: sample.wrench.to_vec6(), motion, stands: None }], state: None }
 }
 
-/// A sole walks over four patches of different ground, 1.6 s on each, 0.4 s in the air between.
+/// A sole walks over four patches of different ground, 1.6 s on each, 0.4 s of coming down before, and 0.2 s without samples
+/// between.
 const PATCHES: [(f64, f64, f64); 4] = [(3e6, 3e4, 0.0), (8e5, 1.2e4, 0.01), (2e6, 1e4, -0.005), (5e6, 6e4, 0.002)];
 
 fn walk(seed: u64, noise: (f64, f64), mut push: impl FnMut(f64, underfoot::identify::Matched, usize, f64)) {
@@ -121,7 +122,7 @@ fn walk(seed: u64, noise: (f64, f64), mut push: impl FnMut(f64, underfoot::ident
         let sink = 400.0 / (k * 0.022);
         for i in 0..1000 {
             let t = STEP * i as f64 - 0.4;
-            let time = STEP * line as f64;
+            let time = STEP * line as f64 + 0.2 * patch as f64;
             line += 1;
             let (motion, force) = if t < 0.0 {
                 // On the way down at the speed of the touchdown.
@@ -212,7 +213,8 @@ fn a_lag_between_force_and_motion_is_found() {
         delays.iter().flat_map(|d| constants.iter().map(|c| Lag { delay: *d, time_constant: *c })).collect::<Vec<_>>()
     };
     let found = |lags: Vec<Lag>| {
-        let setup = Setup { lags, ..setup(rectangle()) };
+        // Where the sole rests in the plane is unknown: the anchor is the pose at the touchdown less the lag.
+        let setup = Setup { lags, unknown: Unknown { height: true, offset: true, ..Unknown::default() }, ..setup(rectangle()) };
         let mut session = Session::new(setup);
         let mut random = Random(21);
         let mut filtered = Vec6::zeros();

@@ -5,6 +5,7 @@
 mod demo;
 mod dynamics;
 mod files;
+mod identify;
 mod log;
 mod report;
 mod schemas;
@@ -35,6 +36,8 @@ enum Command {
     Solve(solve::Solve),
     /// Rigid-body terms of a state from a file; prints what POST /v1/dynamics answers.
     Dynamics(dynamics::Dynamics),
+    /// Stiffness and damping of the ground from a log; prints what POST /v1/identify answers.
+    Identify(identify::Identify),
     /// List the JSON Schemas, or print one.
     Schemas(schemas::Schemas),
     /// Show the whole path on a built-in scenario, through a real service.
@@ -68,6 +71,7 @@ pub fn main() -> ExitCode {
         Command::Serve(command) => command.run(),
         Command::Solve(command) => command.run(),
         Command::Dynamics(command) => command.run(),
+        Command::Identify(command) => command.run(),
         Command::Schemas(command) => command.run(),
         Command::Demo(command) => command.run(),
     }

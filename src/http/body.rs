@@ -3,6 +3,7 @@
 use std::future::poll_fn;
 use std::pin::Pin;
 use std::sync::Arc;
+use std::time::Duration;
 
 use axum::body::{Body, Bytes, HttpBody};
 use axum::extract::{FromRequest, Request};
@@ -21,28 +22,18 @@ impl FromRequest<Arc<Shared>> for JsonBytes {
     async fn from_request(request: Request, shared: &Arc<Shared>) -> Result<Self, Problem> {
         check_type(request.headers())?;
         let limit = shared.settings.body_limit;
-        check_length(request.headers(), limit)?;
+        check_length(request.headers(), limit as u64)?;
         let reading = read(request.into_body(), limit);
         match tokio::time::timeout(shared.settings.body_time, reading).await {
             Ok(result) => result.map(JsonBytes),
-            Err(_) => Err(Problem::new(
-                StatusCode::REQUEST_TIMEOUT,
-                "slow-body",
-                "Body came too slowly",
-                format!("the body must arrive within {} s", shared.settings.body_time.as_secs_f64()),
-            )),
+            Err(_) => Err(too_slow("the body", shared.settings.body_time)),
         }
     }
 }
 
 /// A page in a browser can send a form or plain text to any address without asking; JSON it cannot.
 fn check_type(headers: &HeaderMap) -> Result<(), Problem> {
-    let mut given = headers.get_all(header::CONTENT_TYPE).iter();
-    let json = match (given.next(), given.next()) {
-        (Some(value), None) => value.to_str().is_ok_and(is_json),
-        _ => false,
-    };
-    if !json {
+    if !media_type(headers).is_some_and(is_json) {
         return Err(Problem::new(
             StatusCode::UNSUPPORTED_MEDIA_TYPE,
             "not-json",
@@ -50,6 +41,20 @@ fn check_type(headers: &HeaderMap) -> Result<(), Problem> {
             "send one Content-Type header with application/json",
         ));
     }
+    check_encoding(headers)
+}
+
+/// The one Content-Type header, if there is just one.
+pub(super) fn media_type(headers: &HeaderMap) -> Option<&str> {
+    let mut given = headers.get_all(header::CONTENT_TYPE).iter();
+    match (given.next(), given.next()) {
+        (Some(value), None) => value.to_str().ok(),
+        _ => None,
+    }
+}
+
+/// Compressed bodies are not taken.
+pub(super) fn check_encoding(headers: &HeaderMap) -> Result<(), Problem> {
     let encoded = headers.get_all(header::CONTENT_ENCODING).iter().any(|value| value != "identity");
     if encoded {
         return Err(Problem::new(
@@ -68,13 +73,13 @@ fn is_json(value: &str) -> bool {
 }
 
 /// Refuses by the announced length, before a byte of the body is read.
-fn check_length(headers: &HeaderMap, limit: usize) -> Result<(), Problem> {
+pub(super) fn check_length(headers: &HeaderMap, limit: u64) -> Result<(), Problem> {
     let announced = headers
         .get(header::CONTENT_LENGTH)
         .and_then(|value| value.to_str().ok())
         .and_then(|text| text.parse::<u64>().ok());
     match announced {
-        Some(length) if length > limit as u64 => Err(too_large(limit)),
+        Some(length) if length > limit => Err(too_large(limit)),
         _ => Ok(()),
     }
 }
@@ -86,7 +91,7 @@ async fn read(mut body: Body, limit: usize) -> Result<Bytes, Problem> {
         let frame = frame.map_err(|_| broken())?;
         if let Ok(data) = frame.into_data() {
             if data.len() > limit - bytes.len() {
-                return Err(too_large(limit));
+                return Err(too_large(limit as u64));
             }
             bytes.extend_from_slice(&data);
         }
@@ -94,7 +99,7 @@ async fn read(mut body: Body, limit: usize) -> Result<Bytes, Problem> {
     Ok(Bytes::from(bytes))
 }
 
-fn too_large(limit: usize) -> Problem {
+pub(super) fn too_large(limit: u64) -> Problem {
     Problem::new(
         StatusCode::PAYLOAD_TOO_LARGE,
         "body-too-large",
@@ -103,7 +108,17 @@ fn too_large(limit: usize) -> Problem {
     )
 }
 
-fn broken() -> Problem {
+/// A client that keeps a worker waiting.
+pub(super) fn too_slow(what: &str, within: Duration) -> Problem {
+    Problem::new(
+        StatusCode::REQUEST_TIMEOUT,
+        "slow-body",
+        "Body came too slowly",
+        format!("{what} must arrive within {} s", within.as_secs_f64()),
+    )
+}
+
+pub(super) fn broken() -> Problem {
     Problem::new(
         StatusCode::BAD_REQUEST,
         "broken-body",

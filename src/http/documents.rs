@@ -1,16 +1,21 @@
 //! From a request's bytes to a document's bytes: the one path that service and command line share.
 
+use std::io::BufRead;
 use std::sync::Arc;
-use std::sync::atomic::AtomicBool;
+use std::sync::atomic::{AtomicBool, Ordering};
 use std::time::{Duration, Instant};
 
 use super::models::Models;
 use super::settings::MODELS_KEPT;
 use crate::explain::ExplainError;
+use crate::identify::Session;
 use crate::reference::answer::Status;
 use crate::reference::{self, Trouble};
 use crate::solve::SolveError;
-use crate::wire::{self, Fault, ModelSource, Refusal};
+use crate::wire::{self, Fault, LogForm, LogReader, ModelSource, Refusal};
+
+/// Rows of a log between two looks at whether anybody still waits.
+pub const ROWS_BETWEEN: u64 = 10_000;
 
 /// What is asked for.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -21,6 +26,8 @@ pub enum Errand {
     Dynamics,
     /// Torques and wrenches.
     Solve,
+    /// The ground from samples within the request.
+    Identify,
 }
 
 /// A document, and what the transport needs to know of it.
@@ -41,6 +48,20 @@ pub trait Work: Send + Sync + 'static {
     /// # Errors
     /// A refusal names what is wrong with the request.
     fn run(&self, errand: Errand, body: &[u8], cancel: &Arc<AtomicBool>) -> Result<Document, Refusal>;
+
+    /// Identifies the ground from a log of lines; the settings are its first line, or stand in `settings`. After every
+    /// [`ROWS_BETWEEN`] rows `progress` hears how many there were.
+    ///
+    /// # Errors
+    /// A refusal names what is wrong with the settings or the log.
+    fn log(
+        &self,
+        settings: Option<&[u8]>,
+        log: &mut dyn BufRead,
+        form: LogForm,
+        cancel: &Arc<AtomicBool>,
+        progress: &mut dyn FnMut(u64),
+    ) -> Result<Document, Refusal>;
 
     /// The document of a registered model.
     fn model(&self, id: &str) -> Option<Vec<u8>>;
@@ -64,7 +85,32 @@ impl Work for Catalogue {
             Errand::Register => self.register(body),
             Errand::Dynamics => self.dynamics(body),
             Errand::Solve => self.solve(body, cancel),
+            Errand::Identify => self.identify(body),
         }
+    }
+
+    fn log(
+        &self,
+        settings: Option<&[u8]>,
+        log: &mut dyn BufRead,
+        form: LogForm,
+        cancel: &Arc<AtomicBool>,
+        progress: &mut dyn FnMut(u64),
+    ) -> Result<Document, Refusal> {
+        let mut clock = Clock::start();
+        let (mut reader, mut session) = LogReader::new(settings, log, form, &self.models)?;
+        let mut lines = 0;
+        while reader.feed(&mut session)? {
+            lines += 1;
+            if lines % ROWS_BETWEEN == 0 {
+                progress(lines);
+                if cancel.load(Ordering::Relaxed) {
+                    return Err(Refusal::new(504, "time-limit", "Time limit reached", "the work was called off"));
+                }
+            }
+        }
+        clock.lap("identify");
+        finished(session, &reader.fingerprint(), clock)
     }
 
     fn model(&self, id: &str) -> Option<Vec<u8>> {
@@ -94,6 +140,13 @@ impl Catalogue {
         Ok(Document { body, model: None, timings: clock.laps })
     }
 
+    fn identify(&self, body: &[u8]) -> Result<Document, Refusal> {
+        let mut clock = Clock::start();
+        let session = wire::read_identify(body, &self.models)?;
+        clock.lap("identify");
+        finished(session, &wire::fingerprint(body), clock)
+    }
+
     fn solve(&self, body: &[u8], cancel: &Arc<AtomicBool>) -> Result<Document, Refusal> {
         let mut clock = Clock::start();
         let question = wire::read_solve(body, &self.models)?;
@@ -107,6 +160,14 @@ impl Catalogue {
         clock.lap("write");
         Ok(Document { body, model: None, timings: clock.laps })
     }
+}
+
+/// The document of a log that was read to its end.
+fn finished(session: Session, fingerprint: &str, mut clock: Clock) -> Result<Document, Refusal> {
+    let setup = session.setup().clone();
+    let body = wire::write_identify(&setup, &session.finish(), fingerprint)?;
+    clock.lap("write");
+    Ok(Document { body, model: None, timings: clock.laps })
 }
 
 /// A question that passed the gate and yet leads nowhere: the member at fault is named where there is one.

@@ -11,6 +11,7 @@ pub mod documents;
 pub mod guard;
 pub mod handlers;
 pub mod listen;
+pub mod log;
 pub mod models;
 pub mod problem;
 pub mod router;

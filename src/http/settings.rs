@@ -15,6 +15,10 @@ pub const DEFAULT_TIME_LIMIT: Duration = Duration::from_secs(10);
 pub const BODY_LIMIT: usize = 4 << 20;
 /// Time for a client to deliver a request body.
 pub const BODY_TIME: Duration = Duration::from_secs(10);
+/// Largest log sent as lines (bytes).
+pub const LOG_LIMIT: u64 = 4 << 30;
+/// Time for reading and working on a log sent as lines.
+pub const LOG_TIME: Duration = Duration::from_secs(600);
 /// Time for a client to deliver a request head; an idle connection is closed after it too.
 pub const HEADER_TIME: Duration = Duration::from_secs(30);
 /// Time a client may leave a response unread before the connection is dropped.
@@ -43,6 +47,10 @@ pub struct Settings {
     pub body_limit: usize,
     /// Time for a client to deliver a request body.
     pub body_time: Duration,
+    /// Largest log sent as lines (bytes).
+    pub log_limit: u64,
+    /// Time for reading and working on a log sent as lines; between two pieces of it a client may take `body_time`.
+    pub log_time: Duration,
     /// Time for a client to deliver a request head.
     pub header_time: Duration,
     /// Time a client may leave a response unread.
@@ -62,6 +70,8 @@ impl Default for Settings {
             time_limit: DEFAULT_TIME_LIMIT,
             body_limit: BODY_LIMIT,
             body_time: BODY_TIME,
+            log_limit: LOG_LIMIT,
+            log_time: LOG_TIME,
             header_time: HEADER_TIME,
             stall_time: STALL_TIME,
             grace: GRACE,

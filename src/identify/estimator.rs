@@ -25,7 +25,7 @@ pub const GROUPS: usize = 2;
 pub const MOST_PARAMETERS: usize = 16;
 
 /// A row whose residual keeps less than this share of its own variance is spent on the parameters.
-pub const SPENT: f64 = 0.1;
+pub const SPENT: f64 = 1e-6;
 
 /// What is assumed before the first sample, in physical units.
 #[derive(Debug, Clone, PartialEq)]

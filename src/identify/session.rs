@@ -39,8 +39,8 @@ pub struct Row {
     pub time: f64,
     /// Soles with a reading in this row.
     pub soles: Vec<SoleRow>,
-    /// State of the robot, where poses follow from a model.
-    pub state: Option<State>,
+    /// State of the robot, where poses follow from a model, and whether it holds velocities.
+    pub state: Option<(State, bool)>,
 }
 
 /// Takes a log row by row. Memory does not grow with the log.
@@ -108,7 +108,8 @@ impl Session {
         }
         self.update_kinematics(row);
         for sole in &row.soles {
-            let motion = sole.motion.or_else(|| self.by_model(sole.sole));
+            let moving = row.state.as_ref().is_some_and(|state| state.1);
+            let motion = sole.motion.or_else(|| self.by_model(sole.sole, moving));
             let Some((pose, twist)) = motion else { continue };
             let reading = Reading { line: row.line, time: row.time, wrench: sole.wrench, pose, twist, stands: sole.stands };
             if let Some(track) = self.tracks.get_mut(sole.sole) {
@@ -149,16 +150,17 @@ impl Session {
     }
 
     fn update_kinematics(&mut self, row: &Row) {
-        if let (Source::Model(model), Some(workspace), Some(state)) = (&self.setup.source, &mut self.workspace, &row.state) {
+        if let (Source::Model(model), Some(workspace), Some((state, _))) = (&self.setup.source, &mut self.workspace, &row.state) {
             workspace.update_kinematics(model, state);
         }
     }
 
-    fn by_model(&self, sole: usize) -> Option<(Pose, Option<Twist>)> {
+    fn by_model(&self, sole: usize, moving: bool) -> Option<(Pose, Option<Twist>)> {
         let (Source::Model(model), Some(workspace)) = (&self.setup.source, &self.workspace) else { return None };
         let sole = model.soles.get(self.setup.soles.get(sole)?.in_model)?;
         let pose = frame_pose(model, workspace, sole.body, &sole.placement);
-        Some((pose, Some(frame_twist(model, workspace, sole.body, &sole.placement))))
+        let twist = moving.then(|| frame_twist(model, workspace, sole.body, &sole.placement));
+        Some((pose, twist))
     }
 
     /// The end of the log.

@@ -13,6 +13,7 @@ mod extras;
 mod friction;
 mod gaps;
 mod gate;
+mod identify;
 mod joints;
 mod kinds;
 mod limit;
@@ -43,7 +44,9 @@ use crate::model::Model;
 use crate::problem::question::{DynamicsQuestion, Question};
 use crate::reference::answer::{Answer, DynamicsReport};
 
+use canonical::hexadecimal;
 pub use canonical::{canonical, fingerprint};
+pub use identify::{LogForm, LogReader, MAX_LINE, read_identify, write_identify};
 pub use openapi::openapi;
 pub use refusal::{Fault, Refusal};
 pub use schema::{schema, schema_names};

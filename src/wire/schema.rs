@@ -5,20 +5,22 @@ use serde_json::{Map, Value, json};
 
 use super::kinds::KindTable;
 use super::strict::MAX_MAGNITUDE;
-use super::{answer, contact, dynamics, limit, model, problem, robot, solve, task, treatment};
+use super::{answer, contact, dynamics, identify, limit, model, problem, robot, solve, task, treatment};
 
 /// Objects whose members depend on a `kind`.
-const TABLES: [&KindTable; 5] = [
+const TABLES: [&KindTable; 6] = [
     &treatment::TREATMENT_KINDS,
     &contact::LAW_KINDS,
     &contact::REST_KINDS,
     &limit::LIMIT_KINDS,
     &task::TASK_KINDS,
+    &identify::TOUCHDOWN_KINDS,
 ];
 
 /// Names of the documents.
 const NAMES: &[&str] = &[
-    "model-request", "model", "dynamics-request", "dynamics-answer", "solve-request", "solve-answer", "problem",
+    "model-request", "model", "dynamics-request", "dynamics-answer", "solve-request", "solve-answer",
+    "identify-request", "identify-answer", "problem",
 ];
 
 /// Names that [`schema`] knows.
@@ -60,6 +62,8 @@ fn plain(name: &str) -> Option<(Value, bool)> {
         "model-request" => (reading().into_root_schema_for::<model::ModelRequest>(), true),
         "dynamics-request" => (reading().into_root_schema_for::<solve::DynamicsRequest>(), true),
         "solve-request" => (reading().into_root_schema_for::<solve::SolveRequest>(), true),
+        "identify-request" => (reading().into_root_schema_for::<identify::IdentifyRequest>(), true),
+        "identify-answer" => (writing().into_root_schema_for::<identify::IdentifyAnswerOut<'_>>(), false),
         "model" => (writing().into_root_schema_for::<robot::ModelOut<'_>>(), false),
         "dynamics-answer" => (writing().into_root_schema_for::<dynamics::DynamicsAnswerOut<'_>>(), false),
         "solve-answer" => (writing().into_root_schema_for::<answer::AnswerOut<'_>>(), false),

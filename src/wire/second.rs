@@ -22,10 +22,11 @@ pub(super) enum Document {
     Solve,
     Dynamics,
     Model,
+    Identify,
 }
 
 impl Document {
-    const COUNT: usize = 3;
+    const COUNT: usize = 4;
 
     /// Name of its schema.
     fn name(self) -> &'static str {
@@ -33,6 +34,7 @@ impl Document {
             Document::Solve => "solve-request",
             Document::Dynamics => "dynamics-request",
             Document::Model => "model-request",
+            Document::Identify => "identify-request",
         }
     }
 
@@ -42,6 +44,7 @@ impl Document {
         let (format, text) = (("/format", json!("underfoot/1")), json!(""));
         match self {
             Document::Model => vec![format, ("/urdf", text)],
+            Document::Identify => vec![format, ("/soles", json!([]))],
             Document::Solve | Document::Dynamics => vec![
                 format,
                 ("/model/urdf", text.clone()),

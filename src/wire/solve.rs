@@ -257,7 +257,7 @@ impl TickBody {
 
 /// The model: registered earlier, or given here. None where it cannot be used, which the gate then knows; an unknown
 /// id is a refusal of its own where nothing else was found wrong with the form of the request.
-fn find(
+pub(super) fn find(
     gate: &mut Gate,
     model: &TextOr<InlineModel>,
     models: &dyn ModelSource,
