@@ -36,9 +36,9 @@ pub(in crate::wire) struct IdentifyAnswerOut<'a> {
     span: Option<Tuple<2>>,
     /// Scale of the force readings: reading over truth (no unit). Null unless asked for.
     scale: Option<ScaleOut>,
-    /// Soles in the order of the request.
+    /// Soles in the order of the request (s, N, m).
     soles: Vec<SoleOut<'a>>,
-    /// About the log: everything that was left out or looks wrong, with lines.
+    /// About the log: everything that was left out or looks wrong, with lines (units in the texts).
     remarks: Vec<RemarkOut<'a>>,
 }
 
@@ -88,11 +88,11 @@ struct SoleOut<'a> {
     ground: Option<GroundOut>,
     /// Why there is no `ground` (no unit); null where there is one.
     ground_withheld: Option<String>,
-    /// Stances in order, at most 200; the last one is the last of the log.
+    /// Stances in order, at most 200 (s, N, m); the last one is the last of the log.
     stances: Vec<StanceOut<'a>>,
     /// Stances that are not listed (no unit).
     unlisted: u64,
-    /// The estimate over time, thinned out evenly.
+    /// The estimate over time, thinned out evenly (s, N/m^3, N s/m^3).
     history: HistoryOut<'a>,
 }
 
@@ -134,7 +134,7 @@ struct StanceOut<'a> {
     samples: u64,
     /// Mean normal force (N).
     mean_normal_force: Number,
-    /// Estimates, each in its own `unit`.
+    /// Estimates (in the `unit` of each).
     parameters: Vec<ParameterOut<'a>>,
     /// Covariance of the parameters in their order, rows (products of their units).
     covariance: Rows<'a>,

@@ -263,7 +263,7 @@ struct MotionNoiseBody {
 struct MappingBody {
     /// The header cell as it stands in the log (no unit).
     column: String,
-    /// What it means: a column name of this service with its unit, `name [unit]`.
+    /// What it means: a column name of this service with its unit, `name [unit]` (no unit of its own).
     means: String,
 }
 

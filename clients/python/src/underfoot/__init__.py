@@ -4,6 +4,7 @@ from . import build, limits, tasks
 from .answer import Answer, Dynamics, FrameTerms, Sole, Task
 from .client import Client, Model
 from .errors import Busy, Fault, Garbled, NotFinite, Refused, UnderfootError, Unreachable
+from .identified import Identification, IdentifiedSole, IdentifiedStance, Parameter
 
 __all__ = [
     "Answer",
@@ -13,8 +14,12 @@ __all__ = [
     "Fault",
     "FrameTerms",
     "Garbled",
+    "Identification",
+    "IdentifiedSole",
+    "IdentifiedStance",
     "Model",
     "NotFinite",
+    "Parameter",
     "Refused",
     "Sole",
     "Task",
