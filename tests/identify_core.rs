@@ -299,3 +299,24 @@ fn a_change_is_called_as_often_as_it_should_be() {
     // Derived: 100 expected, standard error 9.7; three of them.
     assert!((71..=129).contains(&called), "{called}");
 }
+
+/// A long still stretch under strong forgetting leaves an estimator that can be read and that learns again.
+#[test]
+fn forgetting_does_not_wind_up() {
+    let mut random = Random(9);
+    let mut estimator = Estimator::new(Prior { scale: vec![1.0; 2], mean: vec![0.0; 2], deviation: vec![1e3; 2] }, 2);
+    for i in 0..60_000 {
+        let still = i > 200 && i < 59_000;
+        let row = if still { [1.0, 0.0] } else { [random.normal(), random.normal()] };
+        estimator.forget(0.9);
+        estimator.update(0, &row, 2.0 * row[0] - 3.0 * row[1] + 0.1 * random.normal());
+        if i == 58_999 {
+            let estimate = estimator.estimate().unwrap();
+            // Next to nothing is remembered of the second parameter; its value stands, and so does the error of that value.
+            assert!(estimate.memory[(1, 1)] > 1e6 && estimate.memory[(1, 1)] < 1e20, "{estimate:?}");
+            assert!((estimate.value[0] - 2.0).abs() < 0.2 && (estimate.value[1] + 3.0).abs() < 0.2);
+        }
+    }
+    let value = estimator.value().unwrap();
+    assert!((value[0] - 2.0).abs() < 0.2 && (value[1] + 3.0).abs() < 0.2, "{value:?}");
+}

@@ -24,6 +24,8 @@ pub const GROUPS: usize = 2;
 /// Most parameters.
 pub const MOST_PARAMETERS: usize = 16;
 
+/// Share of the prior's knowledge (as one over a deviation) below which nothing more is forgotten.
+const FAINT: f64 = 1e-3;
 /// A row whose residual keeps less than this share of its own variance is spent on the parameters.
 pub const SPENT: f64 = 1e-6;
 
@@ -91,8 +93,12 @@ impl Estimator {
     }
 
     /// Ages what is known by `lambda`, 0 < lambda <= 1. Once per sample, before its rows.
+    ///
+    /// Forgetting pauses while next to nothing is known of some parameter: with a sole that stands still, what was known
+    /// would otherwise fade until numbers underflow, and the next motion would meet an estimator without memory.
     pub fn forget(&mut self, lambda: f64) {
-        if lambda == 1.0 {
+        let faint = |(i, deviation): (usize, &f64)| self.root.diagonal(i) * deviation < FAINT * self.prior.scale[i];
+        if lambda == 1.0 || self.prior.deviation.iter().enumerate().any(faint) {
             return;
         }
         self.root.forget(lambda);

@@ -2,7 +2,7 @@
 
 use super::parameters::Parameter;
 use super::regressor::Motion;
-use crate::spatial::{Pose, Vec3, log_so3};
+use crate::spatial::{Pose, Vec3};
 
 /// Deviation over value up to which a parameter counts as identified.
 const GOOD: f64 = 0.1;
@@ -30,6 +30,7 @@ pub struct Extent {
     low: [f64; 4],
     high: [f64; 4],
     speed: [f64; 3],
+    turn: f64,
 }
 
 /// In figures.
@@ -39,7 +40,7 @@ pub struct Moved {
     pub sink_range: f64,
     /// Range in the ground plane, the larger of two axes (m).
     pub shear_range: f64,
-    /// Largest turn from the anchor (rad).
+    /// Largest turn from the first sample (rad).
     pub turn: f64,
     /// Range of the normal force (N).
     pub force_range: f64,
@@ -70,18 +71,21 @@ impl Extent {
         self.speed[0] += down * down;
         self.speed[1] += (v - normal * down).norm_squared();
         self.speed[2] += motion.twist.angular.norm_squared();
+        // |R - R'| = 2 sqrt(2) |sin(angle)|.
+        let relative = motion.pose.rotation * anchor.rotation.transpose();
+        let sine = (relative - relative.transpose()).norm() / 8.0_f64.sqrt();
+        self.turn = self.turn.max(sine.min(1.0).asin());
         self.samples += 1.0;
     }
 
-    /// The figures; `last` is the present pose, whose turn from the first one is told.
-    pub fn moved(&self, last: &Pose) -> Moved {
+    /// The figures.
+    pub fn moved(&self) -> Moved {
         let n = self.samples.max(1.0);
-        let turn = self.anchor.map_or(0.0, |anchor| log_so3(&(last.rotation * anchor.rotation.transpose())).norm());
         let range = |i: usize| self.high[i] - self.low[i];
         Moved {
             sink_range: range(0),
             shear_range: range(1).max(range(2)),
-            turn,
+            turn: self.turn,
             force_range: range(3),
             normal_speed: (self.speed[0] / n).sqrt(),
             tangential_speed: (self.speed[1] / n).sqrt(),

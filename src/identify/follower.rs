@@ -94,6 +94,8 @@ pub struct Follower {
     /// Estimate over time.
     pub history: Vec<Moment>,
     stride: u64,
+    /// Stances whose touchdown is not in the log: they begin with a loaded sole.
+    pub blind: u64,
     /// Touchdowns at which the sole's z axis pointed into the ground.
     pub upside_down: u64,
 }
@@ -119,6 +121,7 @@ impl Follower {
             used: 0,
             history: Vec::new(),
             stride: 1,
+            blind: 0,
             upside_down: 0,
         }
     }
@@ -137,13 +140,13 @@ impl Follower {
     pub fn push(&mut self, setup: &Setup, index: usize, frame: &Frame, sample: &Matched) -> bool {
         let normal = &setup.plane.normal;
         let force = normal.dot(&(sample.motion.pose.rotation * sample.wrench.force));
-        let stood = self.running.is_some();
         if !self.decide(setup, index, sample, force) {
             self.end();
             self.unloaded = Some(sample.motion.pose);
             self.last_time = Some(sample.time);
             return false;
         }
+        let stood = self.running.is_some();
         if !stood {
             self.touch_down(setup, index, sample);
         }
@@ -214,6 +217,7 @@ impl Follower {
         self.filter = None;
         let by_force = matches!(setup.touchdown, Touchdown::Force { .. });
         let down = self.unloaded.filter(|_| by_force).unwrap_or(sample.motion.pose);
+        self.blind += u64::from(by_force && self.unloaded.is_none());
         let anchor = self.rest_pose(setup, index, sample, &down);
         self.settling = SETTLING * setup.lags.iter().fold(0.0_f64, |most, lag| most.max(lag.time_constant));
         self.running = Some(Running::new(sample.time, anchor));

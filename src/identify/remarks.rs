@@ -6,6 +6,7 @@ use super::report::Remark;
 pub const MOST_LINES: usize = 20;
 /// Most different remarks.
 const MOST_REMARKS: usize = 100;
+const LAST: usize = MOST_REMARKS - 1;
 
 /// The remarks so far.
 #[derive(Debug, Clone, Default)]
@@ -26,10 +27,12 @@ impl Remarks {
         let remark = match found {
             Some(remark) => remark,
             None => {
-                if self.list.len() >= MOST_REMARKS {
-                    return;
-                }
-                let text = format!("{subject}{}", text());
+                // The last place is for all that found none.
+                let (code, text) = match self.list.len() {
+                    MOST_REMARKS => return self.further(line, skipped),
+                    LAST => ("further-remarks", "further remarks of other kinds are counted here only".to_owned()),
+                    _ => (code, format!("{subject}{}", text())),
+                };
                 self.list.push(Remark { code, text, count: 0, lines: Vec::new(), skipped: 0 });
                 let Some(last) = self.list.last_mut() else { return };
                 last
@@ -39,6 +42,15 @@ impl Remarks {
         remark.skipped += skipped;
         if line > 0 && remark.lines.len() < MOST_LINES && remark.lines.last() != Some(&line) {
             remark.lines.push(line);
+        }
+    }
+
+    fn further(&mut self, line: u64, skipped: u64) {
+        let Some(last) = self.list.last_mut() else { return };
+        last.count += 1;
+        last.skipped += skipped;
+        if last.lines.len() < MOST_LINES {
+            last.lines.push(line);
         }
     }
 

@@ -96,7 +96,8 @@ pub struct SoleReport {
     pub area: Option<f64>,
     /// Stances, in order; see `unlisted`.
     pub stances: Vec<Stance>,
-    /// Stances beyond the most that are listed; the last stance of all is always the last of the list.
+    /// Stances beyond the most that are listed, and those whose numbers overflowed; the last stance of all is the last of the
+    /// list.
     pub unlisted: u64,
     /// The estimate over time, thinned out evenly.
     pub history: Vec<Moment>,

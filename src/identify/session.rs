@@ -218,6 +218,14 @@ impl Session {
                     format!("{seen}{why}estimate the base without that assumption, or the ground will come out too stiff")
                 });
             }
+            let blind = track.blind();
+            if blind > 0 && !self.setup.unknown.offset {
+                self.remarks.note_about("no-touchdown", &name, 0, 0, || {
+                    format!(
+                        "{blind} of its stances begin with a loaded sole, so that the place of the touchdown is unknown: add `offset` to what is unknown"
+                    )
+                });
+            }
             if track.upside_down() > 0 {
                 self.remarks.note_about("upside-down", &name, 0, 0, || {
                     "at touchdown its z axis pointed into the ground; the touchdown pose was taken for the rest pose".to_owned()

@@ -77,6 +77,11 @@ impl SquareRoot {
         self.rss *= lambda;
     }
 
+    /// Diagonal element of R: one over the deviation of a parameter while those after it are held.
+    pub fn diagonal(&self, place: usize) -> f64 {
+        self.triangle.get(place * self.size + place).copied().unwrap_or(0.0)
+    }
+
     /// Takes in one row of unit variance, `row` as long as there are parameters.
     pub fn update(&mut self, row: &[f64], y: f64) -> Residual {
         let n = self.size;

@@ -27,7 +27,6 @@ pub struct Running {
     extent: Extent,
     axes: [Whiteness; 6],
     force: f64,
-    last: Pose,
     amplification: f64,
 }
 
@@ -43,7 +42,6 @@ impl Running {
             extent: Extent::default(),
             axes: Default::default(),
             force: 0.0,
-            last: rest,
             amplification: 0.0,
         }
     }
@@ -54,7 +52,6 @@ impl Running {
         self.end = sample.time;
         self.samples += 1;
         self.force += normal_force;
-        self.last = sample.motion.pose;
         self.amplification += sample.amplification;
     }
 
@@ -73,14 +70,13 @@ impl Running {
         self.amplification / self.samples.max(1) as f64
     }
 
-    /// What is to be said; `motion_noise` as [`noise::MotionNoise::deviations`], `remembered` the weight of the
-    /// samples that count (their number where nothing is forgotten), `scale` the sensor's (reading over truth).
+    /// What is to be said; `motion_noise` as [`noise::MotionNoise::deviations`], `scale` the sensor's (reading over truth).
     pub fn report(&self, frame: &Frame, prior: &Prior, motion_noise: &[f64; 4], scale: f64) -> Option<Stance> {
         let mut estimate = self.estimate.clone()?;
         let bias = self.bias(frame, prior, &estimate, motion_noise);
         estimate.value.iter_mut().for_each(|x| *x /= scale);
         estimate.covariance /= scale * scale;
-        let moved = self.extent.moved(&self.last);
+        let moved = self.extent.moved();
         let values: Vec<Value> = (0..frame.parameters.len())
             .map(|k| {
                 let parameter = frame.parameters[k];

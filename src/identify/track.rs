@@ -219,6 +219,7 @@ impl Track {
             }
             stances.extend(running.report(&self.frame, follower.estimator().prior(), &motion_noise, scale));
         }
+        let lost = (follower.finished.len() - stances.len()) as u64;
         for k in 1..stances.len() {
             let (before, now) = (material(&stances[k - 1]), material(&stances[k]));
             stances[k].change = compare((&before.0, &before.1), (&now.0, &now.1));
@@ -230,7 +231,7 @@ impl Track {
         Some(SoleReport {
             area: shape.then_some(self.frame.sole.area),
             stances,
-            unlisted: follower.unlisted,
+            unlisted: follower.unlisted + lost,
             history,
             lag: follower.lag,
             delay_between,
@@ -238,6 +239,11 @@ impl Track {
             read: self.read,
             airborne: self.airborne,
         })
+    }
+
+    /// Stances whose touchdown is not in the log.
+    pub fn blind(&self) -> u64 {
+        self.followers.first().map_or(0, |follower| follower.blind)
     }
 
     /// Touchdowns at which the sole's z axis pointed into the ground.

@@ -90,7 +90,7 @@ struct SoleOut<'a> {
     ground_withheld: Option<String>,
     /// Stances in order, at most 200 (s, N, m); the last one is the last of the log.
     stances: Vec<StanceOut<'a>>,
-    /// Stances that are not listed (no unit).
+    /// Stances that are not listed: beyond 200, or their numbers overflowed (no unit).
     unlisted: u64,
     /// The estimate over time, thinned out evenly (s, N/m^3, N s/m^3).
     history: HistoryOut<'a>,
@@ -214,7 +214,7 @@ struct MovedOut {
     sink_range: Number,
     /// Range in the plane (m).
     shear_range: Number,
-    /// Turn between first and last sample (rad).
+    /// Largest turn from the first sample (rad).
     turn: Number,
     /// Range of the normal force (N).
     force_range: Number,
