@@ -318,3 +318,65 @@ fn faults_of_the_clock_are_told_with_their_lines() {
     assert_eq!(lines("time-gap"), Some((1, vec![16], 0)));
     assert_eq!((report.rows, report.skipped, report.soles[0].stances.len()), (8, 2, 2));
 }
+
+/// The recorded landings through the whole path, touchdowns given and the plane known. Values are those of the batch solution
+/// of each landing (derived by an independent code); taken for one stance, without the reset between, both mix to the
+/// batch solution of all rows.
+#[test]
+fn recorded_landings_are_reset_at_touchdown() {
+    let expected: serde_json::Value = serde_json::from_str(include_str!("data/drop_log_expected.json")).unwrap();
+    let run = |stances: Vec<(f64, f64)>| {
+        let setup = Setup {
+            unknown: Unknown::default(),
+            plane: Plane { normal: Vec3::z(), point: Some(Vec3::zeros()) },
+            touchdown: Touchdown::Given(vec![stances]),
+            longest_step: 10.0,
+            ..setup(rectangle())
+        };
+        let mut session = Session::new(setup);
+        for (i, text) in include_str!("data/drop_log.csv").lines().skip(1).enumerate() {
+            let cells: Vec<f64> = text.split(',').map(|cell| cell.parse().unwrap()).collect();
+            let pose = Pose { translation: Vec3::new(0.0, 0.0, -cells[2]), ..Pose::identity() };
+            let twist = Twist { linear: Vec3::new(0.0, 0.0, -cells[3]), angular: Vec3::zeros() };
+            let wrench = Vec6::new(0.0, 0.0, cells[4], 0.0, 0.0, 0.0);
+            let sole = SoleRow { sole: 0, wrench, motion: Some((pose, Some(twist))), stands: None };
+            session.push(&Row { line: i as u64 + 2, time: cells[0] * 10.0 + cells[1], soles: vec![sole], state: None });
+        }
+        session.finish().soles.remove(0).stances
+    };
+    let compare = |stance: &underfoot::identify::report::Stance, name: &str| {
+        for (value, key) in stance.values.iter().zip(["k", "b"]) {
+            let truth = expected["results"][name][key].as_f64().unwrap();
+            assert!((value.value / truth - 1.0).abs() < 1e-9, "{name} {key}: {} {truth}", value.value);
+        }
+    };
+    let apart = run(vec![(0.0, 5.0), (10.0, 15.0)]);
+    assert_eq!(apart.len(), 2);
+    compare(&apart[0], "batch_touchdown0");
+    compare(&apart[1], "batch_touchdown1");
+    compare(&run(vec![(0.0, 15.0)])[0], "batch_all200");
+}
+
+/// Savitzky and Golay's weights for a quadratic through five points: first derivative (-2, -1, 0, 1, 2)/10, second
+/// (2, -1, -2, -1, 2)/7 (published 1964, Anal. Chem. 36:1627-1639; quoted from memory).
+#[test]
+fn twists_have_the_published_weights() {
+    use underfoot::identify::smoother::{Reading, Smoother};
+    let h = 0.01;
+    let x = [0.3, -1.2, 0.7, 2.5, -0.4];
+    let mut smoother = Smoother::new(2, true);
+    let mut out = Vec::new();
+    for (i, x) in x.into_iter().enumerate() {
+        let pose = Pose { translation: Vec3::new(x, 0.0, -2.0 * x), ..Pose::identity() };
+        out.extend(smoother.push(Reading { line: 1, time: h * i as f64, wrench: Vec6::zeros(), pose, twist: None, stands: None }));
+    }
+    // The first two come with windows of their own size as soon as two samples follow; the third has all five.
+    let third = out[2];
+    let sum = |weights: [f64; 5]| weights.iter().zip(x).map(|(w, x)| w * x).sum::<f64>();
+    let first = sum([-2.0, -1.0, 0.0, 1.0, 2.0]) / (10.0 * h);
+    let second = 2.0 * sum([2.0, -1.0, -2.0, -1.0, 2.0]) / (14.0 * h * h);
+    assert!((third.motion.twist.linear.x - first).abs() < 1e-9 * first.abs());
+    assert!((third.motion.twist.linear.z + 2.0 * first).abs() < 1e-9 * first.abs());
+    assert!((third.acceleration.x - second).abs() < 1e-9 * second.abs(), "{} {second}", third.acceleration.x);
+    assert!((third.amplification - 1.0 / (10.0 * h * h)).abs() < 1e-6);
+}

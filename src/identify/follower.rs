@@ -288,7 +288,7 @@ impl Follower {
     }
 
     fn remember(&mut self, time: f64, parameters: &[Parameter]) {
-        if (self.used - 1) % self.stride != 0 {
+        if !(self.used - 1).is_multiple_of(self.stride) {
             return;
         }
         let Some(estimate) = self.estimator.estimate() else { return };

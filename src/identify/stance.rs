@@ -132,10 +132,11 @@ fn unphysical(values: &[Value]) -> Vec<String> {
         (Parameter::TangentialStiffness, Parameter::TangentialDamping),
     ];
     for (stiffness, damping) in pairs {
-        if let (Some(k), Some(b)) = (find(stiffness), find(damping)) {
-            if k > 0.0 && b > LONGEST_RETURN * k {
-                out.push(format!("damping over stiffness is {:.1} s: such ground would not come back", b / k));
-            }
+        if let (Some(k), Some(b)) = (find(stiffness), find(damping))
+            && k > 0.0
+            && b > LONGEST_RETURN * k
+        {
+            out.push(format!("damping over stiffness is {:.1} s: such ground would not come back", b / k));
         }
     }
     out

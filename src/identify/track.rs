@@ -7,7 +7,7 @@ use super::follower::{Follower, Frame, Matched};
 use super::noise::MotionNoise;
 use super::regressor::Motion;
 use super::report::SoleReport;
-use super::setup::{Lag, Setup, SoleSetup};
+use super::setup::{Setup, SoleSetup};
 use super::smoother::{Moving, Reading, Smoother};
 use super::stance::material;
 use crate::spatial::{Pose, Twist, Vec3, exp_so3, log_so3};
@@ -115,11 +115,11 @@ impl Track {
             stands: reading.stands,
             amplification: moving.amplification,
         };
-        if let [only] = setup.lags.as_slice() {
-            if only.delay == 0.0 {
-                self.follow(setup, &[sample]);
-                return;
-            }
+        if let [only] = setup.lags.as_slice()
+            && only.delay == 0.0
+        {
+            self.follow(setup, &[sample]);
+            return;
         }
         self.motions.push_back((reading.time, motion));
         self.forces.push_back(sample);
@@ -258,9 +258,9 @@ fn best(followers: &[Follower]) -> Option<(usize, Option<f64>)> {
     let best = (0..followers.len()).min_by(|a, b| followers[*a].squares.total_cmp(&followers[*b].squares))?;
     let here = &followers[best];
     let same = |f: &&Follower| f.lag.time_constant == here.lag.time_constant && f.lag.delay != here.lag.delay;
-    let delay = |lag: &Lag| lag.delay;
-    let before = followers.iter().filter(same).filter(|f| f.lag.delay < here.lag.delay).max_by(|a, b| delay(&a.lag).total_cmp(&delay(&b.lag)));
-    let after = followers.iter().filter(same).filter(|f| f.lag.delay > here.lag.delay).min_by(|a, b| delay(&a.lag).total_cmp(&delay(&b.lag)));
+    let order = |a: &&Follower, b: &&Follower| a.lag.delay.total_cmp(&b.lag.delay);
+    let before = followers.iter().filter(same).filter(|f| f.lag.delay < here.lag.delay).max_by(order);
+    let after = followers.iter().filter(same).filter(|f| f.lag.delay > here.lag.delay).min_by(order);
     let (Some(before), Some(after)) = (before, after) else { return Some((best, None)) };
     let (x0, x1, x2) = (before.lag.delay, here.lag.delay, after.lag.delay);
     let (y0, y1, y2) = (before.squares, here.squares, after.squares);

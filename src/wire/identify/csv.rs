@@ -92,7 +92,6 @@ struct Column {
 pub(super) struct Table {
     columns: Vec<Column>,
     width: usize,
-    joints: usize,
     with_model: bool,
     time: Option<f64>,
     soles: Vec<[Option<f64>; SOLE_SLOTS]>,
@@ -158,7 +157,6 @@ impl Table {
         Ok(Table {
             columns,
             width: cells.len(),
-            joints,
             with_model: matches!(settings.setup.source, Source::Model(_)),
             time: None,
             soles: vec![[None; SOLE_SLOTS]; settings.setup.soles.len()],
@@ -237,7 +235,7 @@ impl Table {
             base_linear: three(&self.base, 7),
             base_angular: three(&self.base, 10),
             positions: all(&self.positions).filter(|_| self.with_model),
-            velocities: all(&self.velocities).filter(|_| self.with_model && (self.joints > 0 || self.with_model)),
+            velocities: all(&self.velocities).filter(|_| self.with_model),
         })
     }
 
