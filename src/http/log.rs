@@ -2,7 +2,7 @@
 
 use std::future::poll_fn;
 use std::io::{self, BufReader, Read};
-use std::pin::Pin;
+use std::pin::{Pin, pin};
 use std::sync::Arc;
 use std::time::Duration;
 
@@ -53,10 +53,17 @@ pub async fn work(
         work.log(None, &mut lines, form, cancel, &mut |_| ())
     });
     let pump = pump(body, give, shared.settings.log_limit, shared.settings.body_time);
-    let (done, sent) = tokio::join!(job, pump);
-    // What went wrong with the body explains what went wrong with the work.
-    sent?;
-    done
+    let (mut job, pump) = (pin!(job), pin!(pump));
+    // Work that ends early, for instance on settings that cannot be used, does not wait for the rest of the body. A body that
+    // goes wrong explains what goes wrong with the work, which is then called off.
+    tokio::select! {
+        biased;
+        done = job.as_mut() => done,
+        sent = pump => match sent {
+            Ok(()) => job.await,
+            Err(problem) => Err(problem),
+        },
+    }
 }
 
 /// Hands the body on, piece by piece, until it ends or nobody reads on.

@@ -47,6 +47,8 @@ pub struct Estimator {
     /// The first so many parameters belong to the ground; a reset forgets them alone.
     ground: usize,
     root: SquareRoot,
+    /// What was known before the first row, as it stands in W: of the ground the prior, of the sensor what earlier stances left.
+    carried: DMatrix<f64>,
     /// `sum lambda^2(n-i) h' h` per group, upper triangles.
     meat: [DMatrix<f64>; GROUPS],
     /// What is left of the prior's weight: product of all lambda.
@@ -83,6 +85,7 @@ impl Estimator {
         Estimator {
             ground: ground.min(n),
             root,
+            carried: prior_information(&prior),
             meat: [DMatrix::zeros(n, n), DMatrix::zeros(n, n)],
             faded: 1.0,
             squares: [0.0; GROUPS],
@@ -175,33 +178,34 @@ impl Estimator {
         let (mean, deviation) = (unit(mean), unit(&self.prior.deviation));
         if self.ground == n {
             self.root = SquareRoot::prior(&mean, &deviation);
-            self.meat = [DMatrix::zeros(n, n), DMatrix::zeros(n, n)];
-            self.faded = 1.0;
+            self.carried = prior_information(&self.prior);
         } else {
             self.carry_over(&mean, &deviation);
         }
+        self.meat = [DMatrix::zeros(n, n), DMatrix::zeros(n, n)];
+        self.faded = 1.0;
         self.squares = [0.0; GROUPS];
         self.weight = [0.0; GROUPS];
     }
 
-    /// A reset that keeps the sensor's parameters: their covariance so far becomes their prior, and stands in W as such. The
-    /// prior of the ground fades from here on.
+    /// A reset that keeps the sensor's parameters: their covariance so far stands in W from here on, and what is known of them
+    /// whatever the ground is stays in R.
     fn carry_over(&mut self, mean: &[f64], deviation: &[f64]) {
-        let n = self.scaled.len();
+        let (n, ground) = (self.scaled.len(), self.ground);
         let estimate = self.estimate();
-        self.root.renew(self.ground, mean, deviation);
-        self.faded = 1.0;
-        self.meat = [DMatrix::zeros(n, n), DMatrix::zeros(n, n)];
+        self.root.renew(ground, mean, deviation);
+        self.carried = prior_information(&self.prior);
         let Some(estimate) = estimate else { return };
-        // W restricted to the sensor's parameters such that P W P is their covariance.
-        let sensor = n - self.ground;
-        let corner = self.root.triangle().view((self.ground, self.ground), (sensor, sensor)).into_owned();
+        let sensor = n - ground;
+        let corner = self.root.triangle().view((ground, ground), (sensor, sensor)).into_owned();
         let information = corner.transpose() * &corner;
-        let scale = DMatrix::from_diagonal(&DVector::from_iterator(sensor, self.prior.scale[self.ground..].iter().map(|s| 1.0 / s)));
-        let covariance = estimate.covariance.view((self.ground, self.ground), (sensor, sensor)).into_owned();
-        let kept = &information * &scale * covariance * &scale * &information;
-        let noise = estimate.noise[0].unwrap_or(1.0).powi(2).max(f64::MIN_POSITIVE);
-        self.meat[0].view_mut((self.ground, self.ground), (sensor, sensor)).copy_from(&(kept / noise));
+        let unit = DMatrix::from_fn(sensor, sensor, |i, k| {
+            let scale = self.prior.scale[ground + i] * self.prior.scale[ground + k];
+            estimate.covariance[(ground + i, ground + k)] / scale
+        });
+        // W such that P W P is that covariance.
+        let kept = &information * unit * &information;
+        self.carried.view_mut((ground, ground), (sensor, sensor)).copy_from(&kept);
     }
 
     /// Parameters, physical units; none where R is singular.
@@ -216,12 +220,7 @@ impl Estimator {
         let n = self.scaled.len();
         let value = self.value()?;
         let memory = self.root.covariance()?;
-        let mut middle = DMatrix::zeros(n, n);
-        for i in 0..n {
-            let weight = self.faded * self.prior.scale[i] / self.prior.deviation[i];
-            // A sensor parameter's first prior stays in R; it is counted in W once as well.
-            middle[(i, i)] = weight * weight;
-        }
+        let mut middle = &self.carried * (self.faded * self.faded);
         let mut noise = [None; GROUPS];
         for group in 0..GROUPS {
             let meat = symmetric(&self.meat[group]);
@@ -257,6 +256,12 @@ impl Estimator {
     pub fn squares(&self) -> f64 {
         self.squares.iter().sum()
     }
+}
+
+/// `P0^-1` in units of the scale.
+fn prior_information(prior: &Prior) -> DMatrix<f64> {
+    let squares = prior.scale.iter().zip(&prior.deviation).map(|(scale, deviation)| (scale / deviation).powi(2));
+    DMatrix::from_diagonal(&DVector::from_iterator(prior.scale.len(), squares))
 }
 
 /// The full matrix of an upper triangle.

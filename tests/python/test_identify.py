@@ -257,6 +257,34 @@ def test_base_and_joint_states_give_what_sole_poses_give(client):
         assert second.value == pytest.approx(first.value, rel=1e-6)
 
 
+def test_a_point_foot_and_a_logged_touchdown(client):
+    """Force alone, k and b per sole; the log says when the foot stands. Beside numpy's batch solution of the same rows."""
+    rng = np.random.default_rng(17)
+    k, b, list_, rows, y = 4e4, 400.0, [], [], []
+    for i in range(400):
+        t = 0.005 * (i - 50)
+        stands = t >= 0.0
+        sway = np.array([0.001 * np.sin(5 * t), 0.0005 * np.sin(7 * t), -0.006 * (1 - np.cos(12 * t)) / 2]) * stands
+        speed = np.array([0.005 * np.cos(5 * t), 0.0035 * np.cos(7 * t), -0.036 * np.sin(12 * t)]) * stands
+        force = (-k * sway - b * speed) * stands + rng.standard_normal(3)
+        list_.append({"time": t, "soles": [{
+            "sole": "toe", "force": list(force), "position": list(sway + [1.0, 2.0, 0.1]), "linear_velocity": list(speed), "stands": bool(stands),
+        }]})
+        if stands:
+            rows.append(np.stack([-sway, -speed], 1))
+            y.append(force)
+    settings = {
+        "soles": [{"name": "toe", "kind": "point"}], "touchdown": {"kind": "logged"}, "ground": {"point": [0, 0, 0.1]}, "unknown": [],
+    }
+    answer = client.identify(settings, list_)
+    stance = answer.soles[0].stances[0]
+    expected = np.linalg.lstsq(np.concatenate(rows), np.concatenate(y), rcond=None)[0]
+    assert [p.unit for p in stance.parameters] == ["N/m", "N s/m"]
+    assert [p.value for p in stance.parameters] == pytest.approx(list(expected), rel=1e-7)
+    assert answer.soles[0].ground["law"]["per"] == "sole" and answer.soles[0].area is None
+    assert abs(stance.parameters[0].value - k) < 4 * stance.parameters[0].deviation
+
+
 def test_scale_and_bias_of_a_sensor(client):
     """A sensor that reads 10 % too much and 15 N too much sideways; the ground plane is known."""
     rows = log(13, 0.004, 1.5, (1.0, 0.05), PATCHES[:1])
@@ -310,6 +338,16 @@ def test_a_log_that_breaks_off_is_no_answer(address):
         assert not reply.startswith(b"HTTP/1.1 200"), reply[:200]
     with underfoot.Client(address) as fresh:
         assert fresh.health()["status"] == "ok"
+
+
+def test_settings_are_judged_before_the_log_has_come(address):
+    """A client that sends the settings and waits hears what is wrong with them."""
+    host, port = address.split("//")[1].split(":")
+    first = b'{"format":"underfoot/1","soles":[]}\n'
+    with socket.create_connection((host, int(port)), timeout=5.0) as peer:
+        peer.sendall(b"POST /v1/identify HTTP/1.1\r\nHost: localhost\r\nContent-Type: text/csv\r\nTransfer-Encoding: chunked\r\n\r\n")
+        peer.sendall(b"%x\r\n%s\r\n" % (len(first), first))
+        assert peer.recv(65536).startswith(b"HTTP/1.1 422")
 
 
 def test_memory_does_not_grow_with_the_log(tmp_path):
