@@ -6,11 +6,11 @@ use sha2::{Digest, Sha256};
 
 use super::csv::Table;
 use super::samples::{SampleBody, shortened};
-use super::settings::{IdentifyRequest, Settings};
+use super::settings::{Head, Settings};
 use crate::identify::{Row, Session};
 use crate::wire::refusal::Refusal;
 use crate::wire::second::Document;
-use crate::wire::{MAX_BODY, ModelSource, canonical, hexadecimal, strict, typed};
+use crate::wire::{MAX_BODY, ModelSource, canonical, hexadecimal, read, strict};
 
 /// Longest line of a log (bytes).
 pub const MAX_LINE: usize = 256 * 1024;
@@ -50,13 +50,13 @@ impl<R: BufRead> LogReader<R> {
                 &buffer
             }
         };
-        let request: IdentifyRequest = typed(settings, Document::Identify)?;
+        let text = settings;
+        let settings = read::<Head>(text, Document::Identify, models)?;
         let mut hash = Sha256::new();
         hash.update(env!("CARGO_PKG_VERSION").as_bytes());
         hash.update([0]);
-        hash.update(canonical(settings).unwrap_or_default().as_bytes());
+        hash.update(canonical(text).unwrap_or_default().as_bytes());
         hash.update([0]);
-        let settings = request.read(models, true)?;
         let mut session = Session::new(settings.setup.clone());
         let mut reader = LogReader { lines, settings, table: None, line, buffer: Vec::new(), hash };
         if form == LogForm::Csv {

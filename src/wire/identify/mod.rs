@@ -13,9 +13,10 @@ pub use answer::write as write_identify;
 pub use log::{LogForm, LogReader, MAX_LINE};
 pub(super) use settings::{IdentifyRequest, TOUCHDOWN_KINDS};
 
+use super::gate::Gate;
 use super::refusal::Refusal;
 use super::second::Document;
-use super::{ModelSource, typed};
+use super::{ModelSource, Request, read};
 use crate::identify::Session;
 
 /// Reads the body of `POST /v1/identify` where it is one JSON document, and takes its samples in; what counts as a line in
@@ -24,14 +25,21 @@ use crate::identify::Session;
 /// # Errors
 /// [`Refusal`] with every fault that was found; 404 where the model's id is not known.
 pub fn read_identify(body: &[u8], models: &dyn ModelSource) -> Result<Session, Refusal> {
-    let mut request: IdentifyRequest = typed(body, Document::Identify)?;
-    let settings = request.read(models, false)?;
-    let mut session = Session::new(settings.setup.clone());
-    for (i, sample) in request.samples.take().unwrap_or_default().into_iter().enumerate() {
-        let line = i as u64 + 1;
-        let figures = sample.figures(&settings, line, &mut session.remarks);
-        let row = figures.row(&settings, line, &mut session.remarks);
-        log::take(row, &mut session);
+    read::<IdentifyRequest>(body, Document::Identify, models)
+}
+
+impl Request for IdentifyRequest {
+    type Question = Session;
+
+    fn read(mut self, gate: Gate, models: &dyn ModelSource) -> Result<Session, Refusal> {
+        let settings = self.settings(gate, models, false)?;
+        let mut session = Session::new(settings.setup.clone());
+        for (i, sample) in self.samples.take().unwrap_or_default().into_iter().enumerate() {
+            let line = i as u64 + 1;
+            let figures = sample.figures(&settings, line, &mut session.remarks);
+            let row = figures.row(&settings, line, &mut session.remarks);
+            log::take(row, &mut session);
+        }
+        Ok(session)
     }
-    Ok(session)
 }

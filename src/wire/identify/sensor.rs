@@ -43,7 +43,8 @@ pub(super) struct SensorBody {
     /// Orientation of the sensor in the sole frame, quaternion [x, y, z, w] of unit length within 1e-6 (no unit); that of the
     /// sole when left out.
     orientation: Option<[f64; 4]>,
-    /// Mass between sensor and ground, 0 or more (kg); zero when left out. Its weight and inertia are taken off.
+    /// Mass between sensor and ground, 0 to 10000 (kg); zero when left out. Its weight and inertia are taken off.
+    #[schemars(extend("minimum" = 0.0, "maximum" = HEAVIEST))]
     mass_below: Option<f64>,
     /// Centre of that mass in the sole frame [x, y, z] (m); zero when left out.
     center_below: Option<[f64; 3]>,

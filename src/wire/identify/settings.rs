@@ -15,7 +15,7 @@ use crate::identify::smoother::MOST_HALF;
 use crate::model::Model;
 use crate::spatial::Vec3;
 use crate::spatial::polygon::{Polygon, SoleShape};
-use crate::wire::ModelSource;
+use crate::wire::{ModelSource, Request};
 use crate::wire::common::{Format, TextOr, Whole};
 use crate::wire::gate::{At, Gate, listed, quoted};
 use crate::wire::kinds::{KindRule, KindTable, given};
@@ -63,6 +63,7 @@ pub(in crate::wire) struct IdentifyRequest {
     /// In which axes base velocities are logged (m/s, rad/s); world when left out.
     velocity_axes: Option<VelocityAxesBody>,
     /// Soles with a wrench sensor, 1 to 8 (m, N, N m).
+    #[schemars(extend("minItems" = 1, "maxItems" = MAX_SOLES))]
     soles: Vec<SoleBody>,
     /// `isotropic` (default): one stiffness and one damping. `split`: normal and tangential ones (no unit).
     directions: Option<DirectionsWord>,
@@ -81,6 +82,7 @@ pub(in crate::wire) struct IdentifyRequest {
     /// Gravitational acceleration [x, y, z], world axes (m/s^2); [0, 0, -9.80665] when left out.
     gravity: Option<[f64; 3]>,
     /// Weight of the robot, more than 0 (N): the model's when left out and there is one. Forces far from it are remarked on.
+    #[schemars(extend("exclusiveMinimum" = 0.0))]
     weight: Option<f64>,
     /// True: estimate the scale of the force readings from the weight and divide by it (no unit); every loaded sole must be in
     /// the log. False when left out.
@@ -88,8 +90,10 @@ pub(in crate::wire) struct IdentifyRequest {
     /// Time between motion and force (s); none when left out.
     lag: Option<LagBody>,
     /// Half width of the local polynomial for twists that are not logged, 1 to 100 samples (no unit); 5 when left out.
+    #[schemars(extend("minimum" = 1, "maximum" = MOST_HALF))]
     half_window: Option<Whole>,
     /// A longer time between samples is a gap, more than 0 (s); 0.1 when left out.
+    #[schemars(extend("exclusiveMinimum" = 0.0))]
     longest_step: Option<f64>,
     /// Noise of the logged motion (m, rad, m/s, rad/s), for its bias; estimated from the log when left out.
     motion_noise: Option<MotionNoiseBody>,
@@ -97,6 +101,7 @@ pub(in crate::wire) struct IdentifyRequest {
     /// warns. False when left out.
     still_feet: Option<bool>,
     /// CSV: columns that have other names in the log (no unit), at most 500.
+    #[schemars(extend("maxItems" = MAX_MAPPING))]
     mapping: Option<Vec<MappingBody>>,
     /// Samples in order of time (s, m, N, N m); left out where they follow as lines.
     pub(super) samples: Option<Vec<SampleBody>>,
@@ -113,6 +118,7 @@ struct SoleBody {
     kind: Option<SoleWord>,
     /// Vertices [x, y] in the sole frame (m), 3 to 64, strictly convex, counter-clockwise seen from +z. Not for a point, and
     /// not with a model.
+    #[schemars(extend("minItems" = 3, "maxItems" = MAX_VERTICES))]
     vertices: Option<Vec<[f64; 2]>>,
     /// Its wrench sensor (m, kg, N, N m); one at the sole origin in sole axes, with nothing below it, when left out.
     sensor: Option<SensorBody>,
@@ -151,10 +157,13 @@ enum UnknownWord {
 #[schemars(rename = "Guess")]
 struct GuessBody {
     /// Stiffness, more than 0 (N/m^3; N/m on point soles).
+    #[schemars(extend("exclusiveMinimum" = 0.0))]
     stiffness: f64,
     /// Damping, more than 0 (N s/m^3; N s/m on point soles).
+    #[schemars(extend("exclusiveMinimum" = 0.0))]
     damping: f64,
     /// Standard deviation of both over their size, more than 0 (no unit); 1000 when left out, so that the guess is a size only.
+    #[schemars(extend("exclusiveMinimum" = 0.0))]
     relative_deviation: Option<f64>,
 }
 
@@ -164,8 +173,10 @@ struct GuessBody {
 #[schemars(rename = "Forgetting")]
 struct ForgettingBody {
     /// Weight that is left after one more sample, 0.5 to 1 (no unit).
+    #[schemars(extend("minimum" = 0.5, "maximum" = 1.0))]
     factor: Option<f64>,
     /// Time after which a weight of 1/e is left, more than 0 (s).
+    #[schemars(extend("exclusiveMinimum" = 0.0))]
     time_constant: Option<f64>,
 }
 
@@ -198,10 +209,12 @@ struct TouchdownBody {
     kind: TouchdownWord,
     /// For `force`: a stance begins above this normal force, more than 0 (N); a tenth of the weight when left out, 30 N where
     /// that is unknown.
+    #[schemars(extend("exclusiveMinimum" = 0.0))]
     on: Option<f64>,
     /// For `force`: it ends below this one, not above `on` (N); half of `on` when left out.
     off: Option<f64>,
     /// For `given`: stances in order of time, at most 200 (s).
+    #[schemars(extend("maxItems" = MAX_STANCES))]
     stances: Option<Vec<GivenBody>>,
 }
 
@@ -247,12 +260,16 @@ struct LagBody {
 #[schemars(rename = "MotionNoise")]
 struct MotionNoiseBody {
     /// Position, 0 or more (m).
+    #[schemars(extend("minimum" = 0.0))]
     position: f64,
     /// Rotation, 0 or more (rad).
+    #[schemars(extend("minimum" = 0.0))]
     rotation: f64,
     /// Linear velocity, 0 or more (m/s); not used where twists are found from poses.
+    #[schemars(extend("minimum" = 0.0))]
     linear_velocity: f64,
     /// Angular velocity, 0 or more (rad/s); not used where twists are found from poses.
+    #[schemars(extend("minimum" = 0.0))]
     angular_velocity: f64,
 }
 
@@ -280,17 +297,35 @@ pub(in crate::wire) struct Settings {
     pub(super) mapping: Vec<(String, String)>,
 }
 
+/// An identification request whose samples follow as lines.
+#[derive(Debug, Clone, Deserialize)]
+#[serde(transparent)]
+pub(super) struct Head(IdentifyRequest);
+
+impl Request for Head {
+    type Question = Settings;
+
+    fn read(self, gate: Gate, models: &dyn ModelSource) -> Result<Settings, Refusal> {
+        self.0.settings(gate, models, true)
+    }
+}
+
 impl IdentifyRequest {
     /// The settings. `lines`: samples follow as lines, so that none may stand here.
-    pub(super) fn read(&self, models: &dyn ModelSource, lines: bool) -> Result<Settings, Refusal> {
-        let model = self.model.as_ref().map(|model| find(model, models)).transpose()?;
-        let mut gate = Gate::default();
+    pub(super) fn settings(&self, mut gate: Gate, models: &dyn ModelSource, lines: bool) -> Result<Settings, Refusal> {
         let at = At::ROOT;
         match (&self.samples, lines) {
             (None, false) => gate.missing(at.name("samples"), "samples"),
             (Some(_), true) => gate.fault(at.name("samples"), "no samples: they follow as lines", "some"),
             _ => {}
         }
+        let model = match &self.model {
+            None => None,
+            Some(model) => match find(&mut gate, model, models)? {
+                Some(model) => Some(model),
+                None => return Err(gate.refuse()),
+            },
+        };
         let setup = self.setup(&mut gate, at, model.as_ref());
         let joints = self.joint_order(&mut gate, at.name("joints"), model.as_deref());
         let axes = self.velocity_axes.unwrap_or_default().axes();
