@@ -7,11 +7,13 @@ mod log;
 mod samples;
 mod sensor;
 mod settings;
+mod touchdown;
 
 pub(super) use answer::IdentifyAnswerOut;
 pub use answer::write as write_identify;
 pub use log::{LogForm, LogReader, MAX_LINE};
-pub(super) use settings::{IdentifyRequest, TOUCHDOWN_KINDS};
+pub(super) use settings::IdentifyRequest;
+pub(super) use touchdown::TOUCHDOWN_KINDS;
 
 use super::gate::Gate;
 use super::refusal::Refusal;

@@ -7,9 +7,10 @@ use serde::Deserialize;
 
 use super::samples::SampleBody;
 use super::sensor::SensorBody;
+use super::touchdown::{self, TouchdownBody};
 use crate::dynamics::VelocityAxes;
 use crate::identify::setup::{
-    Directions, Forgetting, Guess, Lag, Plane, Setup, SoleSetup, Source, Touchdown, Unknown,
+    Directions, Forgetting, Guess, Lag, Plane, Setup, SoleSetup, Source, Unknown,
 };
 use crate::identify::smoother::MOST_HALF;
 use crate::model::Model;
@@ -18,7 +19,6 @@ use crate::spatial::polygon::{Polygon, SoleShape};
 use crate::wire::{ModelSource, Request};
 use crate::wire::common::{Format, TextOr, Whole};
 use crate::wire::gate::{At, Gate, listed, quoted};
-use crate::wire::kinds::{KindRule, KindTable, given};
 use crate::wire::model::InlineModel;
 use crate::wire::refusal::Refusal;
 use crate::wire::solve::find;
@@ -33,15 +33,8 @@ const MAX_VERTICES: usize = 64;
 const MAX_MAPPING: usize = 500;
 /// Lags tried side by side.
 const MAX_LAGS: usize = 40;
-/// Stances given.
-const MAX_STANCES: usize = 200;
 /// Longest lag (s).
 const LONGEST_LAG: f64 = 1.0;
-/// Default thresholds over the weight, and without one (N).
-const ON_SHARE: f64 = 0.1;
-const ON_USUAL: f64 = 30.0;
-/// Lift-off over touchdown threshold, where it is not given.
-const OFF_OVER_ON: f64 = 0.5;
 /// A longer step counts as a gap unless told otherwise (s).
 const LONGEST_STEP: f64 = 0.1;
 const GRAVITY: [f64; 3] = [0.0, 0.0, -9.80665];
@@ -180,57 +173,6 @@ struct ForgettingBody {
     time_constant: Option<f64>,
 }
 
-#[derive(Debug, Clone, Copy, PartialEq, Deserialize, JsonSchema)]
-#[serde(rename_all = "snake_case")]
-#[schemars(inline)]
-enum TouchdownWord {
-    Force,
-    Logged,
-    Given,
-}
-
-/// Which members go with which kind of touchdown.
-pub(in crate::wire) const TOUCHDOWN_KINDS: KindTable = KindTable {
-    definition: "Touchdown",
-    rules: &[
-        KindRule { kind: "force", needs: &[], may: &["on", "off"] },
-        KindRule { kind: "logged", needs: &[], may: &[] },
-        KindRule { kind: "given", needs: &["stances"], may: &[] },
-    ],
-};
-
-/// How touchdowns are told. `force`: by the normal force, with hysteresis. `logged`: samples say `stands`. `given`: stances are
-/// listed.
-#[derive(Debug, Clone, Deserialize, JsonSchema)]
-#[serde(deny_unknown_fields)]
-#[schemars(rename = "Touchdown")]
-struct TouchdownBody {
-    /// `force`, `logged` or `given` (no unit).
-    kind: TouchdownWord,
-    /// For `force`: a stance begins above this normal force, more than 0 (N); a tenth of the weight when left out, 30 N where
-    /// that is unknown.
-    #[schemars(extend("exclusiveMinimum" = 0.0))]
-    on: Option<f64>,
-    /// For `force`: it ends below this one, not above `on` (N); half of `on` when left out.
-    off: Option<f64>,
-    /// For `given`: stances in order of time, at most 200 (s).
-    #[schemars(extend("maxItems" = MAX_STANCES))]
-    stances: Option<Vec<GivenBody>>,
-}
-
-/// A stance.
-#[derive(Debug, Clone, Deserialize, JsonSchema)]
-#[serde(deny_unknown_fields)]
-#[schemars(rename = "GivenStance")]
-struct GivenBody {
-    /// Name of the sole (no unit).
-    sole: String,
-    /// Time of the touchdown (s).
-    begin: f64,
-    /// Last time of the stance (s), not before its begin.
-    end: f64,
-}
-
 /// The ground plane.
 #[derive(Debug, Clone, Copy, Default, Deserialize, JsonSchema)]
 #[serde(deny_unknown_fields)]
@@ -361,7 +303,7 @@ impl IdentifyRequest {
             unknown,
             guess: self.guess.map(|guess| guess.read(gate, at.name("guess"))),
             forgetting: self.forgetting.map_or(Forgetting::None, |f| f.read(gate, at.name("forgetting"))),
-            touchdown: self.touchdown(gate, at.name("touchdown"), weight, &soles),
+            touchdown: touchdown::read(self.touchdown.as_ref(), gate, at.name("touchdown"), weight, &soles),
             plane,
             gravity,
             lags: self.lag.clone().unwrap_or_default().read(gate, at.name("lag")),
@@ -423,31 +365,6 @@ impl IdentifyRequest {
         half
     }
 
-    fn touchdown(&self, gate: &mut Gate, at: At<'_>, weight: Option<f64>, soles: &[SoleSetup]) -> Touchdown {
-        let usual = weight.map_or(ON_USUAL, |weight| weight * ON_SHARE);
-        let Some(body) = &self.touchdown else {
-            return Touchdown::Force { on: usual, off: usual * OFF_OVER_ON };
-        };
-        let kind = match body.kind {
-            TouchdownWord::Force => "force",
-            TouchdownWord::Logged => "logged",
-            TouchdownWord::Given => "given",
-        };
-        TOUCHDOWN_KINDS.check(gate, at, kind, &given!(body, on, off, stances));
-        match body.kind {
-            TouchdownWord::Logged => Touchdown::Logged,
-            TouchdownWord::Force => {
-                let on = body.on.map_or(usual, |on| positive(gate, at.name("on"), on, "N"));
-                let off = body.off.unwrap_or(on * OFF_OVER_ON);
-                Touchdown::Force { on, off: gate.within(at.name("off"), off, -on.abs(), on, "N") }
-            }
-            TouchdownWord::Given => {
-                let stances = body.stances.as_deref().unwrap_or_default();
-                Touchdown::Given(given_stances(gate, at.name("stances"), stances, soles))
-            }
-        }
-    }
-
     fn joint_order(&self, gate: &mut Gate, at: At<'_>, model: Option<&Model>) -> Vec<usize> {
         match (&self.joints, model) {
             (None, None) => Vec::new(),
@@ -469,30 +386,6 @@ impl IdentifyRequest {
             }
         }
     }
-}
-
-/// Stances per sole, in order and apart.
-fn given_stances(gate: &mut Gate, at: At<'_>, bodies: &[GivenBody], soles: &[SoleSetup]) -> Vec<Vec<(f64, f64)>> {
-    let mut out: Vec<Vec<(f64, f64)>> = vec![Vec::new(); soles.len()];
-    if !gate.at_most(at, bodies.len(), MAX_STANCES, "stances") {
-        return out;
-    }
-    for (i, body) in bodies.iter().enumerate() {
-        let here = at.index(i);
-        let Some(sole) = soles.iter().position(|sole| sole.name == body.sole) else {
-            let known = listed(soles.iter().map(|sole| sole.name.as_str()));
-            gate.fault(here.name("sole"), format!("the name of a sole: {known}"), quoted(&body.sole));
-            continue;
-        };
-        if body.end < body.begin {
-            gate.fault(here.name("end"), "a time not before the begin", body.end.to_string());
-        }
-        if out[sole].last().is_some_and(|last| body.begin <= last.1) {
-            gate.fault(here.name("begin"), "a time after the stance before", body.begin.to_string());
-        }
-        out[sole].push((body.begin, body.end));
-    }
-    out
 }
 
 /// The value, noted as a fault unless it is above zero.
