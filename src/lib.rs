@@ -8,6 +8,7 @@ pub mod conic;
 pub mod model;
 pub mod dynamics;
 pub mod contact;
+pub mod identify;
 pub mod problem;
 pub mod solve;
 pub mod certify;

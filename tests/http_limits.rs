@@ -72,6 +72,20 @@ impl Work for Injected {
         Err(Refusal::new(404, "unknown-path", "No batches here", "this work answers single requests"))
     }
 
+    fn log(
+        &self,
+        _: Option<&[u8]>,
+        log: &mut dyn std::io::BufRead,
+        _: underfoot::wire::LogForm,
+        cancel: &Arc<AtomicBool>,
+        _: &mut dyn FnMut(u64),
+    ) -> Result<Document, Refusal> {
+        let mut body = Vec::new();
+        let read = std::io::Read::read_to_end(log, &mut body);
+        read.map_err(|error| Refusal::new(400, "broken", "Broken", error.to_string()))?;
+        self.run(Errand::Identify, &body, cancel)
+    }
+
     fn model(&self, _: &str) -> Option<Vec<u8>> {
         None
     }

@@ -5,8 +5,8 @@ mod wire_common;
 
 use proptest::prelude::*;
 use serde_json::{Value, json};
-use underfoot::wire::{Refusal, read_dynamics, read_model, read_solve, schema};
-use wire_common::{Nothing, bytes, dynamics_request, model_request, solve_request};
+use underfoot::wire::{Refusal, read_dynamics, read_identify, read_model, read_solve, schema};
+use wire_common::{Nothing, bytes, dynamics_request, identify_request, model_request, solve_request};
 
 /// Every place in a value.
 fn places(value: &Value, here: String, out: &mut Vec<String>) {
@@ -151,6 +151,9 @@ proptest! {
         let mut request = dynamics_request();
         damages.iter().for_each(|damage| apply(&mut request, damage));
         agree("dynamics-request", &request, read_dynamics(&bytes(&request), &Nothing).map(|_| ()))?;
+        let mut request = identify_request();
+        damages.iter().for_each(|damage| apply(&mut request, damage));
+        agree("identify-request", &request, read_identify(&bytes(&request), &Nothing).map(|_| ()))?;
     }
 
     /// Whatever the bytes, the gate answers with one of its statuses.

@@ -8,8 +8,8 @@ use std::path::PathBuf;
 use serde_json::{Value, json};
 use underfoot::dynamics::{Workspace, frame_pose};
 use underfoot::spatial::Vec3;
-use underfoot::wire::{openapi, read_dynamics, read_model, read_solve, schema, schema_names};
-use wire_common::{Nothing, bytes, dynamics_request, model_request, solve_request};
+use underfoot::wire::{openapi, read_dynamics, read_identify, read_model, read_solve, schema, schema_names};
+use wire_common::{Nothing, bytes, dynamics_request, identify_request, model_request, solve_request};
 
 const BIPED: &str = include_str!("../src/cli/demo/biped.urdf");
 const GRAVITY: f64 = 9.80665;
@@ -200,6 +200,7 @@ fn requests_follow_their_schemas() {
     let requests = [
         ("solve-request", solve_request()), ("solve-request", example()),
         ("dynamics-request", dynamics_request()), ("model-request", model_request()),
+        ("identify-request", identify_request()),
     ];
     for (name, request) in requests {
         let schema: Value = serde_json::from_str(&schema(name).expect("a schema")).expect("JSON");
@@ -209,6 +210,7 @@ fn requests_follow_their_schemas() {
         assert!(errors.is_empty(), "{name}: {errors:?}");
     }
     assert!(read_model(&bytes(&model_request())).is_ok());
+    assert!(read_identify(&bytes(&identify_request()), &Nothing).is_ok_and(|session| session.rows() == 2));
 }
 
 /// Every member of every document says its unit: a unit in parentheses, or that there is none.

@@ -8,6 +8,7 @@ mod demo;
 mod dynamics;
 mod export;
 mod files;
+mod identify;
 mod log;
 mod report;
 mod schemas;
@@ -44,6 +45,8 @@ enum Command {
     Compare(compare::Compare),
     /// The assembled problem as Matrix Market files; prints what POST /v1/export answers, or writes the files.
     Export(export::Export),
+    /// Stiffness and damping of the ground from a log; prints what POST /v1/identify answers.
+    Identify(identify::Identify),
     /// List the JSON Schemas, or print one.
     Schemas(schemas::Schemas),
     /// Show the whole path on a built-in scenario, through a real service.
@@ -80,6 +83,7 @@ pub fn main() -> ExitCode {
         Command::Batch(command) => command.run(),
         Command::Export(command) => command.run(),
         Command::Compare(command) => command.run(),
+        Command::Identify(command) => command.run(),
         Command::Schemas(command) => command.run(),
         Command::Demo(command) => command.run(),
     }

@@ -5,8 +5,9 @@ use crate::model::{Body, Model, State};
 use crate::spatial::{Mat3, Pose, Twist, Vec3};
 
 impl Workspace {
-    /// Fills pose, twist, bias acceleration and world-axes mass properties of every body.
-    pub(super) fn update_kinematics(&mut self, model: &Model, state: &State) {
+    /// Fills pose, twist, bias acceleration and world-axes mass properties of every body, and nothing else: what
+    /// frames need. Allocates nothing.
+    pub fn update_kinematics(&mut self, model: &Model, state: &State) {
         let twist = if self.floating { state.base_twist } else { Twist::zero() };
         for (i, body) in model.bodies.iter().enumerate() {
             let (done, rest) = self.bodies.split_at_mut(i);

@@ -3,6 +3,7 @@
 use std::future::poll_fn;
 use std::pin::Pin;
 use std::sync::Arc;
+use std::time::Duration;
 
 use axum::body::{Body, Bytes, HttpBody};
 use axum::extract::{FromRequest, Request};
@@ -21,16 +22,11 @@ impl FromRequest<Arc<Shared>> for JsonBytes {
     async fn from_request(request: Request, shared: &Arc<Shared>) -> Result<Self, Problem> {
         check_type(request.headers(), "application/json")?;
         let limit = shared.settings.body_limit;
-        check_length(request.headers(), limit)?;
+        check_length(request.headers(), limit as u64)?;
         let reading = read(request.into_body(), limit);
         match tokio::time::timeout(shared.settings.body_time, reading).await {
             Ok(result) => result.map(JsonBytes),
-            Err(_) => Err(Problem::new(
-                StatusCode::REQUEST_TIMEOUT,
-                "slow-body",
-                "Body came too slowly",
-                format!("the body must arrive within {} s", shared.settings.body_time.as_secs_f64()),
-            )),
+            Err(_) => Err(too_slow("the body", shared.settings.body_time)),
         }
     }
 }
@@ -40,12 +36,7 @@ impl FromRequest<Arc<Shared>> for JsonBytes {
 /// # Errors
 /// 415 unless the one Content-Type is `wanted` and nothing is encoded.
 pub fn check_type(headers: &HeaderMap, wanted: &str) -> Result<(), Problem> {
-    let mut given = headers.get_all(header::CONTENT_TYPE).iter();
-    let good = match (given.next(), given.next()) {
-        (Some(value), None) => value.to_str().is_ok_and(|value| is(value, wanted)),
-        _ => false,
-    };
-    if !good {
+    if !media_type(headers).is_some_and(|value| is(value, wanted)) {
         return Err(Problem::new(
             StatusCode::UNSUPPORTED_MEDIA_TYPE,
             "not-json",
@@ -53,6 +44,20 @@ pub fn check_type(headers: &HeaderMap, wanted: &str) -> Result<(), Problem> {
             format!("send one Content-Type header with {wanted}"),
         ));
     }
+    check_encoding(headers)
+}
+
+/// The one Content-Type header, if there is just one.
+pub(super) fn media_type(headers: &HeaderMap) -> Option<&str> {
+    let mut given = headers.get_all(header::CONTENT_TYPE).iter();
+    match (given.next(), given.next()) {
+        (Some(value), None) => value.to_str().ok(),
+        _ => None,
+    }
+}
+
+/// Compressed bodies are not taken.
+pub(super) fn check_encoding(headers: &HeaderMap) -> Result<(), Problem> {
     let encoded = headers.get_all(header::CONTENT_ENCODING).iter().any(|value| value != "identity");
     if encoded {
         return Err(Problem::new(
@@ -71,13 +76,13 @@ fn is(value: &str, wanted: &str) -> bool {
 }
 
 /// Refuses by the announced length, before a byte of the body is read.
-fn check_length(headers: &HeaderMap, limit: usize) -> Result<(), Problem> {
+pub(super) fn check_length(headers: &HeaderMap, limit: u64) -> Result<(), Problem> {
     let announced = headers
         .get(header::CONTENT_LENGTH)
         .and_then(|value| value.to_str().ok())
         .and_then(|text| text.parse::<u64>().ok());
     match announced {
-        Some(length) if length > limit as u64 => Err(too_large(limit)),
+        Some(length) if length > limit => Err(too_large(limit)),
         _ => Ok(()),
     }
 }
@@ -89,7 +94,7 @@ async fn read(mut body: Body, limit: usize) -> Result<Bytes, Problem> {
         let frame = frame.map_err(|_| broken())?;
         if let Ok(data) = frame.into_data() {
             if data.len() > limit - bytes.len() {
-                return Err(too_large(limit));
+                return Err(too_large(limit as u64));
             }
             bytes.extend_from_slice(&data);
         }
@@ -97,7 +102,7 @@ async fn read(mut body: Body, limit: usize) -> Result<Bytes, Problem> {
     Ok(Bytes::from(bytes))
 }
 
-fn too_large(limit: usize) -> Problem {
+pub(super) fn too_large(limit: u64) -> Problem {
     Problem::new(
         StatusCode::PAYLOAD_TOO_LARGE,
         "body-too-large",
@@ -106,7 +111,17 @@ fn too_large(limit: usize) -> Problem {
     )
 }
 
-fn broken() -> Problem {
+/// A client that keeps a worker waiting.
+pub(super) fn too_slow(what: &str, within: Duration) -> Problem {
+    Problem::new(
+        StatusCode::REQUEST_TIMEOUT,
+        "slow-body",
+        "Body came too slowly",
+        format!("{what} must arrive within {} s", within.as_secs_f64()),
+    )
+}
+
+pub(super) fn broken() -> Problem {
     Problem::new(
         StatusCode::BAD_REQUEST,
         "broken-body",

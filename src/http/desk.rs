@@ -51,6 +51,18 @@ impl Desk {
         T: Send + 'static,
         J: FnOnce(&Arc<AtomicBool>) -> T + Send + 'static,
     {
+        self.run_within(self.time_limit, job).await
+    }
+
+    /// The same with a time limit of its own.
+    ///
+    /// # Errors
+    /// As [`Desk::run`].
+    pub async fn run_within<T, J>(&self, time_limit: Duration, job: J) -> Result<(T, Duration), Problem>
+    where
+        T: Send + 'static,
+        J: FnOnce(&Arc<AtomicBool>) -> T + Send + 'static,
+    {
         let seat = Arc::clone(&self.seats).try_acquire_owned().map_err(|_| busy())?;
         let flag = Arc::new(AtomicBool::new(false));
         let _cancel = CancelOnDrop(Arc::clone(&flag));
@@ -68,9 +80,9 @@ impl Desk {
                 Err(failure) => Err(after_failure(failure)),
             }
         };
-        match tokio::time::timeout(self.time_limit, work).await {
+        match tokio::time::timeout(time_limit, work).await {
             Ok(result) => result,
-            Err(_) => Err(self.too_late()),
+            Err(_) => Err(too_late(time_limit)),
         }
     }
 
@@ -102,18 +114,18 @@ impl Desk {
         match outcome {
             Ok(Ok(result)) => Ok(result),
             Ok(Err(failure)) => Err(after_failure(failure)),
-            Err(_) => Err(self.too_late()),
+            Err(_) => Err(too_late(self.time_limit)),
         }
     }
+}
 
-    fn too_late(&self) -> Problem {
-        Problem::new(
-            StatusCode::GATEWAY_TIMEOUT,
-            "time-limit",
-            "Time limit reached",
-            format!("no answer within {} s; the work was called off", self.time_limit.as_secs_f64()),
-        )
-    }
+fn too_late(time_limit: Duration) -> Problem {
+    Problem::new(
+        StatusCode::GATEWAY_TIMEOUT,
+        "time-limit",
+        "Time limit reached",
+        format!("no answer within {} s; the work was called off", time_limit.as_secs_f64()),
+    )
 }
 
 fn busy() -> Problem {

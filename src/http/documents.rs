@@ -1,7 +1,8 @@
 //! From a request's bytes to a document's bytes: the one path that service and command line share.
 
+use std::io::BufRead;
 use std::sync::Arc;
-use std::sync::atomic::AtomicBool;
+use std::sync::atomic::{AtomicBool, Ordering};
 use std::time::{Duration, Instant};
 
 use super::lines::LineWork;
@@ -9,10 +10,14 @@ use super::models::Models;
 use super::settings::MODELS_KEPT;
 use crate::compare;
 use crate::explain::ExplainError;
+use crate::identify::Session;
 use crate::reference::answer::Status;
 use crate::reference::{self, Trouble};
 use crate::solve::SolveError;
-use crate::wire::{self, Fault, ModelSource, Refusal};
+use crate::wire::{self, Fault, LogForm, LogReader, ModelSource, Refusal};
+
+/// Rows of a log between two looks at whether anybody still waits.
+pub const ROWS_BETWEEN: u64 = 10_000;
 
 /// What is asked for.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -27,6 +32,8 @@ pub enum Errand {
     Export,
     /// The user's terms beside ours.
     Compare,
+    /// The ground from samples within the request.
+    Identify,
 }
 
 /// A document, and what the transport needs to know of it.
@@ -54,6 +61,20 @@ pub trait Work: Send + Sync + 'static {
     /// A refusal names what is wrong with the line.
     fn open(&self, head: &[u8]) -> Result<Arc<dyn LineWork>, Refusal>;
 
+    /// Identifies the ground from a log of lines; the settings are its first line, or stand in `settings`. After every
+    /// [`ROWS_BETWEEN`] rows `progress` hears how many there were.
+    ///
+    /// # Errors
+    /// A refusal names what is wrong with the settings or the log.
+    fn log(
+        &self,
+        settings: Option<&[u8]>,
+        log: &mut dyn BufRead,
+        form: LogForm,
+        cancel: &Arc<AtomicBool>,
+        progress: &mut dyn FnMut(u64),
+    ) -> Result<Document, Refusal>;
+
     /// The document of a registered model.
     fn model(&self, id: &str) -> Option<Vec<u8>>;
 }
@@ -78,11 +99,36 @@ impl Work for Catalogue {
             Errand::Solve => solve(body, &self.models, cancel),
             Errand::Compare => compare(body, &self.models),
             Errand::Export => export(body, &self.models, cancel),
+            Errand::Identify => identify(body, &self.models),
         }
     }
 
     fn open(&self, head: &[u8]) -> Result<Arc<dyn LineWork>, Refusal> {
         Ok(Arc::new(wire::Batch::open(head, &self.models)?))
+    }
+
+    fn log(
+        &self,
+        settings: Option<&[u8]>,
+        log: &mut dyn BufRead,
+        form: LogForm,
+        cancel: &Arc<AtomicBool>,
+        progress: &mut dyn FnMut(u64),
+    ) -> Result<Document, Refusal> {
+        let mut clock = Clock::start();
+        let (mut reader, mut session) = LogReader::new(settings, log, form, &self.models)?;
+        let mut lines = 0;
+        while reader.feed(&mut session)? {
+            lines += 1;
+            if lines % ROWS_BETWEEN == 0 {
+                progress(lines);
+                if cancel.load(Ordering::Relaxed) {
+                    return Err(Refusal::new(504, "time-limit", "Time limit reached", "the work was called off"));
+                }
+            }
+        }
+        clock.lap("identify");
+        finished(session, &reader.fingerprint(), clock)
     }
 
     fn model(&self, id: &str) -> Option<Vec<u8>> {
@@ -153,6 +199,21 @@ fn compare(body: &[u8], models: &dyn ModelSource) -> Result<Document, Refusal> {
     let found = compare::compare(&asked.question, &asked.given, asked.tolerance);
     clock.lap("compare");
     let body = wire::write_compare(&asked, &found, &wire::fingerprint(body));
+    clock.lap("write");
+    Ok(Document { body, model: None, timings: clock.laps })
+}
+
+fn identify(body: &[u8], models: &dyn ModelSource) -> Result<Document, Refusal> {
+    let mut clock = Clock::start();
+    let session = wire::read_identify(body, models)?;
+    clock.lap("identify");
+    finished(session, &wire::fingerprint(body), clock)
+}
+
+/// The document of a log that was read to its end.
+fn finished(session: Session, fingerprint: &str, mut clock: Clock) -> Result<Document, Refusal> {
+    let setup = session.setup().clone();
+    let body = wire::write_identify(&setup, &session.finish(), fingerprint)?;
     clock.lap("write");
     Ok(Document { body, model: None, timings: clock.laps })
 }

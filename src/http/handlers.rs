@@ -5,12 +5,13 @@ use std::sync::{Arc, LazyLock};
 use std::time::Duration;
 
 use axum::body::Body;
-use axum::extract::{Path, State};
+use axum::extract::{FromRequest, Path, Request, State};
 use axum::http::{HeaderName, HeaderValue, StatusCode, header};
 use axum::response::Response;
 
-use super::body::JsonBytes;
+use super::body::{JsonBytes, media_type};
 use super::documents::{Document, Errand};
+use super::log;
 use super::problem::Problem;
 use super::router::Shared;
 use crate::wire;
@@ -47,6 +48,20 @@ pub async fn compare(State(shared): State<Arc<Shared>>, JsonBytes(body): JsonByt
 /// `POST /v1/export`.
 pub async fn export(State(shared): State<Arc<Shared>>, JsonBytes(body): JsonBytes) -> Result<Response, Problem> {
     run(shared, Errand::Export, body).await
+}
+
+/// `POST /v1/identify`: one JSON document, or settings and samples as lines.
+pub async fn identify(State(shared): State<Arc<Shared>>, request: Request) -> Result<Response, Problem> {
+    let Some(form) = log::form(request.headers()) else {
+        if media_type(request.headers()).is_none_or(|media| !media.to_ascii_lowercase().starts_with("application/json")) {
+            return Err(log::unsupported());
+        }
+        let JsonBytes(body) = JsonBytes::from_request(request, &shared).await?;
+        return run(shared, Errand::Identify, body).await;
+    };
+    let (head, body) = request.into_parts();
+    let (result, waited) = log::work(&shared, &head.headers, body, form).await?;
+    Ok(respond(result?, waited))
 }
 
 /// `GET /v1/models/{id}`.
@@ -87,7 +102,10 @@ pub async fn openapi() -> Response {
 async fn run(shared: Arc<Shared>, errand: Errand, body: axum::body::Bytes) -> Result<Response, Problem> {
     let work = Arc::clone(&shared.work);
     let (result, waited) = shared.desk.run(move |cancel| work.run(errand, &body, cancel)).await?;
-    let document = result?;
+    Ok(respond(result?, waited))
+}
+
+fn respond(document: Document, waited: Duration) -> Response {
     let timing = server_timing(waited, &document.timings);
     let location = document.model.as_ref().and_then(|id| HeaderValue::try_from(format!("/v1/models/{id}")).ok());
     let Document { body, .. } = document;
@@ -98,7 +116,7 @@ async fn run(shared: Arc<Shared>, errand: Errand, body: axum::body::Bytes) -> Re
     if let Some(location) = location {
         response.headers_mut().insert(header::LOCATION, location);
     }
-    Ok(response)
+    response
 }
 
 /// The Server-Timing header: milliseconds by name.

@@ -14,6 +14,7 @@ pub mod guard;
 pub mod handlers;
 pub mod lines;
 pub mod listen;
+pub mod log;
 pub mod models;
 pub mod problem;
 pub mod router;

@@ -19,6 +19,10 @@ pub const BODY_TIME: Duration = Duration::from_secs(10);
 pub const LINE_LIMIT: usize = 1 << 20;
 /// Time without a whole line of a batch, nor an answer to one, after which the batch ends.
 pub const LINE_IDLE: Duration = Duration::from_secs(60);
+/// Largest log sent as lines (bytes).
+pub const LOG_LIMIT: u64 = 4 << 30;
+/// Time for reading and working on a log sent as lines.
+pub const LOG_TIME: Duration = Duration::from_secs(600);
 /// Time for a client to deliver a request head; an idle connection is closed after it too.
 pub const HEADER_TIME: Duration = Duration::from_secs(30);
 /// Time a client may leave a response unread before the connection is dropped.
@@ -51,6 +55,10 @@ pub struct Settings {
     pub line_limit: usize,
     /// Time without a whole line of a batch, nor an answer to one, after which the batch ends.
     pub line_idle: Duration,
+    /// Largest log sent as lines (bytes).
+    pub log_limit: u64,
+    /// Time for reading and working on a log sent as lines; between two pieces of it a client may take `body_time`.
+    pub log_time: Duration,
     /// Time for a client to deliver a request head.
     pub header_time: Duration,
     /// Time a client may leave a response unread.
@@ -72,6 +80,8 @@ impl Default for Settings {
             body_time: BODY_TIME,
             line_limit: LINE_LIMIT,
             line_idle: LINE_IDLE,
+            log_limit: LOG_LIMIT,
+            log_time: LOG_TIME,
             header_time: HEADER_TIME,
             stall_time: STALL_TIME,
             grace: GRACE,

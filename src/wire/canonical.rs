@@ -22,9 +22,13 @@ pub fn fingerprint(body: &[u8]) -> String {
         Some(text) => hash.update(text.as_bytes()),
         None => hash.update(body),
     }
-    let digest = hash.finalize();
-    let mut text = String::with_capacity(2 * digest.len());
-    for byte in digest {
+    hexadecimal(&hash.finalize())
+}
+
+/// Two digits a byte.
+pub(super) fn hexadecimal(bytes: &[u8]) -> String {
+    let mut text = String::with_capacity(2 * bytes.len());
+    for byte in bytes {
         for half in [byte >> 4, byte & 15] {
             text.push(char::from_digit(u32::from(half), 16).unwrap_or('0'));
         }

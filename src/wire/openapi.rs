@@ -51,6 +51,7 @@ fn paths() -> Value {
             "export", "The assembled problem as Matrix Market files", "SolveRequest", "ExportAnswer", "The files."
         ) },
         "/v1/batch": { "post": batch() },
+        "/v1/identify": { "post": identify() },
         "/health": { "get": get(
             "health", "Says that the service runs", None, "application/json", json!({ "type": "object" }), &[]
         ) },
@@ -102,6 +103,22 @@ fn batch() -> Value {
          batch ends where no whole line comes for a while."
     );
     operation["responses"]["200"]["content"] = lines("BatchAnswer");
+    operation
+}
+
+/// Besides one JSON document, lines are read: settings on the first, samples after it.
+fn identify() -> Value {
+    let mut operation = post(
+        "identify", "Stiffness and damping of the ground from samples", "IdentifyRequest", "IdentifyAnswer",
+        "The estimates with error bars; `partly` and `not_identified` are answers too, see `status`. As application/x-ndjson the \
+         first line holds the settings (an IdentifyRequest without samples) and each further line a Sample; as text/csv the first \
+         line holds the settings, the second a header of cells `name [unit]`, each further line a row.",
+    );
+    let text = json!({ "schema": { "type": "string" } });
+    if let Some(Value::Object(content)) = operation.pointer_mut("/requestBody/content") {
+        content.insert("application/x-ndjson".to_string(), text.clone());
+        content.insert("text/csv".to_string(), text);
+    }
     operation
 }
 

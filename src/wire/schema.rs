@@ -5,15 +5,16 @@ use serde_json::{Map, Value, json};
 
 use super::kinds::KindTable;
 use super::strict::MAX_MAGNITUDE;
-use super::{answer, batch, compare, contact, dynamics, limit, market, model, problem, robot, solve, task, treatment};
+use super::{answer, batch, compare, contact, dynamics, identify, limit, market, model, problem, robot, solve, task, treatment};
 
 /// Objects whose members depend on a `kind`.
-const TABLES: [&KindTable; 5] = [
+const TABLES: [&KindTable; 6] = [
     &treatment::TREATMENT_KINDS,
     &contact::LAW_KINDS,
     &contact::REST_KINDS,
     &limit::LIMIT_KINDS,
     &task::TASK_KINDS,
+    &identify::TOUCHDOWN_KINDS,
 ];
 
 /// Names of the documents.
@@ -21,6 +22,7 @@ const NAMES: &[&str] = &[
     "model-request", "model", "dynamics-request", "dynamics-answer", "solve-request", "solve-answer", "problem",
     "batch-request", "batch-line", "batch-answer", "export-answer",
     "compare-request", "compare-answer",
+    "identify-request", "identify-answer",
 ];
 
 /// Names that [`schema`] knows.
@@ -68,6 +70,8 @@ fn plain(name: &str) -> Option<(Value, bool)> {
         "export-answer" => (writing().into_root_schema_for::<market::ExportOut<'_>>(), false),
         "compare-request" => (reading().into_root_schema_for::<compare::CompareRequest>(), true),
         "compare-answer" => (writing().into_root_schema_for::<compare::CompareOut<'_>>(), false),
+        "identify-request" => (reading().into_root_schema_for::<identify::IdentifyRequest>(), true),
+        "identify-answer" => (writing().into_root_schema_for::<identify::IdentifyAnswerOut<'_>>(), false),
         "model" => (writing().into_root_schema_for::<robot::ModelOut<'_>>(), false),
         "dynamics-answer" => (writing().into_root_schema_for::<dynamics::DynamicsAnswerOut<'_>>(), false),
         "solve-answer" => (writing().into_root_schema_for::<answer::AnswerOut<'_>>(), false),

@@ -24,10 +24,11 @@ pub(super) enum Document {
     Model,
     Batch,
     Compare,
+    Identify,
 }
 
 impl Document {
-    const COUNT: usize = 5;
+    const COUNT: usize = 6;
 
     /// Name of its schema.
     fn name(self) -> &'static str {
@@ -37,6 +38,7 @@ impl Document {
             Document::Model => "model-request",
             Document::Batch => "batch-request",
             Document::Compare => "compare-request",
+            Document::Identify => "identify-request",
         }
     }
 
@@ -54,6 +56,7 @@ impl Document {
                 ("/state", json!({})),
                 ("/yours", json!({})),
             ],
+            Document::Identify => vec![format, ("/soles", json!([]))],
             Document::Solve | Document::Dynamics => vec![
                 format,
                 ("/model/urdf", text.clone()),

@@ -14,7 +14,7 @@ use crate::spatial::{Twist, Vec3};
 #[derive(Debug, Clone, Copy, PartialEq, Deserialize, JsonSchema)]
 #[serde(rename_all = "snake_case")]
 #[schemars(inline)]
-pub(super) enum AxesBody {
+enum AxesBody {
     World,
     Base,
 }
@@ -29,6 +29,13 @@ pub(super) struct VelocityAxesBody {
     linear: Option<AxesBody>,
     /// Axes of the angular velocity (rad/s): `world` (default) or `base`.
     angular: Option<AxesBody>,
+}
+
+impl VelocityAxesBody {
+    /// As the domain has it.
+    pub(super) fn axes(&self) -> VelocityAxes {
+        VelocityAxes { linear: domain(self.linear), angular: domain(self.angular) }
+    }
 }
 
 /// Pose and velocity of the base link.
@@ -87,8 +94,7 @@ pub(super) struct StateBody {
 impl StateBody {
     /// The state, base velocity brought to world axes, and the axes it came in.
     pub(super) fn read(&self, gate: &mut Gate, at: At<'_>, model: &Model) -> (State, VelocityAxes) {
-        let axes = self.velocity_axes.unwrap_or_default();
-        let axes = VelocityAxes { linear: domain(axes.linear), angular: domain(axes.angular) };
+        let axes = self.velocity_axes.unwrap_or_default().axes();
         let none = BaseBody { orientation: [0.0, 0.0, 0.0, 1.0], ..BaseBody::default() };
         if self.base.is_none() && model.base == BaseKind::Floating {
             gate.missing(at.name("base"), "the state of the floating base");

@@ -151,3 +151,43 @@ pub fn solve_request() -> Value {
 pub fn bytes(value: &Value) -> Vec<u8> {
     serde_json::to_vec(value).expect("a value can be written")
 }
+
+/// One sole, two instants, most members that a request may have.
+pub fn identify_request() -> Value {
+    let sample = |time: f64, height: f64| {
+        json!({
+            "time": time,
+            "soles": [{
+                "sole": "left", "force": [0.0, 1.0, 300.0], "moment": [0.1, 0.0, 0.0], "position": [0.0, 0.0, height],
+                "orientation": [0.0, 0.0, 0.0, 1.0], "linear_velocity": [0.0, 0.0, -0.01], "angular_velocity": [0.0, 0.0, 0.0],
+                "stands": true,
+            }],
+        })
+    };
+    json!({
+        "format": "underfoot/1",
+        "soles": [{
+            "name": "left", "kind": "polygon", "vertices": [[-0.1, -0.05], [0.1, -0.05], [0.1, 0.05], [-0.1, 0.05]],
+            "sensor": {
+                "reads": "robot_on_ground", "axes": "sensor", "position": [0.0, 0.0, 0.05], "orientation": [0.0, 0.0, 0.0, 1.0],
+                "mass_below": 0.5, "center_below": [0.0, 0.0, 0.02], "noise": { "force": [1.0, 1.0, 2.0], "moment": [0.1, 0.1, 0.1] },
+            },
+        }],
+        "directions": "split",
+        "unknown": ["height", "offset"],
+        "guess": { "stiffness": 1e6, "damping": 1e4, "relative_deviation": 3.0 },
+        "forgetting": { "time_constant": 2.0 },
+        "touchdown": { "kind": "force", "on": 50.0, "off": 20.0 },
+        "ground": { "normal": [0.0, 0.0, 1.0], "point": [0.0, 0.0, 0.0] },
+        "gravity": [0.0, 0.0, -9.81],
+        "weight": 400.0,
+        "scale": true,
+        "lag": { "delays": [0.0, 0.002], "time_constants": [0.0] },
+        "half_window": 4,
+        "longest_step": 0.2,
+        "motion_noise": { "position": 1e-4, "rotation": 1e-4, "linear_velocity": 1e-3, "angular_velocity": 1e-3 },
+        "still_feet": false,
+        "mapping": [{ "column": "Fz [N]", "means": "left.force.z [N]" }],
+        "samples": [sample(0.0, 0.0), sample(0.01, -0.001)],
+    })
+}

@@ -5,6 +5,7 @@ from .answer import Answer, Comparison, Dynamics, FrameTerms, Sole, Task
 from .batch import Batch, Line
 from .client import Client, Model
 from .errors import Busy, Fault, Garbled, NotFinite, Refused, UnderfootError, Unreachable
+from .identified import Identification, IdentifiedSole, IdentifiedStance, Parameter
 
 __all__ = [
     "Answer",
@@ -16,9 +17,13 @@ __all__ = [
     "Fault",
     "FrameTerms",
     "Garbled",
+    "Identification",
+    "IdentifiedSole",
+    "IdentifiedStance",
     "Line",
     "Model",
     "NotFinite",
+    "Parameter",
     "Refused",
     "Sole",
     "Task",

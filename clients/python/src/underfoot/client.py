@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 from dataclasses import dataclass, field
 from types import TracebackType
 from typing import Any, Iterable, Mapping, Sequence
@@ -10,7 +11,8 @@ from .answer import Answer, Comparison, Dynamics, shaped
 from .batch import Batch
 from .build import FORMAT
 from .errors import Refused
-from .transport import Reply, Transport, segment
+from .identified import Identification
+from .transport import Reply, Transport, plain, problem, segment
 
 UNKNOWN_MODEL = "unknown-model"
 """Problem code for a model id the service does not hold (any more)."""
@@ -154,6 +156,37 @@ class Client:
         if members is not None:
             head["members"] = list(members)
         return Batch(self._transport, head, lines, lambda refused: self._register_again(refused, model))
+
+    def identify(
+        self,
+        settings: Mapping[str, Any],
+        samples: Sequence[Mapping[str, Any]] | None = None,
+        *,
+        csv: str | bytes | None = None,
+        ndjson: str | bytes | None = None,
+    ) -> Identification:
+        """Stiffness and damping of the ground from a log.
+
+        `settings`: an identification request without samples. One of: `samples`, one mapping an instant; `csv`, a header of
+        cells `name [unit]` and rows; `ndjson`, one JSON object a line. In remarks, lines of the latter two count the settings as
+        line 1.
+        """
+        if sum(log is not None for log in (samples, csv, ndjson)) != 1:
+            raise ValueError("give one of samples, csv and ndjson")
+        document: dict[str, Any] = {"format": FORMAT, **settings}
+        model = document.get("model")
+        if isinstance(model, Model):
+            document["model"] = model.id
+        if samples is not None:
+            reply = self._post("/v1/identify", {**document, "samples": list(samples)}, model)
+        else:
+            log, media = (csv, "text/csv") if csv is not None else (ndjson, "application/x-ndjson")
+            lines = log.encode() if isinstance(log, str) else log
+            head = json.dumps(plain(document), allow_nan=False, separators=(",", ":")).encode()
+            reply = self._transport.raw("POST", "/v1/identify", head + b"\n" + (lines or b""), {"Content-Type": media})
+            if not 200 <= reply.status < 300:
+                raise problem(reply)
+        return Identification.read(reply.document(), reply.body)
 
     def raw(self, method: str, path: str, body: bytes | None = None, headers: Mapping[str, str] | None = None) -> Reply:
         """One exchange as it is: no exceptions for refusals, no re-sending of models."""
