@@ -13,6 +13,7 @@ pub mod solve;
 pub mod certify;
 pub mod explain;
 pub mod reference;
+pub mod audit;
 pub mod wire;
 pub mod http;
 pub mod cli;

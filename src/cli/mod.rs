@@ -2,6 +2,8 @@
 //!
 //! Exit codes, the same for every command: 0 good, 1 the answer is bad news, 2 unusable input.
 
+mod audit;
+mod audit_table;
 mod demo;
 mod dynamics;
 mod files;
@@ -33,6 +35,8 @@ enum Command {
     Serve(Box<serve::Serve>),
     /// Answer a solve request from a file; prints what POST /v1/solve answers.
     Solve(solve::Solve),
+    /// Judge a controller's own answer from a file; prints what POST /v1/audit answers.
+    Audit(audit::Audit),
     /// Rigid-body terms of a state from a file; prints what POST /v1/dynamics answers.
     Dynamics(dynamics::Dynamics),
     /// List the JSON Schemas, or print one.
@@ -67,6 +71,7 @@ pub fn main() -> ExitCode {
     match Arguments::parse().command {
         Command::Serve(command) => command.run(),
         Command::Solve(command) => command.run(),
+        Command::Audit(command) => command.run(),
         Command::Dynamics(command) => command.run(),
         Command::Schemas(command) => command.run(),
         Command::Demo(command) => command.run(),

@@ -6,7 +6,9 @@ use std::time::{Duration, Instant};
 
 use super::models::Models;
 use super::settings::MODELS_KEPT;
+use crate::audit::{self, AuditError};
 use crate::explain::ExplainError;
+use crate::problem::question::Question;
 use crate::reference::answer::Status;
 use crate::reference::{self, Trouble};
 use crate::solve::SolveError;
@@ -21,6 +23,8 @@ pub enum Errand {
     Dynamics,
     /// Torques and wrenches.
     Solve,
+    /// A controller's own answer, judged.
+    Audit,
 }
 
 /// A document, and what the transport needs to know of it.
@@ -64,6 +68,7 @@ impl Work for Catalogue {
             Errand::Register => self.register(body),
             Errand::Dynamics => self.dynamics(body),
             Errand::Solve => self.solve(body, cancel),
+            Errand::Audit => self.audit(body, cancel),
         }
     }
 
@@ -106,6 +111,35 @@ impl Catalogue {
         let body = wire::write_answer(&question, &answer, &wire::fingerprint(body));
         clock.lap("write");
         Ok(Document { body, model: None, timings: clock.laps })
+    }
+
+    fn audit(&self, body: &[u8], cancel: &Arc<AtomicBool>) -> Result<Document, Refusal> {
+        let mut clock = Clock::start();
+        let (question, claim, tolerances) = wire::read_audit(body, &self.models)?;
+        clock.lap("read");
+        let report = audit::audit(&question, &claim, &tolerances, cancel).map_err(|error| audit_refusal(&question, error))?;
+        clock.lap("audit");
+        let body = wire::write_audit(&question, &report, &wire::fingerprint(body));
+        clock.lap("write");
+        Ok(Document { body, model: None, timings: clock.laps })
+    }
+}
+
+/// The same of an audit, whose question stands in the member `request`.
+fn audit_refusal(question: &Question, error: AuditError) -> Refusal {
+    match error {
+        AuditError::Trouble(trouble) => {
+            let mut refusal = refusal(&trouble);
+            refusal.faults.iter_mut().for_each(|fault| fault.pointer.insert_str(0, "/request"));
+            refusal
+        }
+        AuditError::Targets { task, expected, found } => Refusal::unusable(vec![Fault {
+            pointer: "/answer/tasks".to_owned(),
+            expected: format!("{expected} desired values for the task {:?}, one per row", question.tasks[task].name),
+            got: found.to_string(),
+            line: None,
+        }]),
+        AuditError::Shape => Refusal::new(500, "defect", "A defect of this service", error.to_string()),
     }
 }
 

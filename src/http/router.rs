@@ -32,6 +32,7 @@ pub fn router(settings: Settings, work: Arc<dyn Work>) -> Router {
         .route("/v1/models/{id}", get(handlers::show_model))
         .route("/v1/dynamics", post(handlers::dynamics))
         .route("/v1/solve", post(handlers::solve))
+        .route("/v1/audit", post(handlers::audit))
         .route("/health", get(handlers::health))
         .route("/schemas", get(handlers::schemas))
         .route("/schemas/{name}", get(handlers::schema))

@@ -43,6 +43,11 @@ fn paths() -> Value {
             "The answer; `infeasible`, `not_reachable`, `ill_posed`, `inaccurate` and `cancelled` are \
              answers too, see `status`. Timings travel in the Server-Timing header."
         ) },
+        "/v1/audit": { "post": post(
+            "audit", "Judges a controller's own answer", "AuditRequest", "AuditAnswer",
+            "What the torques lead to, every limit, what is lost against the reference and what may have gone wrong; \
+             `pass`, `fail` and `undecided` are all answers, see `verdict`."
+        ) },
         "/health": { "get": get(
             "health", "Says that the service runs", None, "application/json", json!({ "type": "object" }), &[]
         ) },

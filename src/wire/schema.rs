@@ -5,7 +5,7 @@ use serde_json::{Map, Value, json};
 
 use super::kinds::KindTable;
 use super::strict::MAX_MAGNITUDE;
-use super::{answer, contact, dynamics, limit, model, problem, robot, solve, task, treatment};
+use super::{answer, audit, audit_answer, contact, dynamics, limit, model, problem, robot, solve, task, treatment};
 
 /// Objects whose members depend on a `kind`.
 const TABLES: [&KindTable; 5] = [
@@ -18,7 +18,8 @@ const TABLES: [&KindTable; 5] = [
 
 /// Names of the documents.
 const NAMES: &[&str] = &[
-    "model-request", "model", "dynamics-request", "dynamics-answer", "solve-request", "solve-answer", "problem",
+    "model-request", "model", "dynamics-request", "dynamics-answer", "solve-request", "solve-answer",
+    "audit-request", "audit-answer", "problem",
 ];
 
 /// Names that [`schema`] knows.
@@ -60,6 +61,8 @@ fn plain(name: &str) -> Option<(Value, bool)> {
         "model-request" => (reading().into_root_schema_for::<model::ModelRequest>(), true),
         "dynamics-request" => (reading().into_root_schema_for::<solve::DynamicsRequest>(), true),
         "solve-request" => (reading().into_root_schema_for::<solve::SolveRequest>(), true),
+        "audit-request" => (reading().into_root_schema_for::<audit::AuditRequest>(), true),
+        "audit-answer" => (writing().into_root_schema_for::<audit_answer::AuditOut<'_>>(), false),
         "model" => (writing().into_root_schema_for::<robot::ModelOut<'_>>(), false),
         "dynamics-answer" => (writing().into_root_schema_for::<dynamics::DynamicsAnswerOut<'_>>(), false),
         "solve-answer" => (writing().into_root_schema_for::<answer::AnswerOut<'_>>(), false),

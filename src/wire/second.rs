@@ -20,17 +20,19 @@ const MAX_ERRORS: usize = 200;
 #[derive(Debug, Clone, Copy)]
 pub(super) enum Document {
     Solve,
+    Audit,
     Dynamics,
     Model,
 }
 
 impl Document {
-    const COUNT: usize = 3;
+    const COUNT: usize = 4;
 
     /// Name of its schema.
     fn name(self) -> &'static str {
         match self {
             Document::Solve => "solve-request",
+            Document::Audit => "audit-request",
             Document::Dynamics => "dynamics-request",
             Document::Model => "model-request",
         }
@@ -42,6 +44,17 @@ impl Document {
         let (format, text) = (("/format", json!("underfoot/1")), json!(""));
         match self {
             Document::Model => vec![format, ("/urdf", text)],
+            Document::Audit => vec![
+                format,
+                ("/request", json!({})),
+                ("/request/format", json!("underfoot/1")),
+                ("/request/model/urdf", text.clone()),
+                ("/request/model", text),
+                ("/request/state", json!({})),
+                ("/request/tick", json!({ "length": 1e-6 })),
+                ("/answer", json!({})),
+                ("/answer/joints", json!([])),
+            ],
             Document::Solve | Document::Dynamics => vec![
                 format,
                 ("/model/urdf", text.clone()),
