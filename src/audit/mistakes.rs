@@ -18,20 +18,18 @@
 
 use std::sync::Arc;
 
+use super::earlier::{Earlier, one_tick_ago};
 use crate::contact::{Law, TickRule};
-use crate::dynamics::{self, Axes};
+use crate::dynamics::Axes;
 use crate::explain::{Parameter, ParameterKind, varied};
-use crate::model::State;
 use crate::problem::question::{Importance, Question, Task, TaskKind, Treatment};
-use crate::reference::{self, Work};
+use crate::reference::Work;
 use crate::spatial::{Mat3, quaternion_of, rotation_from_quaternion};
 
 /// Friction coefficients tried.
 const COEFFICIENTS: [f64; 8] = [0.3, 0.4, 0.5, 0.6, 0.7, 0.8, 0.9, 1.0];
 /// Factors on stiffness and damping.
 const GROUND_FACTORS: [f64; 2] = [1.2, 0.8];
-/// Steps of the search for the state one tick ago.
-const BACKWARD_STEPS: usize = 8;
 /// Most mistaken questions of one audit.
 pub const MOST_QUESTIONS: usize = 100;
 
@@ -209,46 +207,14 @@ fn ground(out: &mut List) {
     }
 }
 
-/// The question one tick ago: the state from which the claimed torques, held, lead to the present one. The accelerations are
-/// those of that state, so it is found by repetition.
-fn one_tick_ago(work: &Work, torques: &[f64]) -> Option<Question> {
-    let now = &work.question;
-    let mut before = now.clone();
-    reference::fix_rest_poses(&mut before).ok()?;
-    let model = now.model.clone();
-    let length = now.tick.length;
-    for contact in &mut before.contacts {
-        // Ground that moves was elsewhere.
-        if let crate::contact::Rest::Pose(pose) = contact.ground.rest {
-            let (rest, normal) = crate::contact::tick::advance_ground(&contact.ground.normal, &pose, &contact.ground.rest_twist, -length);
-            contact.ground.rest = crate::contact::Rest::Pose(rest);
-            contact.ground.normal = normal;
-        }
-    }
-    for _ in 0..BACKWARD_STEPS {
-        let response = reference::respond(&before, torques).ok()?;
-        let acceleration = response.acceleration.as_slice();
-        // With v = v_now - T a, q_now = q + T v + T^2/2 a reads q = q_now - T v_now + T^2/2 a: the motion run backwards, from -v_now
-        // under the same a, ends at q with -v.
-        let mut reversed = now.state.clone();
-        turn_round(&mut reversed);
-        let mut state = dynamics::integrate(&model, &reversed, acceleration, length);
-        turn_round(&mut state);
-        before.state = state;
-    }
-    before.latency = None;
-    Some(before)
-}
-
-fn turn_round(state: &mut State) {
-    state.velocity.iter_mut().for_each(|v| *v = -*v);
-    state.base_twist.linear = -state.base_twist.linear;
-    state.base_twist.angular = -state.base_twist.angular;
-}
-
 fn delay(out: &mut List, work: &Work, torques: &[f64]) {
-    if let Some(before) = one_tick_ago(work, torques) {
+    if let Some(before) = one_tick_ago(&work.question, torques, Earlier::ByLaw) {
         out.push("delay", "", "the state one tick old", before, true);
+    }
+    if work.question.contacts.iter().any(|c| c.ground.measured.is_some())
+        && let Some(before) = one_tick_ago(&work.question, torques, Earlier::ByRule)
+    {
+        out.push("delay", "measured wrenches", "the state one tick old, its wrenches those that the tick rule carries to the present ones", before, true);
     }
     if out.question.latency.is_some() {
         out.add("delay", "", "the latency not predicted over", |q| q.latency = None);

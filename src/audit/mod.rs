@@ -9,6 +9,7 @@
 //! the nearest to what happens under held torques, everything is judged a second time, and it is said where the verdict would differ.
 
 pub mod causes;
+mod earlier;
 mod implied;
 mod losses;
 mod mistakes;
