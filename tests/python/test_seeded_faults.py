@@ -49,15 +49,27 @@ def answer_of(torques: dict[str, float]):
     return build.controller_answer(list(torques.items()))
 
 
-def judged(client, fault: str, subject: set[str], request, good: dict[str, float], torques: dict[str, float]) -> dict:
+def why(fault: str, subject: set[str], good: seeded.Good) -> str:
+    """Why a fault left the torques what they are, within tolerance."""
+    if fault == "friction_coefficient" and not any(name.startswith("friction:") for name in good.touching):
+        return "no friction limit is touched"
+    if fault in ("friction_coefficient", "limit_ignored"):
+        # Vertex forces are not unique: those of an answer may touch their cones while the wrench has room, and a limit may be
+        # touched without holding anything back.
+        return "touched, but holds nothing back"
+    return "changes torques by less than the tolerance"
+
+
+def judged(client, fault: str, subject: set[str], request, good: seeded.Good, torques: dict[str, float]) -> dict:
     """What the audit makes of one faulty answer."""
     audit = client.audit(request, answer_of(torques))
     readings = audit.document["judgements"][0]["comparisons"][0]["torques"]
-    off = max(abs(torques[t["name"]] - good[t["name"]]) / t["tolerance"] for t in readings) if readings else np.inf
+    off = max(abs(torques[t["name"]] - good.torques[t["name"]]) / t["tolerance"] for t in readings) if readings else np.inf
     ours = lambda h: h.mistake == fault and (not subject or set(h.subject.split(" and ")) == subject or h.subject in subject)  # noqa: E731
     return {
         "fault": fault,
         "equivalent": bool(off <= 1),
+        "why": why(fault, subject, good) if off <= 1 else "",
         "verdict": audit.verdict,
         "named": any(ours(h) for h in audit.causes),
         "alone": bool(audit.causes) and all(h.mistake == fault for h in audit.causes),
@@ -89,19 +101,19 @@ def one_state(job: tuple[str, int]) -> dict:
         mistaken = {fault: change(rng, request) for fault, change in QUESTIONS.items()}
         mistaken["limit_ignored"] = seeded.ignoring(request, group)
         mistaken["rotor_inertia"] = seeded.rotor_inertia(models, request)
-        out["faults"].append(judged(client, "torque_sign", {a}, request, good.torques, flipped))
-        out["faults"].append(judged(client, "joints_swapped", {a, b}, request, good.torques, swapped))
+        out["faults"].append(judged(client, "torque_sign", {a}, request, good, flipped))
+        out["faults"].append(judged(client, "joints_swapped", {a, b}, request, good, swapped))
         for fault, question in mistaken.items():
             try:
                 torques = seeded.solve(client, question, twice=fault in ("quaternion", "priorities")).torques
             except seeded.NoAnswer as none:
                 out["faults"].append({"fault": fault, "none": str(none).split(":")[0]})
                 continue
-            out["faults"].append(judged(client, fault, {group} if fault == "limit_ignored" else set(), request, good.torques, torques))
+            out["faults"].append(judged(client, fault, {group} if fault == "limit_ignored" else set(), request, good, torques))
         later = seeded.next_tick(request, stance, good)
         try:
             now = seeded.solve(client, later, twice=False)
-            out["faults"].append(judged(client, "delay", set(), later, now.torques, good.torques))
+            out["faults"].append(judged(client, "delay", set(), later, now, good.torques))
         except seeded.NoAnswer as none:
             out["faults"].append({"fault": "delay", "none": str(none).split(":")[0]})
     return out
@@ -140,7 +152,9 @@ def test_seeded_faults(address, row):
         totals.update(injected=len(injected), equivalent=len(alike), caught=caught, named=named, real=len(real))
         row(
             f"{text}: injected / equivalent / caught / named (as the only kind) / nearest",
-            f"{len(injected)} / {len(alike)} / {caught} / {named} ({alone}) / {nearest}" + (f"; {missing} without an answer" if missing else ""),
+            f"{len(injected)} / {len(alike)} / {caught} / {named} ({alone}) / {nearest}"
+            + (f"; {missing} without an answer" if missing else "")
+            + (f"; equivalent: {dict(Counter(f['why'] for f in alike))}" if alike else ""),
         )
     row("all: injected / equivalent / caught / named", f"{totals['injected']} / {totals['equivalent']} / {totals['caught']} / {totals['named']}")
     missed = [(s["number"], f) for s in states for f in s["faults"] if "none" not in f and not f["equivalent"] and f["verdict"] != "fail"]
