@@ -343,5 +343,10 @@ fn the_references_own_answer_passes() {
         // The same torques under a wrong sign of one wrench: the claim contradicts itself.
         claim.wrenches[0] = claim.wrenches[0].map(|w| Wrench { force: -w.force, moment: -w.moment });
         assert_eq!(kinds(&judge(&question, &claim))[0], ReasonKind::ClaimedPhysics);
+        // All of them the other way round is a convention, and told.
+        claim.wrenches[1] = claim.wrenches[1].map(|w| Wrench { force: -w.force, moment: -w.moment });
+        let causes = judge(&question, &claim).causes.expect("asked for");
+        let found: Vec<&str> = causes.hypotheses.iter().filter(|h| h.consistent).map(|h| h.mistake).collect();
+        assert_eq!((causes.conclusion, found), (Conclusion::Consistent, vec!["wrench_sign"]));
     }
 }

@@ -14,7 +14,7 @@ use super::readings::{on_vertices, room};
 use super::report::{Causes, Conclusion, Hypothesis, Judgement, ReasonKind};
 use super::tolerances::Tolerances;
 use super::torques::Determined;
-use super::{Claim, retarget, vertex};
+use super::{Claim, claims, retarget, vertex};
 use crate::explain::ExplainError;
 use crate::problem::question::Question;
 use crate::reference::{self, Trouble, Work};
@@ -25,16 +25,27 @@ pub const MOST_REPORTED: usize = 12;
 /// A limit with less room than this share of its natural size binds.
 const BINDS: f64 = 1e-6;
 
-/// Tries every mistake on `claim`. `determined` is the reference without mistakes.
+/// What the judgement under the request's rule has worked out.
+pub struct Known<'a> {
+    /// The question's own solve.
+    pub(super) work: &'a Work,
+    /// The reference without mistakes.
+    pub(super) determined: &'a Determined,
+    /// The judgement.
+    pub(super) judgement: &'a Judgement,
+    /// What the torques lead to.
+    pub(super) at: Option<&'a Consequence>,
+}
+
+/// Tries every mistake on `claim`.
 pub fn find(
     question: &Question,
     claim: &Claim,
-    work: &Work,
-    determined: &Determined,
-    judgement: &Judgement,
+    known: &Known,
     tolerances: &Tolerances,
     cancel: &Arc<AtomicBool>,
 ) -> Result<Causes, Trouble> {
+    let Known { work, determined, judgement, .. } = *known;
     let (distance, in_tolerances) = determined.distance(&claim.torques);
     let mut tried: Vec<Hypothesis> = Vec::new();
     if in_tolerances > 1.0 {
@@ -54,6 +65,9 @@ pub fn find(
             };
             tried.push(hypothesis(mistaken.code, &mistaken.subject, mistaken.text, outcome));
         }
+    }
+    if let Some(at) = known.at {
+        tried.extend(claims::tried(work, claim, at, tolerances));
     }
     let count = tried.len();
     let key = |h: &Hypothesis| h.in_tolerances.unwrap_or(f64::INFINITY);

@@ -8,7 +8,7 @@ use nalgebra::{DMatrix, DVector};
 
 use super::Claim;
 use super::report::{Implied, ImpliedSole};
-use super::tolerances::Tolerances;
+use super::tolerances::{Tolerances, within};
 use crate::problem::layout::Layout;
 use crate::reference::{self, Trouble, Work};
 use crate::spatial::{Vec3, Vec6, Wrench};
@@ -146,8 +146,7 @@ fn shortest(work: &Work, x: &mut [f64]) -> Result<(), Trouble> {
     let cut = STATED_TWICE * parts.singular_values.max();
     let solution = parts.solve(&right, cut).map_err(|_| Trouble::Latency)?;
     let left = (&matrix * &solution - &right).amax();
-    // Written so that what is no number is refused as well.
-    if !(left <= CONTRADICTION * right.amax().max(1.0)) {
+    if !within(left, CONTRADICTION * right.amax().max(1.0)) {
         return Err(Trouble::Latency);
     }
     for (&j, value) in unknown.iter().zip(solution.iter()) {

@@ -3,12 +3,14 @@
 //! Its torques are carried through the physics of the tick (`implied`), what follows is held against every limit (`readings`) and, from
 //! the first priority on, against the reference's optimum (`losses`); torques are compared where the question determines them
 //! (`torques`). Where they differ, the question is solved again with each of a list of common mistakes made on purpose (`mistakes`),
-//! and those that lead to the claimed torques are named (`causes`): hypotheses, no proof.
+//! and those that lead to the claimed torques are named (`causes`): hypotheses, no proof. Claimed wrenches and accelerations have
+//! mistakes of their own (`claims`).
 //!
 //! The verdict is that of the request's own tick rule, the one the controller was asked to plan with. Under the rule `held`, which is
 //! the nearest to what happens under held torques, everything is judged a second time, and it is said where the verdict would differ.
 
 pub mod causes;
+mod claims;
 mod earlier;
 mod implied;
 mod losses;
@@ -124,7 +126,8 @@ pub fn audit(question: &Question, claim: &Claim, tolerances: &Tolerances, cancel
     let verdict = judgements[0].verdict;
     let causes = match own.reference {
         Some(determined) if verdict != Verdict::Pass && claim.find_causes => {
-            Some(causes::find(&question, claim, &own.work, &determined, &judgements[0], tolerances, cancel)?)
+            let known = causes::Known { work: &own.work, determined: &determined, judgement: &judgements[0], at: own.at.as_ref() };
+            Some(causes::find(&question, claim, &known, tolerances, cancel)?)
         }
         _ => None,
     };
@@ -159,6 +162,7 @@ pub(crate) fn retarget(assembly: &mut Assembly, question: &Question, targets: &[
 struct Judged {
     judgement: Judgement,
     work: Work,
+    at: Option<Consequence>,
     reference: Option<Determined>,
 }
 
@@ -201,7 +205,7 @@ fn judge(question: &Question, claim: &Claim, tolerances: &Tolerances, cancel: &A
     let verdict = first.iter().map(|r| if r.fails { Verdict::Fail } else { Verdict::Undecided }).fold(Verdict::Pass, Verdict::and);
     let implied = at.as_ref().map(|at| implied::reported(&work, at));
     let judgement = Judgement { rule: question.tick.rule, verdict, reasons: first, implied, claimed, limits, comparisons };
-    Ok(Judged { judgement, work, reference })
+    Ok(Judged { judgement, work, at, reference })
 }
 
 pub(crate) fn reason(kind: ReasonKind, subject: &str, text: impl Into<String>, fails: bool) -> Reason {
@@ -305,7 +309,7 @@ fn torque_readings(known: &Determined, claim: &Claim, work: &Work) -> Vec<Torque
             reference: known.reference[j],
             determined_difference: left[j],
             tolerance: known.tolerance[j],
-            differs: !(left[j].abs() <= known.tolerance[j]),
+            differs: !tolerances::within(left[j], known.tolerance[j]),
         })
         .collect()
 }
@@ -322,8 +326,8 @@ fn difference_reasons(comparison: &Comparison, work: &Work, answer: &Answer) -> 
     let feasible = answer.certificate.as_ref().is_some_and(|c| c.checks.iter().filter(|c| obeys(c.name)).all(|c| c.passes()));
     let caveat = if certified { String::new() } else { format!("; the reference is {}", word(answer.status)) };
     if let Some(level) = comparison.levels.iter().find(|level| !level.matches) {
-        let above = work.solution.levels.iter().take_while(|l| l.priority != level.priority);
-        let sharp = above.fold(true, |sharp, l| sharp && (l.refined || l.bound <= UNREFINED_BOUND));
+        let mut above = work.solution.levels.iter().take_while(|l| l.priority != level.priority);
+        let sharp = above.all(|l| l.refined || l.bound <= UNREFINED_BOUND);
         let worse = level.norm - level.reference_norm > level.tolerance;
         let tasks: Vec<String> = level.tasks.iter().map(|task| format!("{}: {}", task.name, in_units(task))).collect();
         let text = format!("priority {} is not met as well as it can be: {}{caveat}", level.priority, tasks.join("; "));

@@ -5,7 +5,7 @@ use std::sync::atomic::AtomicBool;
 
 use super::implied::Consequence;
 use super::report::{Discrepancy, LimitReading, Strictness};
-use super::tolerances::Tolerances;
+use super::tolerances::{Tolerances, within};
 use super::{Claim, vertex};
 use crate::problem::limits::LimitBlock;
 use crate::problem::question::Treatment;
@@ -70,7 +70,7 @@ pub fn claimed(work: &Work, claim: &Claim, at: &Consequence, tolerances: &Tolera
     let mut push = |column: usize, claimed: f64, implied: f64| {
         let column = &layout.columns[column];
         let tolerance = tolerances.of_claim(column);
-        let broken = !((claimed - implied).abs() <= tolerance);
+        let broken = !within(claimed - implied, tolerance);
         out.push(Discrepancy { name: column.name.clone(), unit: column.unit, claimed, implied, tolerance, broken });
     };
     if let Some(base) = claim.base_acceleration.filter(|_| offset == 6) {

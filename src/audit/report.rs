@@ -290,7 +290,8 @@ pub struct Hypothesis {
     pub subject: String,
     /// The sentence, to follow "consistent with".
     pub text: String,
-    /// Largest determined torque difference that is left (N m or N); none where the mistaken question has no answer.
+    /// Largest determined torque difference that is left (N m or N); none where the mistaken question has no answer, and for mistakes
+    /// in claimed wrenches and accelerations.
     pub distance_left: Option<f64>,
     /// The largest difference left, in tolerances: explained up to 1.
     pub in_tolerances: Option<f64>,

@@ -68,3 +68,8 @@ impl Tolerances {
         self.limit.unwrap_or(self.relative) * natural
     }
 }
+
+/// True where a difference counts as none; what is no number never does.
+pub fn within(difference: f64, tolerance: f64) -> bool {
+    difference.abs() <= tolerance
+}

@@ -297,7 +297,8 @@ struct HypothesisOut<'a> {
     subject: &'a str,
     /// The sentence (no unit).
     text: &'a str,
-    /// Largest determined torque difference left (N m or N); null where the mistaken question has no answer.
+    /// Largest determined torque difference left (N m or N); null where the mistaken question has no answer, and for mistakes in
+    /// claimed wrenches and accelerations.
     distance_left: Option<Number>,
     /// The largest difference left, in tolerances (no unit): explained up to 1; null where the mistaken question has no answer.
     in_tolerances: Option<Number>,
