@@ -68,7 +68,7 @@ fn about(model: Model, state: State, gravity: Vec3, contacts: Vec<Contact>, limi
         state,
         velocity_axes: VelocityAxes::default(),
         gravity,
-        tick: Tick { length: 0.005, rule: TickRule::Held },
+        tick: Tick { length: 0.005, rule: TickRule::Held, chosen: true },
         contacts,
         limits,
         tasks,

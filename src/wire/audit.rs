@@ -3,7 +3,7 @@
 use schemars::JsonSchema;
 use serde::Deserialize;
 
-use super::ModelSource;
+use super::{ModelSource, Request};
 use super::common::{Format, LinearAngularBody, WrenchBody};
 use super::friction::positive;
 use super::gate::{At, Gate, listed, quoted};
@@ -47,12 +47,15 @@ pub(super) struct AuditRequest {
 struct ClaimBody {
     /// Torques, and accelerations where the controller says them (N m, rad/s^2; N, m/s^2 for sliding joints): every actuated
     /// joint exactly once.
+    #[schemars(extend("maxItems" = MAX_JOINTS))]
     joints: Vec<ClaimJointBody>,
     /// Acceleration of the base in the request's velocity axes, where the controller says one (m/s^2, rad/s^2).
     base_acceleration: Option<LinearAngularBody>,
     /// Wrenches of the ground on the soles at the tick's end, where the controller says them (N, N m).
+    #[schemars(extend("maxItems" = MAX_ENTRIES))]
     soles: Option<Vec<ClaimSoleBody>>,
     /// The controller's own targets, for tasks whose target it works out otherwise than the request does (each in its own unit).
+    #[schemars(extend("maxItems" = MAX_ENTRIES))]
     tasks: Option<Vec<ClaimTaskBody>>,
 }
 
@@ -88,6 +91,7 @@ struct ClaimTaskBody {
     /// Name of a task of the request (no unit).
     name: String,
     /// Desired value of each row, as the answer to a solve request orders them (in the row's unit).
+    #[schemars(extend("maxItems" = MAX_ROWS))]
     desired: Vec<f64>,
 }
 
@@ -99,37 +103,51 @@ struct ClaimTaskBody {
 #[schemars(rename = "Tolerances")]
 struct TolerancesBody {
     /// Share of the natural size, more than 0, for everything without a tolerance of its own (no unit); 1e-4 when left out.
+    #[schemars(extend("exclusiveMinimum" = 0.0))]
     relative: Option<f64>,
     /// Difference of a torque, where the question determines it, more than 0 (N m; N for sliding joints).
+    #[schemars(extend("exclusiveMinimum" = 0.0))]
     torque: Option<f64>,
     /// Difference of a claimed linear acceleration, more than 0 (m/s^2).
+    #[schemars(extend("exclusiveMinimum" = 0.0))]
     acceleration: Option<f64>,
     /// Difference of a claimed angular acceleration, more than 0 (rad/s^2).
+    #[schemars(extend("exclusiveMinimum" = 0.0))]
     angular_acceleration: Option<f64>,
     /// Difference of a claimed force, more than 0 (N).
+    #[schemars(extend("exclusiveMinimum" = 0.0))]
     force: Option<f64>,
     /// Difference of a claimed moment, more than 0 (N m).
+    #[schemars(extend("exclusiveMinimum" = 0.0))]
     moment: Option<f64>,
     /// Violation of a limit and residual of a task that must hold, as a share of their natural size, more than 0 (no unit).
+    #[schemars(extend("exclusiveMinimum" = 0.0))]
     limit: Option<f64>,
     /// Difference of a priority's weighted residuals, `sqrt(sum weight (residual / scale)^2)`, more than 0 (no unit).
+    #[schemars(extend("exclusiveMinimum" = 0.0))]
     loss: Option<f64>,
 }
 
-impl AuditRequest {
-    /// The question, the claim, the tolerances.
-    pub(super) fn read(self, models: &dyn ModelSource) -> Result<(Question, Claim, Tolerances), Refusal> {
+impl Request for AuditRequest {
+    type Question = (Question, Claim, Tolerances);
+
+    fn read(self, mut gate: Gate, models: &dyn ModelSource) -> Result<(Question, Claim, Tolerances), Refusal> {
         let root = At::ROOT;
-        let question = self.request.read_at(root.name("request"), models)?;
-        let mut gate = Gate::default();
-        let mut claim = self.answer.read(&mut gate, root.name("answer"), &question);
-        claim.find_causes = self.causes.unwrap_or(true);
         let tolerances = match &self.tolerances {
             Some(body) => body.read(&mut gate, root.name("tolerances")),
             None => Tolerances::default(),
         };
-        gate.finish()?;
-        Ok((question, claim, tolerances))
+        let question = self.request.read_in(&mut gate, root.name("request"), models)?;
+        // An answer to a question that is wrong somewhere, or not whole, cannot be looked at: its names may be those of parts that lack.
+        let whole = question.filter(|_| gate.clean() && !gate.partial());
+        let read = whole.map(|question| {
+            let claim = self.answer.read(&mut gate, root.name("answer"), &question);
+            (question, Claim { find_causes: self.causes.unwrap_or(true), ..claim }, tolerances)
+        });
+        match read {
+            Some(read) if gate.clean() => Ok(read),
+            _ => Err(gate.refuse()),
+        }
     }
 }
 

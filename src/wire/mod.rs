@@ -91,7 +91,7 @@ pub fn read_solve(body: &[u8], models: &dyn ModelSource) -> Result<Question, Ref
 /// # Errors
 /// [`Refusal`] with every fault that was found; 404 where the model's id is not known.
 pub fn read_audit(body: &[u8], models: &dyn ModelSource) -> Result<(Question, Claim, Tolerances), Refusal> {
-    typed::<audit::AuditRequest>(body, Document::Audit)?.read(models)
+    read::<audit::AuditRequest>(body, Document::Audit, models)
 }
 
 /// Reads the body of `POST /v1/dynamics`.

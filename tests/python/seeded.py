@@ -17,7 +17,7 @@ import physics_reference as reference
 from cases import FOOT, Stance, walker_stance, walker_urdf
 from scenes import GROUND, SOLES, state_of
 from test_optimum import exported
-from underfoot import build, limits
+from underfoot import Refused, build, limits
 from underfoot import tasks as aims
 
 Array = np.ndarray
@@ -134,7 +134,10 @@ class Good:
 def solve(client, request: dict[str, Any], twice: bool = True) -> Good:
     """The optimum of the exported problem by the active-set solver; `NoAnswer` where it has none, or where its optimality conditions
     do not hold or (`twice`) two runs of it differ."""
-    answer = client.solve({**request, "include": ["problem"]})
+    try:
+        answer = client.solve({**request, "include": ["problem"]})
+    except Refused as refused:
+        raise NoAnswer(f"refused, {refused.code}") from refused
     document = answer.document.get("problem")
     if document is None or answer.status in ("infeasible", "not_reachable"):
         raise NoAnswer(answer.status)
@@ -165,7 +168,10 @@ def solve(client, request: dict[str, Any], twice: bool = True) -> Good:
 
 def with_torque_limit(rng: np.random.Generator, client, request: dict[str, Any]) -> dict[str, Any]:
     """One joint's torque bound set a little below what it would take; whichever joint it falls on."""
-    free = client.solve(request)
+    try:
+        free = client.solve(request)
+    except Refused as refused:
+        raise NoAnswer(f"refused, {refused.code}") from refused
     if free.torques is None:
         raise NoAnswer(free.status)
     large = [i for i, t in enumerate(free.torques) if abs(t) > 2.0]

@@ -62,7 +62,11 @@ def why(fault: str, subject: set[str], good: seeded.Good) -> str:
 
 def judged(client, fault: str, subject: set[str], request, good: seeded.Good, torques: dict[str, float]) -> dict:
     """What the audit makes of one faulty answer."""
-    audit = client.audit(request, answer_of(torques))
+    try:
+        audit = client.audit(request, answer_of(torques))
+    except underfoot.Refused as refused:
+        # No verdict counts as not caught.
+        return {"fault": fault, "equivalent": False, "verdict": f"refused, {refused.code}", "named": False, "alone": False, "nearest": False}
     readings = audit.document["judgements"][0]["comparisons"][0]["torques"]
     off = max(abs(torques[t["name"]] - good.torques[t["name"]]) / t["tolerance"] for t in readings) if readings else np.inf
     ours = lambda h: h.mistake == fault and (not subject or set(h.subject.split(" and ")) == subject or h.subject in subject)  # noqa: E731
@@ -74,7 +78,6 @@ def judged(client, fault: str, subject: set[str], request, good: seeded.Good, to
         "named": any(ours(h) for h in audit.causes),
         "alone": bool(audit.causes) and all(h.mistake == fault for h in audit.causes),
         "nearest": bool(audit.hypotheses) and ours(audit.hypotheses[0]),
-        "reference": audit.document["judgements"][0]["comparisons"][0]["reference"],
     }
 
 
