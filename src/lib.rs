@@ -14,6 +14,7 @@ pub mod solve;
 pub mod certify;
 pub mod explain;
 pub mod reference;
+pub mod audit;
 pub mod compare;
 pub mod cases;
 pub mod wire;

@@ -67,6 +67,59 @@ fn dynamics_prints_what_the_service_answers() {
     assert_eq!(code(&underfoot(&["dynamics", "-"], REQUEST.as_bytes())), 2, "a solve request is no dynamics request");
 }
 
+const AUDIT: &str = include_str!("../schemas/example-audit.json");
+
+/// The audit example, changed.
+fn audit(change: impl FnOnce(&mut serde_json::Value)) -> Vec<u8> {
+    let mut request: serde_json::Value = serde_json::from_str(AUDIT).expect("the audit example");
+    change(&mut request);
+    serde_json::to_vec(&request).expect("JSON")
+}
+
+#[test]
+fn audit_prints_what_the_service_answers() {
+    let service = start(settings(), Catalogue::default());
+    let over_http = post(service.address(), "/v1/audit", AUDIT.as_bytes());
+    assert_eq!(over_http.status, 200, "{}", over_http.text());
+    assert_eq!(over_http.json()["verdict"], "pass");
+    let printed = underfoot(&["audit", "-"], AUDIT.as_bytes());
+    assert_eq!(code(&printed), 0, "{}", text(&printed.stderr));
+    assert!(printed.stdout == over_http.body, "the documents differ");
+    // An answer with the sign of a torque flipped is bad news, and the table says what is wrong with it.
+    let flipped = audit(|request| {
+        let torque = request["answer"]["joints"][3]["torque"].as_f64().expect("a torque");
+        request["answer"]["joints"][3]["torque"] = (-torque).into();
+    });
+    assert_eq!(code(&underfoot(&["audit", "-"], &flipped)), 1);
+    let table = text(&underfoot(&["audit", "-", "--table"], &flipped).stdout);
+    for needed in ["Verdict: fail", "BROKEN", "not_comparable", "Torques that differ", "consistent with the torque of left_knee with its sign flipped"] {
+        assert!(table.contains(needed), "{needed} is missing in\n{table}");
+    }
+    assert!(table.lines().all(|line| line.chars().count() <= 100), "{table}");
+}
+
+#[test]
+fn unusable_audits_name_the_member() {
+    let service = start(settings(), Catalogue::default());
+    let cases: [(Vec<u8>, u16, &str); 8] = [
+        (audit(|r| r["request"]["tick"]["length"] = (-1.0).into()), 422, "/request/tick/length"),
+        (audit(|r| r["request"]["model"] = "no-such-model".into()), 404, "/request/model"),
+        (audit(|r| r["answer"]["joints"][2]["name"] = "no such joint".into()), 422, "/answer/joints/2/name"),
+        (audit(|r| r["answer"]["joints"][2]["torque"] = "many".into()), 422, "/answer/joints/2/torque"),
+        (audit(|r| r["answer"]["soles"][1]["name"] = "middle".into()), 422, "/answer/soles/1/name"),
+        (audit(|r| r["answer"]["tasks"] = serde_json::json!([{ "name": "base", "desired": [1.0] }])), 422, "/answer/tasks"),
+        (audit(|r| r["tolerances"]["relative"] = 0.0.into()), 422, "/tolerances/relative"),
+        (audit(|r| drop(r.as_object_mut().expect("an object").remove("answer"))), 422, "/answer"),
+    ];
+    for (body, status, pointer) in cases {
+        let reply = post(service.address(), "/v1/audit", &body);
+        let problem = reply.problem(status);
+        assert_eq!(reply.json()["faults"][0]["pointer"], pointer, "{problem:?}");
+    }
+    let lacking = audit(|r| drop(r["answer"]["joints"].as_array_mut().expect("an array").pop()));
+    assert_eq!(code(&underfoot(&["audit", "-"], &lacking)), 2);
+}
+
 #[test]
 fn a_registered_model_answers_like_an_inline_one() {
     let service = start(settings(), Catalogue::default());

@@ -4,8 +4,8 @@ use std::fs;
 use std::path::{Path, PathBuf};
 
 /// Modules in order; each may use only those above it.
-const ORDER: [&str; 16] = [
-    "spatial", "conic", "model", "dynamics", "contact", "identify", "problem", "solve", "certify", "explain", "reference", "compare", "cases",
+const ORDER: [&str; 17] = [
+    "spatial", "conic", "model", "dynamics", "contact", "identify", "problem", "solve", "certify", "explain", "reference", "audit", "compare", "cases",
     "wire", "http", "cli",
 ];
 
@@ -121,7 +121,7 @@ fn files_stay_short_and_safe() {
             faults.push(format!("src/{path} has unsafe code"));
         }
         let physics = [
-            "spatial", "conic", "model", "dynamics", "contact", "identify", "problem", "solve", "certify", "explain", "reference", "compare",
+            "spatial", "conic", "model", "dynamics", "contact", "identify", "problem", "solve", "certify", "explain", "reference", "audit", "compare",
             "cases",
         ];
         if physics.contains(&module_of(&path)) {

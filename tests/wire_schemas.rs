@@ -26,6 +26,7 @@ fn files() -> Vec<(String, String)> {
     let mut files: Vec<(String, String)> = schema_names().iter().map(schema).collect();
     files.push(("openapi.json".to_string(), openapi()));
     files.push(("example-solve.json".to_string(), laid_out(&example(), 0) + "\n"));
+    files.push(("example-audit.json".to_string(), laid_out(&audit_example(), 0) + "\n"));
     files
 }
 
@@ -186,6 +187,32 @@ fn example_tasks(center: [f64; 3], half: f64) -> Value {
     ])
 }
 
+/// A controller that answers the example as the reference does, to a millionth.
+fn audit_example() -> Value {
+    let question = read_solve(&bytes(&example()), &Nothing).expect("the example is good");
+    let answer = underfoot::reference::solve(&question, &Default::default()).expect("the example has an answer");
+    let motion = answer.motion.expect("the example is solved");
+    let base = motion.base_acceleration.expect("a floating base");
+    let values = motion.torques.iter().zip(&motion.joint_accelerations);
+    let joints = question.model.joints.iter().zip(values).map(|(joint, (torque, acceleration))| {
+        json!({ "name": joint.name, "torque": rounded(*torque), "acceleration": rounded(*acceleration) })
+    });
+    let soles = answer.soles.iter().map(|sole| {
+        let wrench = sole.wrench.expect("the example is solved");
+        json!({ "name": sole.name, "wrench": { "force": rounded3(&wrench.force), "moment": rounded3(&wrench.moment) } })
+    });
+    json!({
+        "format": "underfoot/1",
+        "request": example(),
+        "answer": {
+            "joints": joints.collect::<Vec<_>>(),
+            "base_acceleration": { "linear": rounded3(&base[0]), "angular": rounded3(&base[1]) },
+            "soles": soles.collect::<Vec<_>>(),
+        },
+        "tolerances": { "relative": 1e-4 },
+    })
+}
+
 #[test]
 fn the_example_is_accepted() {
     let text = std::fs::read(directory().join("example-solve.json")).expect("the example is checked in");
@@ -198,7 +225,7 @@ fn the_example_is_accepted() {
 #[test]
 fn requests_follow_their_schemas() {
     let requests = [
-        ("solve-request", solve_request()), ("solve-request", example()),
+        ("solve-request", solve_request()), ("solve-request", example()), ("audit-request", audit_example()),
         ("dynamics-request", dynamics_request()), ("model-request", model_request()),
         ("identify-request", identify_request()),
     ];

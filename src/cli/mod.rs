@@ -2,6 +2,8 @@
 //!
 //! Exit codes, the same for every command: 0 good, 1 the answer is bad news, 2 unusable input.
 
+mod audit;
+mod audit_table;
 mod batch;
 mod compare;
 mod demo;
@@ -37,6 +39,8 @@ enum Command {
     Serve(Box<serve::Serve>),
     /// Answer a solve request from a file; prints what POST /v1/solve answers.
     Solve(solve::Solve),
+    /// Judge a controller's own answer from a file; prints what POST /v1/audit answers.
+    Audit(audit::Audit),
     /// Rigid-body terms of a state from a file; prints what POST /v1/dynamics answers.
     Dynamics(dynamics::Dynamics),
     /// Answer many states, one JSON line each; prints what POST /v1/batch answers.
@@ -79,6 +83,7 @@ pub fn main() -> ExitCode {
     match Arguments::parse().command {
         Command::Serve(command) => command.run(),
         Command::Solve(command) => command.run(),
+        Command::Audit(command) => command.run(),
         Command::Dynamics(command) => command.run(),
         Command::Batch(command) => command.run(),
         Command::Export(command) => command.run(),

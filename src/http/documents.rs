@@ -8,9 +8,11 @@ use std::time::{Duration, Instant};
 use super::lines::LineWork;
 use super::models::Models;
 use super::settings::MODELS_KEPT;
+use crate::audit::{self, AuditError};
 use crate::compare;
 use crate::explain::ExplainError;
 use crate::identify::Session;
+use crate::problem::question::Question;
 use crate::reference::answer::Status;
 use crate::reference::{self, Trouble};
 use crate::solve::SolveError;
@@ -34,6 +36,8 @@ pub enum Errand {
     Compare,
     /// The ground from samples within the request.
     Identify,
+    /// A controller's own answer, judged.
+    Audit,
 }
 
 /// A document, and what the transport needs to know of it.
@@ -100,6 +104,7 @@ impl Work for Catalogue {
             Errand::Compare => compare(body, &self.models),
             Errand::Export => export(body, &self.models, cancel),
             Errand::Identify => identify(body, &self.models),
+            Errand::Audit => audit(body, &self.models, cancel),
         }
     }
 
@@ -216,6 +221,35 @@ fn finished(session: Session, fingerprint: &str, mut clock: Clock) -> Result<Doc
     let body = wire::write_identify(&setup, &session.finish(), fingerprint)?;
     clock.lap("write");
     Ok(Document { body, model: None, timings: clock.laps })
+}
+
+fn audit(body: &[u8], models: &dyn ModelSource, cancel: &Arc<AtomicBool>) -> Result<Document, Refusal> {
+    let mut clock = Clock::start();
+    let (question, claim, tolerances) = wire::read_audit(body, models)?;
+    clock.lap("read");
+    let report = audit::audit(&question, &claim, &tolerances, cancel).map_err(|error| audit_refusal(&question, error))?;
+    clock.lap("audit");
+    let body = wire::write_audit(&question, &report, &wire::fingerprint(body));
+    clock.lap("write");
+    Ok(Document { body, model: None, timings: clock.laps })
+}
+
+/// The same of an audit, whose question stands in the member `request`.
+fn audit_refusal(question: &Question, error: AuditError) -> Refusal {
+    match error {
+        AuditError::Trouble(trouble) => {
+            let mut refusal = refusal(&trouble);
+            refusal.faults.iter_mut().for_each(|fault| fault.pointer.insert_str(0, "/request"));
+            refusal
+        }
+        AuditError::Targets { task, expected, found } => Refusal::unusable(vec![Fault {
+            pointer: "/answer/tasks".to_owned(),
+            expected: format!("{expected} desired values for the task {:?}, one per row", question.tasks[task].name),
+            got: found.to_string(),
+            line: None,
+        }]),
+        AuditError::Shape => Refusal::new(500, "defect", "A defect of this service", error.to_string()),
+    }
 }
 
 /// A question that passed the gate and yet leads nowhere: the member at fault is named where there is one.

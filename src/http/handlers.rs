@@ -64,6 +64,11 @@ pub async fn identify(State(shared): State<Arc<Shared>>, request: Request) -> Re
     Ok(respond(result?, waited))
 }
 
+/// `POST /v1/audit`.
+pub async fn audit(State(shared): State<Arc<Shared>>, JsonBytes(body): JsonBytes) -> Result<Response, Problem> {
+    run(shared, Errand::Audit, body).await
+}
+
 /// `GET /v1/models/{id}`.
 pub async fn show_model(State(shared): State<Arc<Shared>>, Path(id): Path<String>) -> Result<Response, Problem> {
     match shared.work.model(&id) {

@@ -36,6 +36,7 @@ pub fn router(settings: Settings, work: Arc<dyn Work>) -> Router {
         .route("/v1/export", post(handlers::export))
         .route("/v1/batch", post(batch::batch))
         .route("/v1/identify", post(handlers::identify))
+        .route("/v1/audit", post(handlers::audit))
         .route("/health", get(handlers::health))
         .route("/schemas", get(handlers::schemas))
         .route("/schemas/{name}", get(handlers::schema))

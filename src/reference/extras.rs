@@ -32,9 +32,7 @@ pub(super) fn add(answer: &mut Answer, original: &Question, work: &Work, cancel:
 fn fill(answer: &mut Answer, original: &Question, work: &Work, cancel: &Arc<AtomicBool>) -> Result<(), Trouble> {
     let include = &work.question.include;
     if answer.status == Status::Infeasible {
-        if infeasible::feasible_without(&work.assembly.hierarchy, &soft_contacts(work), Some(cancel))? {
-            answer.status = Status::NotReachable;
-        }
+        tell_unreachable(answer, work, cancel)?;
         if include.explain {
             answer.explained = Some(Box::new(explained(work, cancel)?));
         }
@@ -55,6 +53,15 @@ fn fill(answer: &mut Answer, original: &Question, work: &Work, cancel: &Arc<Atom
     if let Some(aim) = &include.spread {
         let mut evaluate = |question: &Question| outcome(question, cancel);
         answer.spread = Some(Box::new(spread::spread(original, aim, &mut evaluate)?));
+    }
+    Ok(())
+}
+
+/// Tells a request that only the tick stands in the way of from one that contradicts itself.
+pub(super) fn tell_unreachable(answer: &mut Answer, work: &Work, cancel: &Arc<AtomicBool>) -> Result<(), Trouble> {
+    let infeasible = answer.status == Status::Infeasible;
+    if infeasible && infeasible::feasible_without(&work.assembly.hierarchy, &soft_contacts(work), Some(cancel))? {
+        answer.status = Status::NotReachable;
     }
     Ok(())
 }

@@ -37,7 +37,7 @@ pub fn predict(question: &Question) -> Result<Question, Trouble> {
 }
 
 /// Rest poses that depend on the present state become plain poses.
-fn fix_rest_poses(question: &mut Question) -> Result<(), Trouble> {
+pub(super) fn fix_rest_poses(question: &mut Question) -> Result<(), Trouble> {
     let scene = Scene::new(question)?;
     let model = question.model.clone();
     for (index, contact) in question.contacts.iter_mut().enumerate() {

@@ -65,12 +65,17 @@ impl Trouble {
     }
 }
 
-/// Everything worked out on the way, for reports and tests.
-pub(crate) struct Work {
-    question: Question,
-    scene: Scene,
-    assembly: Assembly,
-    solution: HierarchySolution,
+/// Everything worked out on the way to an answer.
+#[derive(Debug, Clone)]
+pub struct Work {
+    /// The question as it stands once its latency has been dealt with.
+    pub question: Question,
+    /// Its state worked out.
+    pub scene: Scene,
+    /// As numbers.
+    pub assembly: Assembly,
+    /// What the solver made of them.
+    pub solution: HierarchySolution,
 }
 
 /// Answers `question`. Setting `cancel` ends the work early with [`Status::Cancelled`].
@@ -81,8 +86,41 @@ pub fn solve(question: &Question, cancel: &Arc<AtomicBool>) -> Result<Answer, Tr
     Ok(answer)
 }
 
+/// The solver's answer to `question` without certificate and report, the assembled problem changed by `adjust` first (other
+/// targets for the same tasks).
+///
+/// # Errors
+/// As [`solve`].
+pub fn work_on(question: &Question, adjust: impl FnOnce(&mut Assembly), cancel: &Arc<AtomicBool>) -> Result<Work, Trouble> {
+    let (question, scene, mut assembly) = assembled(question, cancel)?;
+    adjust(&mut assembly);
+    finished(question, scene, assembly, cancel)
+}
+
+/// The certified answer that `work` leads to, without the extras a question may ask for.
+///
+/// # Errors
+/// As [`solve`].
+pub fn answer_from(work: &Work, cancel: &Arc<AtomicBool>) -> Result<Answer, Trouble> {
+    let mut answer = answer(work);
+    extras::tell_unreachable(&mut answer, work, cancel)?;
+    Ok(answer)
+}
+
+/// Rest poses that depend on the present state become plain poses, so that the state can be changed under them.
+///
+/// # Errors
+/// [`Trouble::Scene`] where one cannot be found.
+pub fn fix_rest_poses(question: &mut Question) -> Result<(), Trouble> {
+    latency::fix_rest_poses(question)
+}
+
 fn work(question: &Question, cancel: &Arc<AtomicBool>) -> Result<Work, Trouble> {
     let (question, scene, assembly) = assembled(question, cancel)?;
+    finished(question, scene, assembly, cancel)
+}
+
+fn finished(question: Question, scene: Scene, assembly: Assembly, cancel: &Arc<AtomicBool>) -> Result<Work, Trouble> {
     let solution = solve::solve(&assembly.hierarchy, &solve::Options::default(), Some(cancel))?;
     Ok(Work { question, scene, assembly, solution })
 }

@@ -95,7 +95,7 @@ impl Request for CompareRequest {
 
     fn read(self, mut gate: Gate, models: &dyn ModelSource) -> Result<CompareQuestion, Refusal> {
         let at = At::ROOT;
-        let Some(model) = find(&mut gate, &self.model, models)? else { return Err(gate.refuse()) };
+        let Some(model) = find(&mut gate, at, &self.model, models)? else { return Err(gate.refuse()) };
         let model = loaded(&mut gate, at.name("loads"), model, self.loads.as_deref());
         let (state, velocity_axes) = self.state.read(&mut gate, at.name("state"), &model);
         let mut frames = Vec::new();

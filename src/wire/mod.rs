@@ -3,6 +3,8 @@
 
 mod aim;
 mod answer;
+mod audit;
+mod audit_answer;
 mod batch;
 mod canonical;
 mod common;
@@ -43,6 +45,8 @@ mod withheld;
 
 use std::sync::Arc;
 
+use crate::audit::report::AuditReport;
+use crate::audit::{Claim, Tolerances};
 use crate::compare::Comparison;
 use crate::model::Model;
 use crate::problem::question::{DynamicsQuestion, Question};
@@ -90,6 +94,14 @@ pub fn read_model(body: &[u8]) -> Result<Model, Refusal> {
 /// [`Refusal`] with every fault that was found; 404 where the model's id is not known.
 pub fn read_solve(body: &[u8], models: &dyn ModelSource) -> Result<Question, Refusal> {
     read::<solve::SolveRequest>(body, Document::Solve, models)
+}
+
+/// Reads the body of `POST /v1/audit`: the question, the controller's answer, the tolerances.
+///
+/// # Errors
+/// [`Refusal`] with every fault that was found; 404 where the model's id is not known.
+pub fn read_audit(body: &[u8], models: &dyn ModelSource) -> Result<(Question, Claim, Tolerances), Refusal> {
+    read::<audit::AuditRequest>(body, Document::Audit, models)
 }
 
 /// Reads the body of `POST /v1/dynamics`.
@@ -161,6 +173,11 @@ pub fn write_answer(question: &Question, answer: &Answer, fingerprint: &str) -> 
 /// The answer to an export request, which is a solve request.
 pub fn write_export(question: &Question, program: &Program, fingerprint: &str) -> Vec<u8> {
     market::write(question, program, fingerprint)
+}
+
+/// The answer to an audit request.
+pub fn write_audit(question: &Question, report: &AuditReport, fingerprint: &str) -> Vec<u8> {
+    audit_answer::write(question, report, fingerprint)
 }
 
 /// The answer to a dynamics request.

@@ -43,6 +43,11 @@ fn paths() -> Value {
             "The answer; `infeasible`, `not_reachable`, `ill_posed`, `inaccurate` and `cancelled` are \
              answers too, see `status`. Timings travel in the Server-Timing header."
         ) },
+        "/v1/audit": { "post": post(
+            "audit", "Judges a controller's own answer", "AuditRequest", "AuditAnswer",
+            "What the torques lead to, every limit, what is lost against the reference and what may have gone wrong; \
+             `pass`, `fail` and `undecided` are all answers, see `verdict`."
+        ) },
         "/v1/compare": { "post": post(
             "compare", "Your rigid-body terms beside ours, and the convention that explains the difference", "CompareRequest",
             "CompareAnswer", "The comparison; see `verdict`."

@@ -5,7 +5,9 @@ use serde_json::{Map, Value, json};
 
 use super::kinds::KindTable;
 use super::strict::MAX_MAGNITUDE;
-use super::{answer, batch, compare, contact, dynamics, identify, limit, market, model, problem, robot, solve, task, treatment};
+use super::{
+    answer, audit, audit_answer, batch, compare, contact, dynamics, identify, limit, market, model, problem, robot, solve, task, treatment,
+};
 
 /// Objects whose members depend on a `kind`.
 const TABLES: [&KindTable; 6] = [
@@ -23,6 +25,7 @@ const NAMES: &[&str] = &[
     "batch-request", "batch-line", "batch-answer", "export-answer",
     "compare-request", "compare-answer",
     "identify-request", "identify-answer",
+    "audit-request", "audit-answer",
 ];
 
 /// Names that [`schema`] knows.
@@ -72,6 +75,8 @@ fn plain(name: &str) -> Option<(Value, bool)> {
         "compare-answer" => (writing().into_root_schema_for::<compare::CompareOut<'_>>(), false),
         "identify-request" => (reading().into_root_schema_for::<identify::IdentifyRequest>(), true),
         "identify-answer" => (writing().into_root_schema_for::<identify::IdentifyAnswerOut<'_>>(), false),
+        "audit-request" => (reading().into_root_schema_for::<audit::AuditRequest>(), true),
+        "audit-answer" => (writing().into_root_schema_for::<audit_answer::AuditOut<'_>>(), false),
         "model" => (writing().into_root_schema_for::<robot::ModelOut<'_>>(), false),
         "dynamics-answer" => (writing().into_root_schema_for::<dynamics::DynamicsAnswerOut<'_>>(), false),
         "solve-answer" => (writing().into_root_schema_for::<answer::AnswerOut<'_>>(), false),

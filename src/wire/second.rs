@@ -20,6 +20,7 @@ const MAX_ERRORS: usize = 200;
 #[derive(Debug, Clone, Copy)]
 pub(super) enum Document {
     Solve,
+    Audit,
     Dynamics,
     Model,
     Batch,
@@ -28,12 +29,13 @@ pub(super) enum Document {
 }
 
 impl Document {
-    const COUNT: usize = 6;
+    const COUNT: usize = 7;
 
     /// Name of its schema.
     fn name(self) -> &'static str {
         match self {
             Document::Solve => "solve-request",
+            Document::Audit => "audit-request",
             Document::Dynamics => "dynamics-request",
             Document::Model => "model-request",
             Document::Batch => "batch-request",
@@ -57,6 +59,17 @@ impl Document {
                 ("/yours", json!({})),
             ],
             Document::Identify => vec![format, ("/soles", json!([]))],
+            Document::Audit => vec![
+                format,
+                ("/request", json!({})),
+                ("/request/format", json!("underfoot/1")),
+                ("/request/model/urdf", text.clone()),
+                ("/request/model", text),
+                ("/request/state", json!({})),
+                ("/request/tick", json!({ "length": 1e-6 })),
+                ("/answer", json!({})),
+                ("/answer/joints", json!([])),
+            ],
             Document::Solve | Document::Dynamics => vec![
                 format,
                 ("/model/urdf", text.clone()),

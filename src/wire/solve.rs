@@ -143,15 +143,24 @@ impl Request for SolveRequest {
     type Question = Question;
 
     fn read(self, mut gate: Gate, models: &dyn ModelSource) -> Result<Question, Refusal> {
-        let at = At::ROOT;
-        let tick = self.tick.read(&mut gate, at.name("tick"));
-        let spread = self.spread.as_ref().map(|spread| spread.read(&mut gate, at.name("spread")));
-        let Some(model) = find(&mut gate, &self.model, models)? else { return Err(gate.refuse()) };
-        let model = loaded(&mut gate, at.name("loads"), model, self.loads.as_deref());
-        let (state, velocity_axes) = self.state.read(&mut gate, at.name("state"), &model);
+        let Some(question) = self.read_in(&mut gate, At::ROOT, models)? else { return Err(gate.refuse()) };
+        gate.finish()?;
+        Ok(question)
+    }
+}
+
+impl SolveRequest {
+    /// The question, which may be part of another document; to be used only where the gate found nothing wrong. None where the
+    /// robot cannot be used.
+    pub(super) fn read_in(self, gate: &mut Gate, at: At<'_>, models: &dyn ModelSource) -> Result<Option<Question>, Refusal> {
+        let tick = self.tick.read(gate, at.name("tick"));
+        let spread = self.spread.as_ref().map(|spread| spread.read(gate, at.name("spread")));
+        let Some(model) = find(gate, at, &self.model, models)? else { return Ok(None) };
+        let model = loaded(gate, at.name("loads"), model, self.loads.as_deref());
+        let (state, velocity_axes) = self.state.read(gate, at.name("state"), &model);
         let scene = Scene { model: &model, state: &state, tick };
         let bodies = self.contacts.as_deref().unwrap_or_default();
-        let contacts = contacts(&mut gate, at.name("contacts"), bodies, &scene);
+        let contacts = contacts(gate, at.name("contacts"), bodies, &scene);
         let around = Surroundings {
             model: &model,
             tick,
@@ -159,20 +168,17 @@ impl Request for SolveRequest {
             contacts: &contacts,
             complete: !gate.incomplete(at.name("contacts")),
         };
-        let (limits, tasks) = self.aims(&mut gate, at, &around);
-        let external = ExternalBody::read_all(&mut gate, at.name("external"), self.external.as_deref(), &model);
-        let latency = self.latency.as_ref().map(|latency| latency.read(&mut gate, at.name("latency"), &model));
+        let (limits, tasks) = self.aims(gate, at, &around);
+        let external = ExternalBody::read_all(gate, at.name("external"), self.external.as_deref(), &model);
+        let latency = self.latency.as_ref().map(|latency| latency.read(gate, at.name("latency"), &model));
         let include = Include { spread, ..include(self.include.as_deref().unwrap_or_default()) };
-        gate.finish()?;
         let contacts = contacts.into_iter().flatten().collect();
         let gravity = Vec3::from(self.gravity.unwrap_or(GRAVITY));
-        Ok(Question {
+        Ok(Some(Question {
             model, state, velocity_axes, gravity, tick, contacts, limits, tasks, external, latency, include,
-        })
+        }))
     }
-}
 
-impl SolveRequest {
     fn aims(
         &self,
         gate: &mut Gate,
@@ -217,7 +223,7 @@ impl Request for SolveForm {
     type Question = Arc<Model>;
 
     fn read(self, mut gate: Gate, models: &dyn ModelSource) -> Result<Arc<Model>, Refusal> {
-        find(&mut gate, &self.0.model, models)?.ok_or_else(|| gate.refuse())
+        find(&mut gate, At::ROOT, &self.0.model, models)?.ok_or_else(|| gate.refuse())
     }
 }
 
@@ -225,7 +231,7 @@ impl Request for DynamicsForm {
     type Question = Arc<Model>;
 
     fn read(self, mut gate: Gate, models: &dyn ModelSource) -> Result<Arc<Model>, Refusal> {
-        find(&mut gate, &self.0.model, models)?.ok_or_else(|| gate.refuse())
+        find(&mut gate, At::ROOT, &self.0.model, models)?.ok_or_else(|| gate.refuse())
     }
 }
 
@@ -234,7 +240,7 @@ impl Request for DynamicsRequest {
 
     fn read(self, mut gate: Gate, models: &dyn ModelSource) -> Result<DynamicsQuestion, Refusal> {
         let at = At::ROOT;
-        let Some(model) = find(&mut gate, &self.model, models)? else { return Err(gate.refuse()) };
+        let Some(model) = find(&mut gate, at, &self.model, models)? else { return Err(gate.refuse()) };
         let model = loaded(&mut gate, at.name("loads"), model, self.loads.as_deref());
         let (state, velocity_axes) = self.state.read(&mut gate, at.name("state"), &model);
         let list = at.name("frames");
@@ -285,10 +291,10 @@ impl TickBody {
 /// id is a refusal of its own where nothing else was found wrong with the form of the request.
 pub(super) fn find(
     gate: &mut Gate,
+    at: At<'_>,
     model: &TextOr<InlineModel>,
     models: &dyn ModelSource,
 ) -> Result<Option<Arc<Model>>, Refusal> {
-    let at = At::ROOT;
     let here = at.name("model");
     let id = match model {
         TextOr::Object(inline) => return Ok(inline.find(gate, here, models)),

@@ -23,6 +23,7 @@ _table: list[tuple[str, str]] = []
 
 
 def pytest_configure(config: pytest.Config) -> None:
+    config.addinivalue_line("markers", "seeded: audits of answers with one fault each; scales with UNDERFOOT_STATES and reports rows of the dated table")
     config.addinivalue_line("markers", "campaign: scales with UNDERFOOT_CAMPAIGN and reports a row of the dated table")
 
 

@@ -8,6 +8,7 @@ import random
 
 import pytest
 import underfoot
+from underfoot import build
 from underfoot.transport import plain
 
 import scenes
@@ -120,7 +121,10 @@ def documents(client, walker):
     wrench = plain(scenes.standing(client, walker, facets="wrench"))
     wrench["model"] = walker.id
     dynamics = {"model": walker.id, "state": solve["state"]}
-    return [("/v1/solve", solve), ("/v1/solve", wrench), ("/v1/dynamics", dynamics), ("/v1/models", plain(dict(walker.source)))]
+    torques = [(joint, 0.0) for joint in walker.joints]
+    answer = build.controller_answer(torques, wrenches={"left_sole": [0, 0, 190, 0, 0, 0]}, targets={"balance": [0.0] * 6})
+    audit = {"format": build.FORMAT, "request": wrench, "answer": plain(answer), "tolerances": {"relative": 1e-3}}
+    return [("/v1/solve", solve), ("/v1/solve", wrench), ("/v1/audit", audit), ("/v1/dynamics", dynamics), ("/v1/models", plain(dict(walker.source)))]
 
 
 def test_mutated_requests(client, walker, factor, row):

@@ -263,7 +263,7 @@ impl IdentifyRequest {
         }
         let model = match &self.model {
             None => None,
-            Some(model) => match find(&mut gate, model, models)? {
+            Some(model) => match find(&mut gate, at, model, models)? {
                 Some(model) => Some(model),
                 None => return Err(gate.refuse()),
             },

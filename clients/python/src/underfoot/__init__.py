@@ -2,6 +2,7 @@
 
 from . import build, limits, tasks
 from .answer import Answer, Comparison, Dynamics, FrameTerms, Sole, Task
+from .audit import Audit, Hypothesis
 from .batch import Batch, Line
 from .client import Client, Model
 from .errors import Busy, Fault, Garbled, NotFinite, Refused, UnderfootError, Unreachable
@@ -9,6 +10,7 @@ from .identified import Identification, IdentifiedSole, IdentifiedStance, Parame
 
 __all__ = [
     "Answer",
+    "Audit",
     "Batch",
     "Busy",
     "Client",
@@ -17,6 +19,7 @@ __all__ = [
     "Fault",
     "FrameTerms",
     "Garbled",
+    "Hypothesis",
     "Identification",
     "IdentifiedSole",
     "IdentifiedStance",

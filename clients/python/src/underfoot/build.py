@@ -288,3 +288,30 @@ def request(
         tasks=tasks,
         **more,
     )
+
+
+# A controller's answer, for audits
+
+
+def controller_answer(
+    torques: Sequence[tuple[str, float]],
+    *,
+    accelerations: Sequence[tuple[str, float]] = (),
+    base_acceleration: ArrayLike | None = None,
+    wrenches: Mapping[str, ArrayLike] | None = None,
+    targets: Mapping[str, ArrayLike] | None = None,
+) -> Part:
+    """What a controller answered. `torques`: (name, N m or N), every actuated joint once. Optional, where it says them:
+    `accelerations` (name, rad/s^2 or m/s^2); `base_acceleration`, six numbers in the request's velocity axes; `wrenches` by
+    sole name, six numbers (N, N m; three on a point sole) at the tick's end, of the ground on the robot, world axes; `targets` by task
+    name, the desired value of each row."""
+    expected = dict(accelerations)
+    joints = [given(name=n, torque=float(t), acceleration=expected.pop(n, None)) for n, t in torques]
+    joints += [{"name": n, "acceleration": float(a)} for n, a in expected.items()]
+    soles = []
+    for name, value in (wrenches or {}).items():
+        flat = np.asarray(value, dtype=np.float64).reshape(-1)
+        moment = None if flat.shape == (3,) else flat[3:].tolist()
+        soles.append({"name": name, "wrench": given(force=flat[:3].tolist(), moment=moment)})
+    tasks = [{"name": name, "desired": numbers(value)} for name, value in (targets or {}).items()]
+    return given(joints=joints, base_acceleration=six(base_acceleration), soles=soles or None, tasks=tasks or None)

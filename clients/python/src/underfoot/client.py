@@ -8,6 +8,7 @@ from types import TracebackType
 from typing import Any, Iterable, Mapping, Sequence
 
 from .answer import Answer, Comparison, Dynamics, shaped
+from .audit import Audit, claim_of
 from .batch import Batch
 from .build import FORMAT
 from .errors import Refused
@@ -102,6 +103,33 @@ class Client:
             document["model"] = model.id
         reply = self._post("/v1/solve", document, model)
         return Answer.read(reply.document(), reply.body, reply.headers.get("server-timing", ""))
+
+    def audit(
+        self,
+        request: Mapping[str, Any],
+        answer: Mapping[str, Any] | Answer,
+        *,
+        tolerances: Mapping[str, float] | None = None,
+        causes: bool | None = None,
+    ) -> Audit:
+        """Judges a controller's own `answer` to a solve request.
+
+        `answer`: see `build.controller_answer`; an `Answer` of the service stands for its own torques, accelerations and
+        wrenches. `tolerances`: see the schema `audit-request`, e.g. `{"relative": 1e-3, "torque": 0.05}`. `causes` False:
+        do not look for what may have gone wrong.
+        """
+        question = {"format": FORMAT, **request}
+        model = question.get("model")
+        if isinstance(model, Model):
+            question["model"] = model.id
+        claim = claim_of(answer) if isinstance(answer, Answer) else answer
+        document: dict[str, Any] = {"format": FORMAT, "request": question, "answer": claim}
+        if tolerances is not None:
+            document["tolerances"] = dict(tolerances)
+        if causes is not None:
+            document["causes"] = causes
+        reply = self._post("/v1/audit", document, model)
+        return Audit.read(reply.document(), reply.body, reply.headers.get("server-timing", ""))
 
     def export(self, request: Mapping[str, Any] | None = None, /, **members: Any) -> dict[str, str]:
         """The assembled problem of a solve request as texts by file name: Matrix Market exchange format, and `names.json`."""
