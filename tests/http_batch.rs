@@ -70,6 +70,17 @@ impl Work for Injected {
         Ok(Arc::new(Lines(Arc::clone(&self.0))))
     }
 
+    fn log(
+        &self,
+        _: Option<&[u8]>,
+        _: &mut dyn std::io::BufRead,
+        _: underfoot::wire::LogForm,
+        _: &Arc<AtomicBool>,
+        _: &mut dyn FnMut(u64),
+    ) -> Result<Document, Refusal> {
+        Err(Refusal::new(404, "unknown-path", "No logs here", "this work answers batches"))
+    }
+
     fn model(&self, _: &str) -> Option<Vec<u8>> {
         None
     }

@@ -107,7 +107,8 @@ fn the_description_lists_what_is_served() {
     found.sort();
     let served = [
         "get /health", "get /openapi.json", "get /schemas", "get /schemas/{name}", "get /v1/models/{id}",
-        "post /v1/dynamics", "post /v1/identify", "post /v1/models", "post /v1/solve",
+        "post /v1/audit", "post /v1/batch", "post /v1/compare", "post /v1/dynamics", "post /v1/export", "post /v1/identify",
+        "post /v1/models", "post /v1/solve",
     ];
     assert_eq!(found, served);
     for line in served {
