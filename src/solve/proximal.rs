@@ -26,7 +26,7 @@ use super::system::{Kind, inside};
 /// Penalty sigma of the first round; a round that gains little makes the next stiffer.
 const PENALTY: f64 = 10.0;
 const STIFFER: f64 = 10.0;
-const LARGEST_PENALTY: f64 = 1e6;
+const LARGEST_PENALTY: f64 = 1e10;
 /// Pull rho on what costs and on what does not; each round makes it looser.
 const PULL: f64 = 1e-2;
 const FREE_PULL: f64 = 1e-4;
