@@ -33,7 +33,7 @@ use crate::reference::{self, Trouble, UNREFINED_BOUND, Work};
 use crate::spatial::{Vec3, Wrench};
 use implied::Consequence;
 use report::{AuditReport, Comparison, Judgement, Reason, ReasonKind, TargetSource, TorqueReading, Verdict};
-pub use tolerances::Tolerances;
+pub use tolerances::{Allowance, Tolerances};
 use torques::Determined;
 
 /// What a controller answered.
@@ -133,6 +133,15 @@ pub fn audit(question: &Question, claim: &Claim, tolerances: &Tolerances, cancel
     };
     let rule_dependent = judgements.iter().any(|judgement| judgement.verdict != verdict);
     Ok(AuditReport { verdict, rule_dependent, judgements, causes, tolerances: *tolerances })
+}
+
+/// What counts as no difference of every torque, acceleration and wrench that answers `question`.
+///
+/// # Errors
+/// Where the question leads nowhere, or the work was called off.
+pub fn allowances(question: &Question, tolerances: &Tolerances, cancel: &Arc<AtomicBool>) -> Result<Vec<Allowance>, Trouble> {
+    let work = reference::work_on(question, |_| {}, cancel)?;
+    Ok(tolerances.allowances(&work.assembly.layout.columns))
 }
 
 /// Puts the controller's own targets in place of the request's, in targets and rows alike.

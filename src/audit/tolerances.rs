@@ -63,10 +63,34 @@ impl Tolerances {
         own.unwrap_or(self.relative * column.scale)
     }
 
+    /// What counts as no difference of every torque, acceleration and wrench among `columns`.
+    pub fn allowances(&self, columns: &[Column]) -> Vec<Allowance> {
+        let of = |column: &Column| {
+            let tolerance = match column.name.split(':').next()? {
+                "torque" => self.of_torque(column),
+                "acceleration" | "wrench" => self.of_claim(column),
+                _ => return None,
+            };
+            Some(Allowance { name: column.name.clone(), unit: column.unit, tolerance })
+        };
+        columns.iter().filter_map(of).collect()
+    }
+
     /// Tolerance of a limit's violation, in the limit's unit.
     pub fn of_limit(&self, natural: f64) -> f64 {
         self.limit.unwrap_or(self.relative) * natural
     }
+}
+
+/// Largest difference of one named number that counts as none.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Allowance {
+    /// What, as the columns of the problem are named, e.g. `torque:left_knee`, `acceleration:base:vx` or `wrench:left:fz`.
+    pub name: String,
+    /// Unit.
+    pub unit: &'static str,
+    /// The difference.
+    pub tolerance: f64,
 }
 
 /// True where a difference counts as none; what is no number never does.

@@ -18,8 +18,8 @@ use crate::wire;
 
 /// Lines handed out ahead of the one whose answer is due, for each core.
 const AHEAD: usize = 2;
-/// The status of a good answer to a solve, and of every answer to what has no statuses.
-const GOOD: [&str; 2] = ["solved", "answered"];
+/// The status of a good answer to a solve, the verdict of a good audit, and the status of every answer to what has none.
+const GOOD: [&str; 3] = ["solved", "pass", "answered"];
 
 /// Arguments of `underfoot batch`.
 #[derive(Debug, Args)]

@@ -1,6 +1,6 @@
 //! Reading requests and writing documents, for every command.
 
-use std::io::{self, ErrorKind, Read, Write};
+use std::io::{self, ErrorKind, IsTerminal, Read, Write};
 use std::path::Path;
 
 use super::Outcome;
@@ -37,6 +37,41 @@ pub fn print(bytes: &[u8], outcome: Outcome) -> Outcome {
     }
 }
 
+/// Writes a file as a whole: whoever reads it meanwhile, or after a crash, finds the old one or the new one.
+///
+/// # Errors
+/// A sentence for the user.
+pub fn write_whole(path: &Path, bytes: &[u8]) -> Result<(), String> {
+    let mut name = path.file_name().map(ToOwned::to_owned).ok_or_else(|| format!("{}: no file name", path.display()))?;
+    name.push(format!(".{}.part", std::process::id()));
+    let part = path.with_file_name(name);
+    let written = std::fs::write(&part, bytes).and_then(|()| std::fs::rename(&part, path));
+    written.map_err(|error| {
+        let _ = std::fs::remove_file(&part);
+        format!("{}: {error}", path.display())
+    })
+}
+
+/// Progress on standard error where that is a terminal, nothing where it is not.
+#[derive(Debug)]
+pub struct Progress {
+    shown: bool,
+}
+
+impl Progress {
+    /// Shown on a terminal alone.
+    pub fn new() -> Progress {
+        Progress { shown: io::stderr().is_terminal() }
+    }
+
+    /// Says how far the work is, on the line that was said before.
+    pub fn say(&self, text: &str) {
+        if self.shown {
+            let _ = write!(io::stderr().lock(), "\r\u{1b}[K{text}");
+        }
+    }
+}
+
 /// Says on standard error why nothing could be done.
 pub fn fail(text: &str) -> Outcome {
     note(&format!("underfoot: {text}"));
@@ -50,6 +85,11 @@ pub fn note(text: &str) {
 
 /// Says on standard error why a request was turned away, with every offending member.
 pub fn refuse(refusal: &Refusal) -> Outcome {
+    fail(&told(refusal))
+}
+
+/// Why a request was turned away, a line per offending member.
+pub fn told(refusal: &Refusal) -> String {
     let mut text = format!("{}: {}", refusal.title, refusal.detail);
     for fault in &refusal.faults {
         let pointer = if fault.pointer.is_empty() { "(the document)" } else { &fault.pointer };
@@ -58,5 +98,5 @@ pub fn refuse(refusal: &Refusal) -> Outcome {
             text.push_str(&format!(" (line {line})"));
         }
     }
-    fail(&text)
+    text
 }

@@ -5,6 +5,8 @@
 mod audit;
 mod audit_table;
 mod batch;
+mod case_files;
+mod cases;
 mod compare;
 mod demo;
 mod dynamics;
@@ -12,6 +14,7 @@ mod export;
 mod files;
 mod identify;
 mod log;
+mod record;
 mod report;
 mod schemas;
 mod serve;
@@ -39,8 +42,10 @@ enum Command {
     Serve(Box<serve::Serve>),
     /// Answer a solve request from a file; prints what POST /v1/solve answers.
     Solve(solve::Solve),
-    /// Judge a controller's own answer from a file; prints what POST /v1/audit answers.
+    /// Judge a controller's own answer from a file, printing what POST /v1/audit answers, or many cases from files and folders.
     Audit(audit::Audit),
+    /// Pin a request with an answer as a case for `audit`, or renew pinned cases and say what changed.
+    Record(record::Record),
     /// Rigid-body terms of a state from a file; prints what POST /v1/dynamics answers.
     Dynamics(dynamics::Dynamics),
     /// Answer many states, one JSON line each; prints what POST /v1/batch answers.
@@ -84,6 +89,7 @@ pub fn main() -> ExitCode {
         Command::Serve(command) => command.run(),
         Command::Solve(command) => command.run(),
         Command::Audit(command) => command.run(),
+        Command::Record(command) => command.run(),
         Command::Dynamics(command) => command.run(),
         Command::Batch(command) => command.run(),
         Command::Export(command) => command.run(),

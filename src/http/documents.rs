@@ -223,7 +223,11 @@ fn finished(session: Session, fingerprint: &str, mut clock: Clock) -> Result<Doc
     Ok(Document { body, model: None, timings: clock.laps })
 }
 
-fn audit(body: &[u8], models: &dyn ModelSource, cancel: &Arc<AtomicBool>) -> Result<Document, Refusal> {
+/// The document of an audit request; stops soon after `cancel` is raised.
+///
+/// # Errors
+/// A refusal names what is wrong with the request.
+pub(super) fn audit(body: &[u8], models: &dyn ModelSource, cancel: &Arc<AtomicBool>) -> Result<Document, Refusal> {
     let mut clock = Clock::start();
     let (question, claim, tolerances) = wire::read_audit(body, models)?;
     clock.lap("read");

@@ -29,6 +29,7 @@ impl LineWork for Batch {
             Err(refusal) => Err(refusal.clone()),
             Ok(request) => match self.operation() {
                 Operation::Solve => documents::solve(request, self, cancel),
+                Operation::Audit => documents::audit(request, self, cancel),
                 Operation::Dynamics => documents::dynamics(request, self),
             },
         };

@@ -1,5 +1,7 @@
 //! An audit request: a solve request, the controller's own answer to it, tolerances.
 
+use std::sync::Arc;
+
 use schemars::JsonSchema;
 use serde::Deserialize;
 
@@ -9,7 +11,7 @@ use super::friction::positive;
 use super::gate::{At, Gate, listed, quoted};
 use super::limit::MAX_JOINTS;
 use super::refusal::Refusal;
-use super::solve::SolveRequest;
+use super::solve::{MAX_NAME, SolveRequest};
 use super::state::joint_index;
 use super::strict::MAX_MAGNITUDE;
 use crate::audit::{Claim, Tolerances};
@@ -38,6 +40,47 @@ pub(super) struct AuditRequest {
     tolerances: Option<TolerancesBody>,
     /// False: no causes are looked for, which saves some thirty solves where the verdict is not `pass` (no unit); true when left out.
     causes: Option<bool>,
+    /// What this case is called in reports (no unit): 1 to 200 characters.
+    #[schemars(extend("minLength" = 1, "maxLength" = MAX_NAME))]
+    name: Option<String>,
+    /// For pinned cases, how they came to be (no unit); the verdict does not depend on it.
+    #[serde(rename = "recorded")]
+    _recorded: Option<RecordedBody>,
+}
+
+/// How a case was pinned.
+#[derive(Debug, Clone, Deserialize, JsonSchema)]
+#[serde(deny_unknown_fields)]
+#[schemars(rename = "Recorded")]
+struct RecordedBody {
+    /// Version of the program that pinned it (no unit). Another one today is no difference.
+    #[serde(rename = "version")]
+    _version: String,
+    /// Whose the answer is (no unit): `reference`, this program's, which it may renew; `controller`, which only you change.
+    #[serde(rename = "answer")]
+    _answer: WhoseBody,
+}
+
+/// Whose an answer is.
+#[derive(Debug, Clone, Copy, Deserialize, JsonSchema)]
+#[serde(rename_all = "snake_case")]
+#[schemars(inline)]
+enum WhoseBody {
+    Reference,
+    Controller,
+}
+
+/// An audit request of which the form counts, and the model.
+#[derive(Deserialize)]
+#[serde(transparent)]
+pub(super) struct AuditForm(AuditRequest);
+
+impl Request for AuditForm {
+    type Question = Arc<Model>;
+
+    fn read(self, mut gate: Gate, models: &dyn ModelSource) -> Result<Arc<Model>, Refusal> {
+        self.0.request.find_model(&mut gate, At::ROOT.name("request"), models)?.ok_or_else(|| gate.refuse())
+    }
 }
 
 /// A controller's answer.
@@ -137,6 +180,12 @@ impl Request for AuditRequest {
             Some(body) => body.read(&mut gate, root.name("tolerances")),
             None => Tolerances::default(),
         };
+        if let Some(name) = &self.name {
+            let length = name.chars().count();
+            if length == 0 || length > MAX_NAME {
+                gate.fault(root.name("name"), format!("a name of 1 to {MAX_NAME} characters"), format!("{length} characters"));
+            }
+        }
         let question = self.request.read_in(&mut gate, root.name("request"), models)?;
         // An answer to a question that is wrong somewhere, or not whole, cannot be looked at: its names may be those of parts that lack.
         let whole = question.filter(|_| gate.clean() && !gate.partial());

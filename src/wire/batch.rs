@@ -15,7 +15,7 @@ use super::common::Format;
 use super::gate::{Gate, push_token, quoted};
 use super::refusal::{Fault, Refusal};
 use super::second::Document;
-use super::{ModelSource, Request, raw, read, solve};
+use super::{ModelSource, Request, audit, raw, read, solve};
 use crate::cases::tally::{End, Tally};
 use crate::model::Model;
 
@@ -23,6 +23,8 @@ use crate::model::Model;
 const INSTANCE: &str = "/v1/batch";
 /// The longest `id` of a line (bytes).
 const MAX_ID: usize = 200;
+/// Members of an audit beside its question.
+const AUDIT_MEMBERS: [&str; 5] = ["answer", "tolerances", "causes", "name", "recorded"];
 /// The most names in `members`.
 const MAX_MEMBERS: usize = 50;
 /// Lists whose entries are merged by name, and the member that names them.
@@ -37,6 +39,8 @@ pub enum Operation {
     Solve,
     /// As `/v1/dynamics`.
     Dynamics,
+    /// As `/v1/audit`.
+    Audit,
 }
 
 impl Operation {
@@ -45,7 +49,26 @@ impl Operation {
         match self {
             Operation::Solve => read::<solve::SolveForm>(request, Document::Solve, models),
             Operation::Dynamics => read::<solve::DynamicsForm>(request, Document::Dynamics, models),
+            Operation::Audit => read::<audit::AuditForm>(request, Document::Audit, models),
         }
+    }
+
+    /// The part of a request that `name` of a line belongs to: the question, unless an audit itself has a member of this name.
+    fn belongs<'r>(self, request: &'r mut Map<String, Value>, name: &str) -> Option<&'r mut Map<String, Value>> {
+        if AUDIT_MEMBERS.contains(&name) { Some(request) } else { self.question(request) }
+    }
+
+    /// The question within a request; none where it is no object, which the form of a template rules out.
+    fn question(self, request: &mut Map<String, Value>) -> Option<&mut Map<String, Value>> {
+        match self {
+            Operation::Solve | Operation::Dynamics => Some(request),
+            Operation::Audit => request.get_mut("request").and_then(Value::as_object_mut),
+        }
+    }
+
+    /// Where the question stands in a request: a JSON pointer.
+    fn prefix(self) -> &'static str {
+        if self == Operation::Audit { "/request" } else { "" }
     }
 
     /// Member of the answer by which lines are counted; none where every answer is a good one.
@@ -53,6 +76,7 @@ impl Operation {
         match self {
             Operation::Solve => Some("status"),
             Operation::Dynamics => None,
+            Operation::Audit => Some("verdict"),
         }
     }
 }
@@ -65,9 +89,11 @@ pub(super) struct HeadBody {
     /// Document format (no unit).
     #[serde(rename = "format")]
     _format: Format,
-    /// What is done with every line (no unit): `solve` (default) or `dynamics`, as the path of that name does it.
+    /// What is done with every line (no unit): `solve` (default), `dynamics` or `audit`, as the path of that name does it.
     operation: Option<Operation>,
-    /// A request of that kind, model included (units as there); `state` may be left out. Every further line is put over it.
+    /// A request of that kind, model included (units as there); `state`, and the `answer` of an audit, may be left out. Every further
+    /// line is put over it; for audits, over its `request`, but for `answer`, `tolerances`, `causes`,
+    /// `name` and `recorded`.
     template: AnyObject,
     /// Members of the answer that are sent back (no unit), e.g. `["status", "joints"]`; all when left out.
     members: Option<Vec<String>>,
@@ -225,9 +251,17 @@ impl Batch {
         let operation = body.operation.unwrap_or(Operation::Solve);
         let AnyObject(mut template) = body.template;
         template.entry("format").or_insert_with(|| json!("underfoot/1"));
+        // The form of a request can be judged without a state, and that of an audit without an answer; empty ones stand in.
+        if let Some(question) = operation.question(&mut template) {
+            question.entry("format").or_insert_with(|| json!("underfoot/1"));
+        }
         let mut probe = template.clone();
-        // The form of a request can be judged without a state; an empty one stands in.
-        probe.entry("state").or_insert_with(|| json!({}));
+        if let Some(question) = operation.question(&mut probe) {
+            question.entry("state").or_insert_with(|| json!({}));
+        }
+        if operation == Operation::Audit {
+            probe.entry("answer").or_insert_with(|| json!({ "joints": [] }));
+        }
         let model = operation.check(&bytes(&Value::Object(probe)), models).map_err(|refusal| {
             moved(refusal, |pointer| format!("/template{pointer}"))
         })?;
@@ -236,7 +270,9 @@ impl Batch {
         {
             return Err(fault("/members", format!("at most {MAX_MEMBERS} names"), members.len().to_string()));
         }
-        template.insert("model".to_string(), Value::String(model.id.clone()));
+        if let Some(question) = operation.question(&mut template) {
+            question.insert("model".to_string(), Value::String(model.id.clone()));
+        }
         Ok(Batch { operation, template, model, members: body.members })
     }
 
@@ -279,24 +315,28 @@ impl Entry<'_> {
                 return Err(fault(&format!("/{name}"), format!("no {name}: the first line gives it"), "one"));
             }
         }
+        let operation = self.batch.operation;
         let mut request = self.batch.template.clone();
         for (name, over) in &self.given {
+            let Some(part) = operation.belongs(&mut request, name) else { continue };
             let named = NAMED.iter().find(|(list, _)| list == name);
             match (name.as_str(), named, over) {
                 ("id" | "without", _, _) => {}
                 (_, Some((list, key)), Value::Array(over)) => {
-                    let under = request.remove(*list).unwrap_or_else(|| json!([]));
+                    let under = part.remove(*list).unwrap_or_else(|| json!([]));
                     let (merged, origins) = by_name(under, over, key);
-                    request.insert((*list).to_string(), merged);
+                    part.insert((*list).to_string(), merged);
                     self.origins.push((list, origins));
                 }
-                (_, _, Value::Null) => drop(request.remove(name)),
-                _ => merge_patch(request.entry(name.clone()).or_insert(Value::Null), over),
+                (_, _, Value::Null) => drop(part.remove(name)),
+                _ => merge_patch(part.entry(name.clone()).or_insert(Value::Null), over),
             }
         }
         if let Some(without) = self.given.get("without") {
             let origins = &mut self.origins;
-            leave_out(&mut request, without, origins)?;
+            if let Some(question) = operation.question(&mut request) {
+                leave_out(question, without, origins)?;
+            }
         }
         Ok(request)
     }
@@ -325,15 +365,18 @@ impl Entry<'_> {
 
     /// Where the user finds what stands at `pointer` of the merged request.
     fn place(&self, pointer: &str) -> String {
-        let (mut here, mut there) = (pointer.to_string(), format!("/template{pointer}"));
+        // The members of a question stand in the line itself, whatever the request that they make.
+        let prefix = self.batch.operation.prefix();
+        let inner = pointer.strip_prefix(prefix).unwrap_or(pointer);
+        let (mut here, mut there) = (inner.to_string(), format!("/template{pointer}"));
         for (list, origins) in &self.origins {
-            let Some(rest) = pointer.strip_prefix(&format!("/{list}/")) else { continue };
+            let Some(rest) = inner.strip_prefix(&format!("/{list}/")) else { continue };
             let (index, rest) = rest.split_at(rest.find('/').unwrap_or(rest.len()));
             let Some((line, template)) = index.parse::<usize>().ok().and_then(|i| origins.get(i)) else { continue };
             let at = |prefix: &str, index: &Option<usize>| {
                 index.map_or_else(String::new, |index| format!("{prefix}/{list}/{index}{rest}"))
             };
-            (here, there) = (at("", line), at("/template", template));
+            (here, there) = (at("", line), at(&format!("/template{prefix}"), template));
         }
         let given = resolves(&self.given, &here);
         let in_template = there.strip_prefix("/template").is_some_and(|p| resolves(&self.batch.template, p));

@@ -7,6 +7,7 @@ mod audit;
 mod audit_answer;
 mod batch;
 mod canonical;
+mod case;
 mod common;
 mod compare;
 mod contact;
@@ -56,6 +57,7 @@ use crate::reference::program::Program;
 use canonical::hexadecimal;
 pub use batch::{Batch, Entry, Operation, batch_problem, batch_summary, line_too_long, merge_patch};
 pub use canonical::{canonical, fingerprint};
+pub use case::{Case, Whose};
 pub use compare::CompareQuestion;
 pub use identify::{LogForm, LogReader, MAX_LINE, read_identify, write_identify};
 pub use openapi::openapi;
@@ -102,6 +104,14 @@ pub fn read_solve(body: &[u8], models: &dyn ModelSource) -> Result<Question, Ref
 /// [`Refusal`] with every fault that was found; 404 where the model's id is not known.
 pub fn read_audit(body: &[u8], models: &dyn ModelSource) -> Result<(Question, Claim, Tolerances), Refusal> {
     read::<audit::AuditRequest>(body, Document::Audit, models)
+}
+
+/// Reads a case file: an audit request that holds its model itself.
+///
+/// # Errors
+/// [`Refusal`] with every fault that was found.
+pub fn read_case(file: &[u8]) -> Result<(Question, Claim, Tolerances), Refusal> {
+    read_audit(file, &NoModels)
 }
 
 /// Reads the body of `POST /v1/dynamics`.

@@ -209,6 +209,13 @@ impl SolveRequest {
     }
 }
 
+impl SolveRequest {
+    /// The model of the request that stands at `at`; see [`find`].
+    pub(super) fn find_model(&self, gate: &mut Gate, at: At<'_>, models: &dyn ModelSource) -> Result<Option<Arc<Model>>, Refusal> {
+        find(gate, at, &self.model, models)
+    }
+}
+
 /// A solve request of which the form counts, and the model.
 #[derive(Deserialize)]
 #[serde(transparent)]
