@@ -202,3 +202,71 @@ fn the_summary_counts() {
         "statuses": [{ "status": "solved", "count": 2 }, { "status": "infeasible", "count": 1 }] });
     assert_eq!(line["summary"], expected);
 }
+
+/// The audit example without its state and answer, as a first line.
+fn audit_head() -> (Value, Value, Value) {
+    let mut template: Value = serde_json::from_str(include_str!("../schemas/example-audit.json")).expect("JSON");
+    let state = template["request"].as_object_mut().unwrap().remove("state").unwrap();
+    let answer = template.as_object_mut().unwrap().remove("answer").unwrap();
+    (json!({ "format": "underfoot/1", "operation": "audit", "template": template, "members": ["verdict", "causes"] }), state, answer)
+}
+
+#[test]
+fn audit_lines_put_the_question_below_and_the_answer_beside() {
+    let (head, state, answer) = audit_head();
+    let batch = Batch::open(&bytes(&head), &Nothing).expect("a good template");
+    let cancel = Default::default();
+    let done = batch.line(2, &bytes(&json!({ "id": 1, "state": state, "answer": answer })), &cancel);
+    assert_eq!(done.fate, Fate::Answered("pass".to_owned()), "{}", String::from_utf8_lossy(&done.text));
+    assert_eq!(read(&done.text)["answer"], json!({ "verdict": "pass", "causes": null }));
+    // A flipped sign fails on its line, with the cause.
+    let mut flipped = answer.clone();
+    let knee = flipped["joints"].as_array_mut().unwrap().iter_mut().find(|joint| joint["name"] == "left_knee").unwrap();
+    knee["torque"] = json!(-knee["torque"].as_f64().unwrap());
+    let done = batch.line(3, &bytes(&json!({ "state": state, "answer": flipped })), &cancel);
+    assert_eq!(done.fate, Fate::Answered("fail".to_owned()));
+    let causes = read(&done.text)["answer"]["causes"]["text"].as_str().unwrap().to_owned();
+    assert!(causes.contains("the torque of left_knee with its sign flipped"), "{causes}");
+    // `causes`, `tolerances` and `name` are the audit's own members, all others the question's.
+    let line = json!({ "state": state, "answer": flipped, "causes": false, "name": "n", "tolerances": { "relative": 1e3 },
+        "limits": [{ "name": "torque", "kind": "torque", "treatment": { "kind": "hard" } }], "without": { "tasks": ["effort"] } });
+    let entry = batch.entry(&bytes(&line));
+    let request: Value = serde_json::from_slice(entry.request.as_ref().expect("a good line")).unwrap();
+    assert_eq!((&request["causes"], &request["name"], &request["tolerances"]), (&json!(false), &json!("n"), &json!({ "relative": 1e3 })));
+    let tasks = request["request"]["tasks"].as_array().unwrap();
+    assert_eq!(tasks.len(), head["template"]["request"]["tasks"].as_array().unwrap().len() - 1);
+    assert_eq!(request["request"]["state"], state);
+    assert!(request.get("state").is_none() && request.get("without").is_none());
+    assert_eq!(batch.line(4, &bytes(&line), &cancel).fate, Fate::Answered("pass".to_owned()), "a tolerance of a thousand passes it");
+}
+
+#[test]
+fn faults_of_audit_lines_are_pointed_at_where_the_user_wrote_them() {
+    let (head, state, answer) = audit_head();
+    let batch = Batch::open(&bytes(&head), &Nothing).expect("a good template");
+    let pointers = |line: &Value| -> Vec<String> {
+        let done = batch.line(9, &bytes(line), &Default::default());
+        assert_eq!(done.fate, Fate::Refused, "{line}");
+        let line = read(&done.text);
+        line["problem"]["faults"].as_array().unwrap().iter().map(|f| f["pointer"].as_str().unwrap().to_owned()).collect()
+    };
+    assert_eq!(pointers(&json!({ "state": state, "answer": answer, "tick": { "length": -1.0 } })), ["/tick/length"]);
+    let mut wrong = answer.clone();
+    wrong["joints"][2]["name"] = json!("no such joint");
+    assert_eq!(pointers(&json!({ "state": state, "answer": wrong }))[0], "/answer/joints/2/name");
+    let contact = json!({ "sole": "right", "friction": { "coefficient": -1.0 } });
+    assert_eq!(pointers(&json!({ "state": state, "answer": answer, "contacts": [contact] })), ["/contacts/0/friction/coefficient"]);
+    assert_eq!(pointers(&json!({ "state": state, "answer": answer, "tolerances": { "relative": 0.0 } })), ["/tolerances/relative"]);
+    assert_eq!(pointers(&json!({ "state": state, "answer": answer, "model": "x" })), ["/model"]);
+    // What stands in the first line is pointed at there.
+    let (mut head, ..) = audit_head();
+    head["template"]["request"]["contacts"][0]["friction"]["coefficient"] = json!(-0.5);
+    let batch = Batch::open(&bytes(&head), &Nothing).expect("good form");
+    let done = batch.line(2, &bytes(&json!({ "state": state, "answer": answer })), &Default::default());
+    let pointer = read(&done.text)["problem"]["faults"][0]["pointer"].clone();
+    assert_eq!(pointer, "/template/request/contacts/0/friction/coefficient");
+    let mut head = audit_head().0;
+    head["template"]["request"]["tick"] = json!({ "length": "long" });
+    let refusal = Batch::open(&bytes(&head), &Nothing).expect_err("a bad first line");
+    assert_eq!(refusal.faults[0].pointer, "/template/request/tick/length");
+}
