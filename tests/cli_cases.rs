@@ -319,6 +319,51 @@ fn update_keeps_what_it_cannot_renew() {
     assert!(printed.contains("3 cases: 0 changed, 1 unchanged, 0 left alone, 1 not solved, 1 unusable"), "{printed}");
 }
 
+/// No answer obeys a request that asks two soles for ten times the weight each, so that nothing can be said of one; a gate takes
+/// that for no success.
+#[test]
+fn undecided_is_no_success() {
+    let folder = Folder::new();
+    folder.write("lost.json", changed(AUDIT, |case| {
+        for contact in 0..2 {
+            case["request"]["contacts"][contact]["normal_force"]["least"] = json!(4000.0);
+        }
+    }));
+    let junit = folder.at("report.xml");
+    let output = underfoot(&["audit", &folder.root(), "--junit", &junit]);
+    assert_eq!(code(&output), 1, "{}", text(&output.stdout));
+    assert!(text(&output.stdout).starts_with("undecided  "), "{}", text(&output.stdout));
+    let (counts, cases) = report(Path::new(&junit));
+    assert_eq!(counts, [1, 1, 0, 0]);
+    assert!(cases[0][4].starts_with("undecided: "), "{}", cases[0][4]);
+}
+
+#[test]
+fn faults_in_what_a_case_holds_besides_are_named() {
+    let folder = Folder::new();
+    for (change, pointer) in [
+        (json!({ "name": "" }), "/name"),
+        (json!({ "name": "x".repeat(201) }), "/name"),
+        (json!({ "name": 7 }), "/name"),
+        (json!({ "recorded": { "answer": "reference" } }), "/recorded/version"),
+        (json!({ "recorded": { "version": "1", "answer": "somebody" } }), "/recorded/answer"),
+        (json!({ "recorded": { "version": "1", "answer": "reference", "by": "me" } }), "/recorded/by"),
+        (json!({ "expected": "pass" }), "/expected"),
+    ] {
+        folder.write("case.json", changed(AUDIT, |case| {
+            for (name, value) in change.as_object().expect("an object") {
+                case[name] = value.clone();
+            }
+        }));
+        let output = underfoot(&["audit", &folder.root()]);
+        let printed = text(&output.stdout);
+        assert!(code(&output) == 2 && printed.starts_with("unusable ") && printed.contains(pointer), "{change}: {printed}");
+    }
+    // Neither changes what is found.
+    folder.write("case.json", changed(AUDIT, |case| case["name"] = "x".repeat(200).into()));
+    assert_eq!(code(&underfoot(&["audit", &folder.root()])), 0);
+}
+
 /// A log of a controller as lines of a batch: the exit code is that of the verdicts.
 #[test]
 fn a_batch_of_audits_ends_with_its_verdicts() {

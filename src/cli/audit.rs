@@ -1,6 +1,6 @@
 //! `underfoot audit`: the document that `POST /v1/audit` answers, byte for byte, or a table; and many cases at once.
 
-use std::path::PathBuf;
+use std::path::{Path, PathBuf};
 use std::sync::Arc;
 use std::sync::atomic::AtomicBool;
 
@@ -48,7 +48,7 @@ impl Audit {
         }
     }
 
-    fn one(&self, file: &PathBuf) -> Outcome {
+    fn one(&self, file: &Path) -> Outcome {
         let body = match files::read_request(file) {
             Ok(body) => body,
             Err(text) => return files::fail(&text),
