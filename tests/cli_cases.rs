@@ -111,7 +111,15 @@ fn a_folder_is_judged_in_order_and_a_bad_file_does_not_stop_it() {
     fs::remove_file(folder.at("b/good.json")).expect("removed");
     let empty = underfoot(&["audit", &folder.root()]);
     assert_eq!(code(&empty), 2);
-    assert!(text(&empty.stderr).contains("no *.json"), "{}", text(&empty.stderr));
+    assert!(text(&empty.stdout).starts_with("unusable ") && text(&empty.stdout).contains("no *.json"), "{}", text(&empty.stdout));
+    // Nor does an empty folder, or one that nests without end, keep another from being judged.
+    fs::create_dir_all(folder.0.join("e/m/p/t/y")).expect("a folder");
+    fs::create_dir_all(folder.0.join("deep").join(["n"; 20].join("/"))).expect("a folder");
+    folder.write("good/case.json", AUDIT);
+    let output = underfoot(&["audit", &folder.at("e"), &folder.at("deep"), &folder.at("good")]);
+    let printed = text(&output.stdout);
+    assert_eq!(code(&output), 2, "{printed}");
+    assert!(printed.contains("no *.json") && printed.contains("16 deep") && printed.contains("1 pass, 0 fail, 0 undecided, 2 unusable"), "{printed}");
     // A file that is named is missed, a folder's content is not searched for beyond *.json.
     let good = folder.write("case.txt", AUDIT);
     let missing = underfoot(&["audit", &good, &folder.at("none.json")]);

@@ -1,6 +1,6 @@
 //! Finding case files: what was named, and every `*.json` within folders that were.
 
-use std::fs;
+use std::{fs, io};
 use std::path::{Path, PathBuf};
 
 /// The deepest nesting of folders that is gone into.
@@ -8,58 +8,87 @@ const MAX_DEPTH: usize = 16;
 /// The most case files of one run.
 const MAX_FILES: usize = 10_000;
 
+/// A place where cases were looked for in vain.
+#[derive(Debug, Clone, PartialEq, Eq)]
+pub struct Lost {
+    /// The folder.
+    pub folder: PathBuf,
+    /// Why.
+    pub why: String,
+}
+
+/// What was found, in order.
+pub type Found = Result<PathBuf, Lost>;
+
 /// The case files under `paths`, in the order of `paths`, those of a folder sorted by name. A file that is named is taken whatever it is
-/// called and whether or not it exists; within folders, hidden entries and links to folders are passed over.
+/// called and whether or not it exists; within folders, hidden entries and links to folders are passed over. A folder that cannot be
+/// read, nests too deep or holds no case where it was named is in the list as well: it must not pass for an empty one.
 ///
 /// # Errors
-/// A sentence for the user: a folder that cannot be read or holds no case, too many files, too deep.
-pub fn find(paths: &[PathBuf]) -> Result<Vec<PathBuf>, String> {
-    let mut files = Vec::new();
+/// A sentence for the user where there are too many files.
+pub fn find(paths: &[PathBuf]) -> Result<Vec<Found>, String> {
+    let mut found = Vec::new();
     for path in paths {
         if path.is_dir() {
-            let before = files.len();
-            walk(path, 0, &mut files)?;
-            if files.len() == before {
-                return Err(format!("{}: no *.json in this folder", path.display()));
+            let before = found.len();
+            walk(path, 0, &mut found)?;
+            if found.len() == before {
+                found.push(lost(path, "no *.json in this folder"));
             }
         } else {
-            files.push(path.clone());
+            found.push(Ok(path.clone()));
         }
-        enough(&files)?;
+        enough(&found)?;
     }
-    Ok(files)
+    Ok(found)
 }
 
-fn enough(files: &[PathBuf]) -> Result<(), String> {
-    if files.len() > MAX_FILES { Err(format!("more than {MAX_FILES} case files")) } else { Ok(()) }
+fn enough(found: &[Found]) -> Result<(), String> {
+    if found.len() > MAX_FILES { Err(format!("more than {MAX_FILES} case files")) } else { Ok(()) }
 }
 
-fn walk(folder: &Path, depth: usize, files: &mut Vec<PathBuf>) -> Result<(), String> {
+fn lost(folder: &Path, why: impl ToString) -> Found {
+    Err(Lost { folder: folder.to_owned(), why: why.to_string() })
+}
+
+fn walk(folder: &Path, depth: usize, found: &mut Vec<Found>) -> Result<(), String> {
     if depth > MAX_DEPTH {
-        return Err(format!("{}: folders nest more than {MAX_DEPTH} deep", folder.display()));
+        found.push(lost(folder, format!("folders nest more than {MAX_DEPTH} deep")));
+        return enough(found);
     }
-    let said = |error: std::io::Error| format!("{}: {error}", folder.display());
-    let mut entries = Vec::new();
-    for entry in fs::read_dir(folder).map_err(said)? {
-        let entry = entry.map_err(said)?;
-        let kind = entry.file_type().map_err(said)?;
+    let mut entries = match entries(folder) {
+        Ok(entries) => entries,
+        Err(error) => {
+            found.push(lost(folder, error));
+            return enough(found);
+        }
+    };
+    entries.sort();
+    for (path, is_folder) in entries {
+        if is_folder {
+            walk(&path, depth + 1, found)?;
+        } else {
+            found.push(Ok(path));
+        }
+        enough(found)?;
+    }
+    Ok(())
+}
+
+/// Folders and case files in a folder, with true for folders.
+fn entries(folder: &Path) -> io::Result<Vec<(PathBuf, bool)>> {
+    let mut out = Vec::new();
+    for entry in fs::read_dir(folder)? {
+        let entry = entry?;
+        let is_folder = entry.file_type()?.is_dir();
         if entry.file_name().to_string_lossy().starts_with('.') {
             continue;
         }
         let path = entry.path();
-        let is_case = path.extension().is_some_and(|extension| extension == "json") && path.is_file();
-        if kind.is_dir() || is_case {
-            entries.push((path, kind.is_dir()));
+        let is_case = path.extension().is_some_and(|extension| extension == "json") && !path.is_dir();
+        if is_folder || is_case {
+            out.push((path, is_folder));
         }
     }
-    entries.sort();
-    for (path, is_folder) in entries {
-        if is_folder {
-            walk(&path, depth + 1, files)?;
-        } else {
-            files.push(path);
-        }
-        enough(files)?;
-    }
-    Ok(())
+    Ok(out)
 }

@@ -7,7 +7,8 @@ use std::time::Instant;
 
 use serde_json::json;
 
-use super::{Outcome, audit_table, case_files, files};
+use super::case_files::{self, Found};
+use super::{Outcome, audit_table, files};
 use crate::cases::finding::{Count, Finding, Word};
 use crate::cases::junit;
 use crate::http::settings::cores;
@@ -80,24 +81,32 @@ fn outcome(count: Count) -> Outcome {
     }
 }
 
-fn side_by_side(paths: &[PathBuf], catalogue: &Catalogue) -> Vec<Judged> {
+fn side_by_side(found: &[Found], catalogue: &Catalogue) -> Vec<Judged> {
     std::thread::scope(|scope| {
-        let running: Vec<_> = paths.iter().map(|path| (path, scope.spawn(|| judge(path, catalogue)))).collect();
-        let done = running.into_iter().map(|(path, one)| {
-            one.join().unwrap_or_else(|_| {
-                let refusal = Refusal::new(500, "defect", "A defect of this program", "the audit broke off");
-                refused(path, &refusal)
+        let judge = |found: &Found| match found {
+            Ok(path) => judge(path, catalogue),
+            Err(lost) => refused(&lost.folder, &unreadable(&lost.why)),
+        };
+        let running: Vec<_> = found.iter().map(|one| (one, scope.spawn(move || judge(one)))).collect();
+        let done = running.into_iter().map(|(one, thread)| {
+            thread.join().unwrap_or_else(|_| {
+                let path = one.as_ref().unwrap_or_else(|lost| &lost.folder);
+                refused(path, &Refusal::new(500, "defect", "A defect of this program", "the audit broke off"))
             })
         });
         done.collect()
     })
 }
 
+fn unreadable(why: &str) -> Refusal {
+    Refusal::new(400, "unreadable-file", "The file cannot be read", why)
+}
+
 fn judge(path: &Path, catalogue: &Catalogue) -> Judged {
     let start = Instant::now();
     let body = match files::read_request(path) {
         Ok(body) => body,
-        Err(text) => return refused(path, &Refusal::new(400, "unreadable-file", "The file cannot be read", text)),
+        Err(text) => return refused(path, &unreadable(&text)),
     };
     let name = Case::read(&body).ok().and_then(|case| case.name().map(str::to_owned));
     match catalogue.run(Errand::Audit, &body, &Arc::new(AtomicBool::new(false))) {

@@ -115,11 +115,11 @@ fn update(paths: &[PathBuf]) -> Outcome {
     let catalogue = Catalogue::default();
     let progress = files::Progress::new();
     let (mut changed, mut same, mut foreign, mut lost, mut unusable) = (0, 0, 0, 0, 0);
-    for (done, path) in found.iter().enumerate() {
+    for (done, one) in found.iter().enumerate() {
         progress.say(&format!("{done} of {} cases", found.len()));
-        let renewal = renew(path, &catalogue);
+        let renewal = one.as_ref().map_err(|lost| lost.why.clone()).and_then(|path| renew(path, &catalogue));
         progress.say("");
-        let file = path.display();
+        let file = one.as_ref().unwrap_or_else(|lost| &lost.folder).display();
         let text = match renewal {
             Ok(Renewal::Same) => {
                 same += 1;
