@@ -143,13 +143,14 @@ pub fn solve(
 type Near = (Vec<f64>, Vec<f64>);
 
 /// Newton steps on the active set read off an interior point; where they do not settle, the proximal method.
-fn sharpen(problem: &LevelProblem, u: &[f64], z: &[f64], engine: &Optimality) -> Refined {
+fn sharpen(problem: &LevelProblem, near: (&[f64], &[f64]), engine: &Optimality, cancelled: &dyn Fn() -> bool) -> Refined {
+    let (u, z) = near;
     let identified = classify(problem, u.to_vec(), z.to_vec());
     let plain = refine(problem, identified, ROUNDS);
     if plain.confirmed && plain.optimality.worst() <= engine.worst().max(SHARP) {
         return plain;
     }
-    match approach(problem, u, z) {
+    match approach(problem, u, z, cancelled) {
         Some(near) => accept(problem, near),
         None => plain,
     }
@@ -319,7 +320,7 @@ impl Cascade<'_> {
             }
         }
         let mut engine = optimality(&problem, &u, &z);
-        let mut refined = sharpen(&problem, &u, &z, &engine);
+        let mut refined = sharpen(&problem, (&u, &z), &engine, &|| self.cancelled());
         if !refined.confirmed && trusted {
             // Where rows bind that nearly depend on each other, the active set only shows closer to the optimum. And what is
             // left of the cost may be far smaller than its rows: seen by its own size, the multipliers stand out from the slacks.
@@ -329,7 +330,7 @@ impl Cascade<'_> {
             }
             if let Some((near_u, near_z)) = self.closer(data, &problem, &mut iterations)? {
                 let closer = optimality(&problem, &near_u, &near_z);
-                let again = sharpen(&problem, &near_u, &near_z, &closer);
+                let again = sharpen(&problem, (&near_u, &near_z), &closer, &|| self.cancelled());
                 if again.confirmed {
                     refined = again;
                 }

@@ -120,8 +120,9 @@ struct Value {
     gradient: Vec<f64>,
 }
 
-/// Rounds from the given point until nothing more is gained; the best point met. `None` where there is nothing to work on.
-pub(super) fn approach(problem: &LevelProblem, u: &[f64], z: &[f64]) -> Option<Approached> {
+/// Rounds from the given point until nothing more is gained, or until `cancelled` says so; the best point met. `None` where there
+/// is nothing to work on.
+pub(super) fn approach(problem: &LevelProblem, u: &[f64], z: &[f64], cancelled: &dyn Fn() -> bool) -> Option<Approached> {
     let scaled = Scaled::new(problem, u, z)?;
     let mut h = vec![0.0; scaled.q];
     let mut multipliers: Vec<f64> =
@@ -135,6 +136,9 @@ pub(super) fn approach(problem: &LevelProblem, u: &[f64], z: &[f64]) -> Option<A
     let mut shortest = SMALLEST_PULL;
     let (mut stalled, mut all) = (0, 0);
     for _ in 0..MAX_ROUNDS {
+        if cancelled() {
+            break;
+        }
         let goal = (INNER * before.min(1.0)).max(ROUNDING);
         let Minimised { dh, z, steps } = scaled.minimise(&scaled.round(&h, &multipliers, penalty, &pull), goal);
         all += steps;
