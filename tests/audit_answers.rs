@@ -7,12 +7,12 @@ mod biped;
 
 use std::sync::Arc;
 
-use certify_support::{body, joint};
+use certify_support::{body, two_link_arm};
 use underfoot::audit::report::{AuditReport, Comparison, Conclusion, ReasonKind, TargetSource, Verdict};
 use underfoot::audit::{AuditError, Claim, Tolerances, audit};
 use underfoot::contact::{Ground, Law, Rest, TickRule};
 use underfoot::dynamics::axes::VelocityAxes;
-use underfoot::model::{BaseKind, JointKind, Model, Sole, State};
+use underfoot::model::{BaseKind, Model, Sole, State};
 use underfoot::problem::question::*;
 use underfoot::reference;
 use underfoot::reference::answer::Status;
@@ -31,28 +31,7 @@ fn judge(question: &Question, claim: &Claim) -> AuditReport {
 }
 
 fn arm(tasks: Vec<Task>, limits: Vec<Limit>) -> Question {
-    let link = |mass: f64, center: f64, about: f64| Inertia {
-        mass,
-        center: Vec3::new(center, 0.0, 0.0),
-        about_center: Mat3::from_diagonal(&Vec3::new(about / 3.0, about, about)),
-    };
-    let model = Model {
-        name: "arm".into(),
-        id: "arm".into(),
-        base: BaseKind::Fixed,
-        bodies: vec![
-            body("base", None, None, Vec3::zeros(), Inertia::zero()),
-            body("upper", Some(0), Some(0), Vec3::zeros(), link(2.0, 0.2, 0.03)),
-            body("lower", Some(1), Some(1), Vec3::new(0.4, 0.0, 0.0), link(1.5, 0.15, 0.012)),
-        ],
-        joints: vec![
-            joint("shoulder", JointKind::Revolute, 1, Vec3::z()),
-            joint("elbow", JointKind::Revolute, 2, Vec3::z()),
-        ],
-        frames: vec![],
-        soles: vec![],
-        remarks: vec![],
-    };
+    let model = two_link_arm();
     let state = State {
         base_pose: Pose::identity(),
         base_twist: Twist::zero(),

@@ -5,14 +5,14 @@ mod certify_support;
 
 use std::sync::Arc;
 
-use certify_support::{body, column, failing, joint, push, residuals};
+use certify_support::{column, failing, push, residuals, two_link_arm};
 use underfoot::certify::{Certificate, Claim, certify};
 use underfoot::conic::{Cone, ConicRows, Hierarchy, Level, LevelProof};
 use underfoot::contact::TickRule;
 use underfoot::dynamics::axes::VelocityAxes;
-use underfoot::model::{BaseKind, JointKind, Model, State};
+use underfoot::model::{State};
 use underfoot::problem::question::{Include, Limit, LimitKind, Question, Tick, Treatment};
-use underfoot::spatial::{Inertia, Mat3, Pose, Twist, Vec3};
+use underfoot::spatial::{Pose, Twist, Vec3};
 
 const SPEED: [f64; 2] = [1.2, -0.7];
 const CHANGE: [f64; 2] = [0.3, 0.4];
@@ -23,30 +23,8 @@ const CORIOLIS: [f64; 2] = [-0.0768288373353389, -0.09296934938057817];
 const GRAVITY: [f64; 2] = [10.71775139776705, 2.1086664656224934];
 
 fn question(limits: Vec<Limit>) -> Question {
-    let link = |mass: f64, center: f64, about: f64| Inertia {
-        mass,
-        center: Vec3::new(center, 0.0, 0.0),
-        about_center: Mat3::from_diagonal(&Vec3::new(about / 3.0, about, about)),
-    };
-    let model = Model {
-        name: "arm".into(),
-        id: "arm".into(),
-        base: BaseKind::Fixed,
-        bodies: vec![
-            body("base", None, None, Vec3::zeros(), Inertia::zero()),
-            body("upper", Some(0), Some(0), Vec3::zeros(), link(2.0, 0.2, 0.03)),
-            body("lower", Some(1), Some(1), Vec3::new(0.4, 0.0, 0.0), link(1.5, 0.15, 0.012)),
-        ],
-        joints: vec![
-            joint("shoulder", JointKind::Revolute, 1, Vec3::z()),
-            joint("elbow", JointKind::Revolute, 2, Vec3::z()),
-        ],
-        frames: vec![],
-        soles: vec![],
-        remarks: vec![],
-    };
     Question {
-        model: Arc::new(model),
+        model: Arc::new(two_link_arm()),
         state: State {
             base_pose: Pose::identity(),
             base_twist: Twist::zero(),

@@ -32,11 +32,16 @@ fn text(bytes: &[u8]) -> String {
     String::from_utf8_lossy(bytes).into_owned()
 }
 
+/// A document, changed.
+fn changed(document: &str, change: impl FnOnce(&mut serde_json::Value)) -> Vec<u8> {
+    let mut value: serde_json::Value = serde_json::from_str(document).expect("JSON");
+    change(&mut value);
+    serde_json::to_vec(&value).expect("JSON")
+}
+
 /// The demo's request, changed.
 fn request(change: impl FnOnce(&mut serde_json::Value)) -> Vec<u8> {
-    let mut request: serde_json::Value = serde_json::from_str(REQUEST).expect("the demo's request");
-    change(&mut request);
-    serde_json::to_vec(&request).expect("JSON")
+    changed(REQUEST, change)
 }
 
 #[test]
@@ -71,9 +76,7 @@ const AUDIT: &str = include_str!("../schemas/example-audit.json");
 
 /// The audit example, changed.
 fn audit(change: impl FnOnce(&mut serde_json::Value)) -> Vec<u8> {
-    let mut request: serde_json::Value = serde_json::from_str(AUDIT).expect("the audit example");
-    change(&mut request);
-    serde_json::to_vec(&request).expect("JSON")
+    changed(AUDIT, change)
 }
 
 #[test]

@@ -70,7 +70,8 @@ pub(super) fn check_encoding(headers: &HeaderMap) -> Result<(), Problem> {
     Ok(())
 }
 
-fn is(value: &str, wanted: &str) -> bool {
+/// Whether a Content-Type names this media type, parameters aside.
+pub(super) fn is(value: &str, wanted: &str) -> bool {
     let essence = value.split(';').next().unwrap_or_default();
     essence.trim_matches([' ', '\t']).eq_ignore_ascii_case(wanted)
 }

@@ -10,7 +10,7 @@ use axum::body::{Body, Bytes, HttpBody};
 use axum::http::{HeaderMap, StatusCode};
 use tokio::sync::mpsc::{Receiver, Sender, channel};
 
-use super::body::{broken, check_encoding, check_length, media_type, too_large, too_slow};
+use super::body::{broken, check_encoding, check_length, is, media_type, too_large, too_slow};
 use super::documents::Document;
 use super::problem::Problem;
 use super::router::Shared;
@@ -23,11 +23,10 @@ const BUFFER: usize = 64 << 10;
 
 /// The form of the log, from the Content-Type header; none where it is another type.
 pub fn form(headers: &HeaderMap) -> Option<LogForm> {
-    let essence = media_type(headers)?.split(';').next()?.trim_matches([' ', '\t']);
-    let is = |name: &str| essence.eq_ignore_ascii_case(name);
-    if is("text/csv") {
+    let media = media_type(headers)?;
+    if is(media, "text/csv") {
         Some(LogForm::Csv)
-    } else if is("application/x-ndjson") || is("application/jsonl") {
+    } else if is(media, "application/x-ndjson") || is(media, "application/jsonl") {
         Some(LogForm::Ndjson)
     } else {
         None

@@ -23,6 +23,8 @@ const WARM_ROUNDS: usize = 5;
 const WARM: f64 = 1e-12;
 /// Optimality that the engine's own point needs to be taken for the answer.
 const TRUSTED: f64 = 1e-7;
+/// A multiplier of the engine's own below this part of the problem's size may be rounding.
+const EXPOSING_UNREFINED: f64 = 1e-5;
 /// Newton's own point is taken at this optimality even where the engine's figures are smaller.
 const SHARP: f64 = 1e-14;
 /// A scaled point farther from the origin than this has run off along a direction that nothing bounds.
@@ -74,7 +76,7 @@ pub(super) struct Solved {
     pub(super) trusted: bool,
     pub(super) bound: f64,
     pub(super) cost_pivot: f64,
-    /// A multiplier of a refined point below this may be rounding.
+    /// A multiplier below this may be rounding: it exposes nothing, and the interior test decides instead.
     pub(super) noise: f64,
     pub(super) iterations: u32,
 }
@@ -346,9 +348,10 @@ impl Cascade<'_> {
         trusted &= engine.worst() <= TRUSTED;
         // Strong convexity in the weighted residuals: |M (u - u*)|^2 is at most the gap.
         let bound = (engine.worst() * problem.size * (1.0 + largest(&z) / problem.size)).sqrt();
+        let noise = EXPOSING_UNREFINED * problem.size;
         let modes = vec![Mode::Off; problem.sets.blocks.len()];
         let point = Point { u, z, modes };
-        Ok(Some(Solved { problem, point, optimality: engine, refined: false, trusted, bound, cost_pivot: 1.0, noise: f64::INFINITY, iterations }))
+        Ok(Some(Solved { problem, point, optimality: engine, refined: false, trusted, bound, cost_pivot: 1.0, noise, iterations }))
     }
 
     /// The engine once more, as close as it gets, with its own iterative refinement: point and multipliers.

@@ -7,17 +7,14 @@ use super::answer::*;
 use super::cascade::{Cascade, Solved, Stop};
 use super::faces::{ensure_interior, exposed, restrict};
 use super::level::LevelData;
+use super::refine::ON_BOUNDARY;
 use super::system::{DEPENDENT, DEPENDENT_FACE, Entries, Kind};
 
-/// A multiplier of the engine's own below this part of the problem's size exposes nothing; the interior test decides instead.
-const EXPOSING_UNREFINED: f64 = 1e-5;
 /// A row this close to its value (scaled, per unit of row length and value) holds to rounding.
 const HOLDS: f64 = 1e-12;
 /// A row of the data that a refined multiplier names counts as dependent below this: what is left free then moves it by no more.
 const DEPENDENT_EXACT: f64 = 1e-10;
-/// A multiplier this close to the boundary of the dual cone (relative) lies on it.
-const ON_BOUNDARY: f64 = 1e-9;
-/// The same where the point is the engine's own.
+/// [`ON_BOUNDARY`] where the point is the engine's own.
 const ON_BOUNDARY_UNREFINED: f64 = 1e-5;
 
 impl Cascade<'_> {
@@ -137,11 +134,7 @@ impl Cascade<'_> {
 
     /// Appends the soft limits relaxed by their slacks, and lists the faces the level's multipliers expose.
     fn expose(&mut self, index: usize, data: &LevelData, solved: &Solved) -> Vec<(usize, FaceDecision)> {
-        let (tolerance, boundary) = if solved.refined {
-            (solved.noise, ON_BOUNDARY)
-        } else {
-            (EXPOSING_UNREFINED * solved.problem.size, ON_BOUNDARY_UNREFINED)
-        };
+        let boundary = if solved.refined { ON_BOUNDARY } else { ON_BOUNDARY_UNREFINED };
         let mut faces = Vec::new();
         for block in &solved.problem.sets.blocks {
             let z = &solved.point.z[block.first..block.first + block.len];
@@ -156,7 +149,7 @@ impl Cascade<'_> {
                 }
                 _ => block.block,
             };
-            if let Some(kind) = exposed(block.kind, z, tolerance, boundary) {
+            if let Some(kind) = exposed(block.kind, z, solved.noise, boundary) {
                 let source = self.system.source[self.system.blocks[at].first];
                 faces.push((at, FaceDecision { source, kind, exposed: Exposed::ByMultiplier, multiplier: z.to_vec() }));
             }

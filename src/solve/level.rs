@@ -4,9 +4,9 @@
 //! engine every x stays a variable, the residuals and slacks become variables with a diagonal cost.
 //! `t >= 0` needs no row: a negative t would only tighten the limit at a cost.
 
+use super::dense::norm;
 use super::engine::Program;
 use super::rank::Factor;
-use super::dense::norm;
 use super::system::{DEPENDENT, Entries, Kind, Reduced, ReducedBlock, System, blocks_of};
 use crate::conic::{Cone, ConicRows, Level, ResidualRows, SparseRows};
 
@@ -155,6 +155,12 @@ fn compressed(reduced: &LevelProblem) -> (Vec<f64>, Vec<f64>) {
             columns[j * m + i] = reduced.residual[i * d + j];
         }
     }
+    compress(columns, d, reduced.residual_at.clone())
+}
+
+/// Rows R by rows and values with `|R u + values|^2 = |M u + at|^2` up to a constant, M given by d columns: as many as M has rank.
+pub(super) fn compress(mut columns: Vec<f64>, d: usize, mut at: Vec<f64>) -> (Vec<f64>, Vec<f64>) {
+    let m = at.len();
     let original = columns.clone();
     let factor = Factor::new(&mut columns, m, &vec![1.0; d], 0.0, "cost columns");
     let rank = factor.rank();
@@ -166,10 +172,9 @@ fn compressed(reduced: &LevelProblem) -> (Vec<f64>, Vec<f64>) {
             rows[i * d + j] = turned[i];
         }
     }
-    let mut values = reduced.residual_at.clone();
-    factor.apply_transpose(&mut values);
-    values.truncate(rank);
-    (rows, values)
+    factor.apply_transpose(&mut at);
+    at.truncate(rank);
+    (rows, at)
 }
 
 fn push(rows: &mut SparseRows, entries: Entries, minus: Option<usize>) {

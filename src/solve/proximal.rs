@@ -19,8 +19,9 @@
 //! over their length at the start, and an orthonormal basis of what costs nothing; and every block of rows by the length it has there.
 
 use super::dense::{axpy, dot, largest, norm};
-use super::level::LevelProblem;
-use super::rank::{Factor, reference_lengths};
+use super::infeasible::project_dual;
+use super::level::{LevelProblem, compress};
+use super::rank::{Factor, least_squares, reference_lengths};
 use super::system::{Kind, inside};
 
 /// Penalty sigma of the first round; a round that gains little makes the next stiffer.
@@ -248,21 +249,12 @@ impl<'a> Scaled<'a> {
                 columns[c * m + i] = dot(self.problem.residual_row(i), &self.map[c * q..c * q + d]) / self.unit;
             }
         }
-        let original = columns.clone();
-        let factor = Factor::new(&mut columns, m, &vec![1.0; costly], 0.0, "cost columns");
-        let rank = factor.rank();
-        let begin = self.cost.len();
-        self.cost.resize(begin + rank * q, 0.0);
-        for c in 0..costly {
-            let mut turned = original[c * m..(c + 1) * m].to_vec();
-            factor.apply_transpose(&mut turned);
-            for i in 0..rank {
-                self.cost[begin + i * q + c] = turned[i];
-            }
+        let (rows, at) = compress(columns, costly, start.iter().map(|r| r / self.unit).collect());
+        for row in rows.chunks_exact(costly.max(1)) {
+            self.cost.extend_from_slice(row);
+            self.cost.resize(self.cost.len() + q - costly, 0.0);
         }
-        let mut at: Vec<f64> = start.iter().map(|r| r / self.unit).collect();
-        factor.apply_transpose(&mut at);
-        self.cost_at.extend_from_slice(&at[..rank]);
+        self.cost_at.extend(at);
     }
 
     fn row(&self, i: usize) -> &[f64] {
@@ -273,9 +265,10 @@ impl<'a> Scaled<'a> {
         &self.cost[i * self.q..(i + 1) * self.q]
     }
 
+    /// P: the cones are self-dual.
     fn project(&self, y: &mut [f64]) {
         for block in &self.problem.sets.blocks {
-            project(block.kind, &mut y[block.first..block.first + block.len]);
+            project_dual(block.kind, &mut y[block.first..block.first + block.len]);
         }
     }
 
@@ -377,15 +370,7 @@ impl<'a> Scaled<'a> {
                 columns[j * m + i] = rows[i * q + j];
             }
         }
-        let factor = Factor::new(&mut columns, m, &vec![1.0; q], 0.0, "proximal step");
-        let mut right: Vec<f64> = at.iter().map(|v| -v).collect();
-        factor.apply_transpose(&mut right);
-        factor.solve_upper(&mut right);
-        let mut step = vec![0.0; q];
-        for (j, &c) in factor.kept.iter().enumerate() {
-            step[c] = right[j];
-        }
-        step
+        least_squares(&mut columns, m, at.iter().map(|v| -v).collect()).0
     }
 
     /// Rows `sqrt(sigma) P'(y)^(1/2) G` of one block and their values.
@@ -430,7 +415,8 @@ impl<'a> Scaled<'a> {
         }
     }
 
-    /// How well the optimality conditions hold at h. With unit curvature, `|dr|^2 <= gradient'(h - h*) + s'z + violation |z|`, the way to h* judged by the last one.
+    /// How well the optimality conditions hold at h. With unit curvature, `|dr|^2 <= gradient'(h - h*) + s'z + violation |z|`, the
+    /// way to h* judged by the last one.
     fn residual(&self, h: &[f64], z: &[f64], dh: &[f64]) -> Residual {
         let mut gradient = vec![0.0; self.q];
         for (i, at) in self.cost_at.iter().enumerate() {
@@ -479,23 +465,4 @@ fn coordinates(problem: &LevelProblem, soft: &[(usize, usize, f64)], q: usize, u
         factor.apply(column);
     }
     (map, costly)
-}
-
-/// Projection onto the cone (Boyd and Vandenberghe 2004, exercise 8.3, quoted from memory).
-fn project(kind: Kind, y: &mut [f64]) {
-    if kind != Kind::SecondOrder {
-        y.iter_mut().for_each(|v| *v = v.max(0.0));
-        return;
-    }
-    let radius = norm(&y[1..]);
-    if y[0] >= radius {
-        return;
-    }
-    if y[0] <= -radius {
-        y.fill(0.0);
-        return;
-    }
-    let head = 0.5 * (y[0] + radius);
-    y[1..].iter_mut().for_each(|v| *v *= head / radius);
-    y[0] = head;
 }

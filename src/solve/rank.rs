@@ -211,6 +211,19 @@ fn solve_lower(triangle: &[f64], rank: usize, v: &mut [f64]) {
     }
 }
 
+/// y that minimises `|C y - right|`, C given by columns of length m (overwritten) with full rank, and the smallest pivot.
+pub(super) fn least_squares(columns: &mut [f64], m: usize, mut right: Vec<f64>) -> (Vec<f64>, f64) {
+    let n = columns.len() / m;
+    let factor = Factor::new(columns, m, &vec![1.0; n], 0.0, "least squares");
+    factor.apply_transpose(&mut right);
+    factor.solve_upper(&mut right);
+    let mut y = vec![0.0; n];
+    for (j, &c) in factor.kept.iter().enumerate() {
+        y[c] = right[j];
+    }
+    (y, factor.decision.smallest_kept)
+}
+
 /// Range and null space of equality rows `E x = e` that grow by batches: `E' = Q1 R`, `[Q1 N]` orthogonal.
 #[derive(Clone)]
 pub(super) struct Subspace {

@@ -17,7 +17,7 @@ use super::answer::Optimality;
 use super::dense::{axpy, dot, largest, norm};
 use super::level::LevelProblem;
 use super::proximal::Approached;
-use super::rank::{Factor, reference_lengths};
+use super::rank::{Factor, least_squares, reference_lengths};
 use super::system::{Kind, ReducedBlock, inside};
 
 /// Newton steps per round.
@@ -38,7 +38,7 @@ const APEX: f64 = 1e-9;
 pub(super) const CONFIRMED: f64 = 1e-10;
 
 /// A multiplier this close to the boundary of the dual cone (relative) lies on it.
-const ON_BOUNDARY: f64 = 1e-9;
+pub(super) const ON_BOUNDARY: f64 = 1e-9;
 /// A multiplier below this part of the largest exposes nothing; the interior test decides instead.
 const EXPOSING: f64 = 1e-10;
 /// Slacks longer than this show their direction plainly.
@@ -486,17 +486,10 @@ fn shortest_least_squares(mut columns: Vec<f64>, q: usize, lengths: &[f64], valu
             reduced[c * m + i] = turned[c];
         }
     }
-    let ones = vec![1.0; rank];
-    let least = Factor::new(&mut reduced, m, &ones, 0.0, "least squares");
-    let mut right: Vec<f64> = value.iter().map(|v| -v).collect();
-    least.apply_transpose(&mut right);
-    least.solve_upper(&mut right);
-    let mut y = vec![0.0; q];
-    for (j, &c) in least.kept.iter().enumerate() {
-        y[c] = right[j];
-    }
+    let (mut y, pivot) = least_squares(&mut reduced, m, value.iter().map(|v| -v).collect());
+    y.resize(q, 0.0);
     rows.apply(&mut y);
-    (y, least.decision.smallest_kept)
+    (y, pivot)
 }
 
 enum Revision {

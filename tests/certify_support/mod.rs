@@ -4,8 +4,8 @@
 use nalgebra::{DMatrix, DVector};
 use underfoot::certify::Certificate;
 use underfoot::conic::{Column, Cone, ConicRows, Hierarchy, ResidualRows, RowName, SparseRows};
-use underfoot::model::{Body, Joint, JointKind};
-use underfoot::spatial::{Inertia, Pose, Vec3};
+use underfoot::model::{BaseKind, Body, Joint, JointKind, Model};
+use underfoot::spatial::{Inertia, Mat3, Pose, Vec3};
 
 pub fn name(group: &str, part: &str, physics: bool) -> RowName {
     RowName { group: group.into(), part: part.into(), unit: "", scale: 1.0, physics }
@@ -119,4 +119,30 @@ pub fn failing(certificate: &Certificate) -> Vec<String> {
     }
     assert_eq!(out.is_empty(), certificate.holds, "the verdict follows from the figures: {certificate:#?}");
     out
+}
+
+/// The planar two-link arm of the textbook case: links of 2 and 1.5 kg, the elbow 0.4 m from the shoulder.
+pub fn two_link_arm() -> Model {
+    let link = |mass: f64, center: f64, about: f64| Inertia {
+        mass,
+        center: Vec3::new(center, 0.0, 0.0),
+        about_center: Mat3::from_diagonal(&Vec3::new(about / 3.0, about, about)),
+    };
+    Model {
+        name: "arm".into(),
+        id: "arm".into(),
+        base: BaseKind::Fixed,
+        bodies: vec![
+            body("base", None, None, Vec3::zeros(), Inertia::zero()),
+            body("upper", Some(0), Some(0), Vec3::zeros(), link(2.0, 0.2, 0.03)),
+            body("lower", Some(1), Some(1), Vec3::new(0.4, 0.0, 0.0), link(1.5, 0.15, 0.012)),
+        ],
+        joints: vec![
+            joint("shoulder", JointKind::Revolute, 1, Vec3::z()),
+            joint("elbow", JointKind::Revolute, 2, Vec3::z()),
+        ],
+        frames: vec![],
+        soles: vec![],
+        remarks: vec![],
+    }
 }
